@@ -1,0 +1,122 @@
+// Control laws: a pure step from inputs and state to outputs and next state.
+//
+// A lw_law is immutable and shared by reference count; all that changes is the caller's `state`.
+#ifndef LATEWOOD_LAW_H
+#define LATEWOOD_LAW_H
+
+#include <latewood/status.h>
+#include <latewood/time.h>
+
+#ifdef __cplusplus
+extern "C" {
+#endif
+
+#define LW_LAW_MAX_PORTS 32
+#define LW_LAW_MAX_STATES 64
+
+// What a law knows of time when it steps.
+typedef struct lw_law_time {
+    double now;      // instant of the step [s]
+    double nominal;  // nominal period T [s]
+    double dt;       // sample instant less that of the previous step [s]; nominal at the first step
+    int64_t job;     // sample number, counts missed ones
+    int64_t missed;  // samples missed since the previous step
+} lw_law_time;
+
+// out and state are written in place; `in` is read only. 0, or nonzero after a failure whose
+// message the law keeps for its owner.
+typedef int (*lw_law_step)(const void *param, const lw_law_time *time, const double *in,
+                           double *state, double *out);
+
+typedef struct lw_law_def {
+    const char *kind;  // "pi", in words for describe; copied
+    int n_in, n_out, n_state;
+    const char *const *in_names;  // copied
+    const char *const *out_names;
+    const char *const *state_names;
+    const double *start;  // n_state, may be NULL (zeros); copied
+    lw_law_step step;
+    // Same step over `n` lanes laid side by side (element e of lane w at [e * stride + w]);
+    // NULL: a loop over step.
+    int (*lanes)(const void *param, const lw_law_time *time, const double *in, double *state,
+                 double *out, int n, int stride);
+    // Partial derivatives at a point: (n_out + n_state) x (n_in + n_state), row-major; NULL: by
+    // differences.
+    int (*jacobian)(const void *param, const lw_law_time *time, const double *in,
+                    const double *state, double *j);
+    const void *param;               // given to step; owned by the law once it is made
+    void (*free_param)(void *param);  // NULL: nothing to free
+    int needs_serial;                // nonzero: step calls back into one interpreter
+} lw_law_def;
+
+typedef struct lw_law lw_law;
+
+// On failure the parameter is not taken over.
+LW_API lw_status lw_law_new(const lw_law_def *def, lw_law **out, lw_error *err);
+LW_API lw_law *lw_law_hold(const lw_law *law);
+LW_API void lw_law_free(lw_law *law);
+LW_API const lw_law_def *lw_law_look(const lw_law *law);  // names and start are the law's copies
+
+// Common fields of the ready laws. `limited` outputs are held within [lo, hi]; NAN: no limit.
+typedef enum lw_anti_windup {
+    LW_WINDUP_NONE,
+    LW_WINDUP_CLAMP,            // I is held within [lo, hi]
+    LW_WINDUP_PAUSE,            // I stands still while u is beyond a limit and e pushes further out
+    LW_WINDUP_BACK_CALCULATION  // I += T (ki e + kb (sat(u) - u))
+} lw_anti_windup;
+typedef enum lw_integration { LW_FORWARD_EULER, LW_TRAPEZOIDAL } lw_integration;
+
+// P, PI, PD and PID. Inputs: wanted, measured; e = wanted - measured. Outputs: out (within the
+// limits) and unlimited. Per step, T the nominal period or the measured dt (use_measured_dt):
+//   d   = derivative of e (or of -measured: derivative_on_measured), first-order filtered:
+//         backward Euler  d = (tf d + (x - x_prev)) / (tf + T), x = e or -measured, tf >= 0;
+//         the first step sees x_prev = x, so no kick
+//   u   = kp e + I + kd d          (output_first: I is the sum up to the previous step)
+//   I  += ki T e                   (forward Euler)  or  ki T (e + e_prev) / 2  (trapezoidal; the
+//         first step takes e_prev = e)
+//   out = u held within [lo, hi]
+// With update_first I is advanced before u is formed (anti-windup then judges the u formed with
+// the old I). States in this order, only those the law has: integral, previous_error, derivative,
+// previous_input (x_prev), started (0 or 1).
+typedef struct lw_pid {
+    double kp, ki, kd;
+    double filter;  // tf [s]
+    double lo, hi;  // limits; NAN: none
+    lw_anti_windup anti_windup;
+    double kb;  // back-calculation gain [1/s]
+    lw_integration integration;
+    int update_first, use_measured_dt, derivative_on_measured;
+    double start;  // I at the start
+} lw_pid;
+LW_API lw_pid lw_pid_default(void);
+// kind: "p", "pi", "pd" or "pid"; gains a kind does not have must be zero.
+LW_API lw_status lw_law_pid(const char *kind, const lw_pid *p, lw_law **out, lw_error *err);
+
+// Lead (or lag): gain (s + zero) / (s + pole) through Tustin with the nominal period at each step,
+// zero and pole in rad/s, pole > 0. Input: error as wanted - measured. Outputs out, unlimited.
+//   a = 2/T:  out_k = ((a - p) out_{k-1} + g ((a + z) e_k + (z - a) e_{k-1})) / (a + p)
+LW_API lw_status lw_law_lead(double gain, double zero, double pole, double lo, double hi,
+                             lw_law **out, lw_error *err);
+// One biquad or any proper z-transfer function on e = wanted - measured, powers of z^-1:
+//   H(z) = (b0 + b1 z^-1 + ...) / (a0 + a1 z^-1 + ...), a0 != 0; transposed direct form II.
+LW_API lw_status lw_law_z_transfer(int n_b, const double *b, int n_a, const double *a, double lo,
+                                   double hi, lw_law **out, lw_error *err);
+// State feedback: u = N wanted - K measured; n_u x n_x gain, n_u x n_w feed-forward. Inputs:
+// wanted (or wanted1..), measured1.. (or measured); outputs out (or out1..), unlimited...
+LW_API lw_status lw_law_state_feedback(int n_u, int n_x, int n_w, const double *k,
+                                       const double *n, double lo, double hi, lw_law **out,
+                                       lw_error *err);
+// Observer with state feedback: a discrete model x^[k+1] = A x^ + B u + L (y - C x^), current
+// output u = N wanted - K x^ (limited), states estimate1...
+typedef struct lw_observer {
+    int n_x, n_u, n_y, n_w;
+    const double *a, *b, *c, *l, *k, *n;  // row-major, discrete
+    const double *start;                  // n_x, may be NULL
+    double lo, hi;
+} lw_observer;
+LW_API lw_status lw_law_observer(const lw_observer *p, lw_law **out, lw_error *err);
+
+#ifdef __cplusplus
+}
+#endif
+#endif

@@ -1,0 +1,152 @@
+// Linear plants: x' = A x + B u, y = C x + D u, with named inputs, outputs and states.
+//
+// A lw_plant is built once and then only read. Matrices are row-major. Names follow the rule of
+// every name in a rig: UTF-8, 1 to 200 bytes, no control characters, no dot; unique among the
+// inputs, and unique among outputs and states together. Where an output simply is a state, both
+// may carry the same name.
+#ifndef LATEWOOD_PLANT_H
+#define LATEWOOD_PLANT_H
+
+#include <latewood/status.h>
+
+#ifdef __cplusplus
+extern "C" {
+#endif
+
+#define LW_PLANT_MAX_STATES 64
+#define LW_PLANT_MAX_PORTS 32
+
+typedef struct lw_plant lw_plant;
+
+// Sizes and borrowed views of a plant's parts; valid as long as the plant.
+typedef struct lw_plant_view {
+    int n_x, n_u, n_y;
+    const double *a;      // n_x x n_x
+    const double *b;      // n_x x n_u
+    const double *c;      // n_y x n_x
+    const double *d;      // n_y x n_u
+    const double *start;  // n_x, state at time zero
+    const double *delay;  // n_u, input delays [s], >= 0
+    const char *const *state_names;
+    const char *const *input_names;
+    const char *const *output_names;
+} lw_plant_view;
+
+LW_API lw_plant_view lw_plant_look(const lw_plant *plant);
+LW_API void lw_plant_free(lw_plant *plant);
+
+// State space. Any name list may be NULL: states x1.., inputs in or in1.., outputs out or out1...
+// (without number if there is one). d and start may be NULL (zeros). n_x may be 0 (a gain).
+//   errors  LW_ERR_SHAPE sizes out of range; LW_ERR_NOT_FINITE names matrix, row and column;
+//           LW_ERR_NAME, LW_ERR_DUPLICATE
+LW_API lw_status lw_plant_state_space(int n_x, int n_u, int n_y, const double *a, const double *b,
+                                      const double *c, const double *d, const double *start,
+                                      const char *const *state_names,
+                                      const char *const *input_names,
+                                      const char *const *output_names, lw_plant **out,
+                                      lw_error *err);
+
+// A polynomial in s, highest power first.
+typedef struct lw_poly {
+    int n;
+    const double *c;
+} lw_poly;
+
+// Transfer functions: entry (i, j) of the n_y x n_u arrays `num` and `den` is output i from input
+// j; each must be proper. The realisation is controllable canonical per column with a common
+// denominator where all denominators of the column are equal, otherwise entry by entry; start is
+// zero state.
+//   errors  LW_ERR_ARGUMENT improper ("degree 3 over degree 2"), leading zero, empty
+LW_API lw_status lw_plant_transfer(int n_y, int n_u, const lw_poly *num, const lw_poly *den,
+                                   const char *const *input_names, const char *const *output_names,
+                                   lw_plant **out, lw_error *err);
+
+// Zeros, poles (complex as re, im pairs, conjugates both present) and gain: k prod(s - z) /
+// prod(s - p). Realised as a chain of real first- and second-order sections, so that repeated and
+// widely spread poles keep their accuracy.
+LW_API lw_status lw_plant_zeros_poles(int n_zeros, const double (*zeros)[2], int n_poles,
+                                      const double (*poles)[2], double gain, lw_plant **out,
+                                      lw_error *err);
+
+// Ready plants. All parameters in SI; LW_ERR_ARGUMENT names the parameter, its value and range.
+//   integrator    in -> out: gain / s
+//   first order   in -> out: gain / (time_constant s + 1), time_constant > 0
+//   second order  in -> out: gain w^2 / (s^2 + 2 damping w s + w^2), w > 0 [rad/s]; states out, rate
+//   winding       voltage -> current: L i' = v - R i, R >= 0, L > 0
+//   DC machine    voltage, load_torque -> current, speed:
+//                 L i' = v - R i - ke w;  J w' = kt i - friction w - load_torque
+//   two-mass      voltage, load_torque -> current, motor_speed, twist, load_speed, load_angle:
+//   drive         as DC machine on the motor side; twist' = wm - wl;
+//                 Jm wm' = kt i - fm wm - k twist - c (wm - wl)
+//                 Jl wl' = k twist + c (wm - wl) - fl wl - load_torque;  load_angle' = wl
+// back_emf_constant NAN means equal to the torque constant.
+typedef struct lw_dc_machine {
+    double resistance, inductance, torque_constant, back_emf_constant, inertia, friction;
+} lw_dc_machine;
+typedef struct lw_two_mass_drive {
+    double resistance, inductance, torque_constant, back_emf_constant;
+    double motor_inertia, load_inertia, stiffness, damping, motor_friction, load_friction;
+} lw_two_mass_drive;
+
+LW_API lw_status lw_plant_integrator(double gain, lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_first_order(double gain, double time_constant, lw_plant **out,
+                                      lw_error *err);
+LW_API lw_status lw_plant_second_order(double gain, double natural_frequency, double damping,
+                                       lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_winding(double resistance, double inductance, lw_plant **out,
+                                  lw_error *err);
+LW_API lw_status lw_plant_dc_machine(const lw_dc_machine *p, lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **out,
+                                         lw_error *err);
+
+// A copy of `plant` with an input delay of `seconds` >= 0 added to input `input`, with the state
+// at time zero replaced (n values), or with inputs, outputs, states renamed (NULL list: keep).
+LW_API lw_status lw_plant_delayed(const lw_plant *plant, const char *input, double seconds,
+                                  lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_started(const lw_plant *plant, int n, const double *start,
+                                  lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_renamed(const lw_plant *plant, const char *const *state_names,
+                                  const char *const *input_names, const char *const *output_names,
+                                  lw_plant **out, lw_error *err);
+
+// Composition by signal names. `parts` carry a name each; a port is "part.port".
+//   links    output port -> input port, sign +1 or -1; several links may feed one input (summed)
+//   inputs   external inputs: a name and the input port it drives; one external input may drive
+//            several ports (repeat the name) and may be summed with links
+//   outputs  external outputs: a name and the output port it shows
+// States are named "part_state". An algebraic loop is LW_ERR_LOOP and names its signals in order:
+// `signals depend on themselves without delay: a.out -> b.in -> b.out -> a.in`.
+// Input delays: a delay on an external input is kept; a delay on a linked input moves upstream to
+// the external inputs when the chain is open, otherwise LW_ERR_LOOP names the part and input
+// (a delay inside continuous feedback). Where one external input would need two different delays
+// it is split: the second becomes the error LW_ERR_ARGUMENT naming both.
+typedef struct lw_part {
+    const char *name;
+    const lw_plant *plant;
+} lw_part;
+typedef struct lw_link {
+    const char *from, *to;
+    double sign;
+} lw_link;
+typedef struct lw_port {
+    const char *name, *port;
+} lw_port;
+
+LW_API lw_status lw_plant_connect(int n_parts, const lw_part *parts, int n_links,
+                                  const lw_link *links, int n_inputs, const lw_port *inputs,
+                                  int n_outputs, const lw_port *outputs, lw_plant **out,
+                                  lw_error *err);
+
+// Single input and output shorthands: b after a; a + sign b; a / (1 - sign a b), sign -1 being
+// negative feedback. Ports are named in and out.
+LW_API lw_status lw_plant_series(const lw_plant *a, const lw_plant *b, lw_plant **out,
+                                 lw_error *err);
+LW_API lw_status lw_plant_parallel(const lw_plant *a, const lw_plant *b, double sign,
+                                   lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_feedback(const lw_plant *a, const lw_plant *b, double sign,
+                                   lw_plant **out, lw_error *err);
+
+#ifdef __cplusplus
+}
+#endif
+#endif
