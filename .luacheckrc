@@ -1,0 +1,3 @@
+std = "lua54"
+max_line_length = 100
+exclude_files = { "build", ".cache" }
