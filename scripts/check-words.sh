@@ -13,15 +13,12 @@ somewhere='(^|[^A-Za-z0-9_.~]|-[IL])/(hom[e]|roo[t]|User[s]|wor[k]|mn[t])/[A-Za-
 merge='^(<{7}|={7}|>{7})( |$)'
 blanks='[ 	]+$'
 
-listed() { # folder: the files that are or could be committed, but for the licence
+listed() { # folder: the files that are or could be committed, but for the licence and pictures
   (
     cd "$1"
-    if [ -e .git ]; then
-      git ls-files -co --exclude-standard
-    else
-      find . -type f ! -path './build/*' | sed 's,^\./,,'
-    fi | grep -vE '^LICENSE$|\.(png|vcd|db)$'
-  )
+    git ls-files -co --exclude-standard 2>/dev/null ||
+      find . -type f ! -path './.git/*' ! -path './build/*' | sed 's,^\./,,'
+  ) | grep -vE '^LICENSE$|\.png$'
 }
 
 # Prints what it finds; found nothing is success.
@@ -30,6 +27,7 @@ check() { # folder
     listed "$1" | while IFS= read -r file; do printf '%s\0' "$1/$file"; done |
       xargs -0 grep -nIHEs -e "$unfinished" -e "$somewhere" -e "$merge" -e "$blanks" /dev/null
   ) || :
+  [ -n "$(listed "$1")" ] || { echo "$1: no files to look at"; return 1; }
   [ -z "$hits" ] || { printf '%s\n' "$hits"; return 1; }
 }
 

@@ -102,7 +102,7 @@ as_root() {
 # Word splitting is wanted in these: a prefix that may be empty, a list of package names.
 # shellcheck disable=SC2086
 apt() {
-  $root env DEBIAN_FRONTEND=noninteractive apt-get -q -y "$@" </dev/null >&2
+  $root env DEBIAN_FRONTEND=noninteractive apt-get -q -y -o Dpkg::Use-Pty=0 "$@" </dev/null >&2
 }
 
 # shellcheck disable=SC2086
