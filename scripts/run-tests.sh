@@ -6,7 +6,8 @@
 #   environment: B (build folder), LUA (a Lua 5.4), LUA_PRELOAD (for sanitized modules), JOBS
 #
 # 1. The exit code is 0 only if every test ran and passed, and at least one ran.
-# 2. A Check program that closes with no checks counts as failed.
+# 2. A test must say how many checks it made, in a last line like Check's "100%: Checks: 9, ..." or
+#    like "9 passed, 0 failed" (Lua and shell tests); none at all counts as failed.
 # 3. Each test gets an empty folder as TMPDIR, taken away when it passed.
 set -u
 
@@ -35,8 +36,9 @@ run_one() { # source file
   *) echo "not a test: $1"; false ;;
   esac >"$logs/$name.log" 2>&1 </dev/null
   result=$?
-  if [[ $1 == *.c ]] && ! grep -qE '%: Checks: [1-9]' "$logs/$name.log"; then
-    echo "no checks were run" >>"$logs/$name.log"
+  if ! grep -qE '^100%: Checks: [1-9]|^([A-Za-z]+: )?[1-9][0-9]* passed, 0 failed' \
+    "$logs/$name.log"; then
+    echo "the closing line is missing, counts no check, or tells of failures" >>"$logs/$name.log"
     [ $result -ne 0 ] || result=1
   fi
   [ $result -ne 0 ] || rm -rf "$TMPDIR"
