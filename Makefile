@@ -97,7 +97,7 @@ else
 no_undefined := -Wl,-z,defs
 endif
 common := -std=c17 $(CFLAGS) $(numerics) -fPIC -fno-semantic-interposition $(warnings) \
-          -ffile-prefix-map=$(CURDIR)=. -pthread $(sanitizers)
+          -ffile-prefix-map="$(CURDIR)"=. -pthread $(sanitizers)
 
 # The libraries' headers count as the system's: their warnings are not ours.
 as_system = $(patsubst -I%,-isystem %,$1)

@@ -64,7 +64,7 @@ function check_bindings(path, to) {
     if (path ~ /^latewood\//) {
         if (!readable(root "/engine/include/" path)) complain("no such public header")
     } else if (to != "" && to != "lua" && to != "bindings")
-        complain("bindings/ uses the public headers only")
+        complain("bindings/ uses the public headers and its own only")
 }
 
 FNR == 1 {
@@ -150,9 +150,9 @@ self_test() {
   expect refuse engine/run/a.c '#include "../plant/x.h"' 'no known folder'
   expect refuse engine/run/a.c '#include <latewood/unheard.h>' 'no known folder'
   expect refuse engine/extra/a.c '#include <math.h>' 'no known folder'
-  expect refuse bindings/a.c '#include "run/kernel.h"' 'public headers only'
-  expect refuse bindings/a.c '#include <base/own.h>' 'public headers only'
-  expect refuse bindings/a.c '#include "../engine/base/own.h"' 'public headers only'
+  expect refuse bindings/a.c '#include "run/kernel.h"' 'uses the public headers'
+  expect refuse bindings/a.c '#include <base/own.h>' 'uses the public headers'
+  expect refuse bindings/a.c '#include "../engine/base/own.h"' 'uses the public headers'
   expect refuse bindings/a.c '#include <latewood/unheard.h>' 'no such public header'
 }
 

@@ -3,7 +3,8 @@
 set -u
 
 : "${B:=build}" "${CC:=cc}" "${LUA:=lua5.4}"
-work=$(mktemp -d)
+# pkg-config's answers cannot be split where a path has blanks, as this one's own folder may.
+work=$(mktemp -d -p /tmp)
 trap 'rm -rf "$work"' EXIT
 prefix=/opt/latewood
 there=$work/stage$prefix
