@@ -168,12 +168,11 @@ static int jacobian_observer(const void *param, const lw_law_time *time, const d
 
 // ---- making one
 
-static lw_status check_size(const char *kind, const char *what, int n, int lo, int hi,
-                            lw_error *err)
+static lw_status check_size(const char *what, int n, int lo, int hi, lw_error *err)
 {
     if (n < lo || n > hi)
-        return lw_error_set(err, LW_ERR_SHAPE, "%s law: number of %s is %d; permitted %d to %d",
-                            kind, what, n, lo, hi);
+        return lw_error_set(err, LW_ERR_SHAPE, "number of %s is %d; permitted %d to %d", what, n,
+                            lo, hi);
     return LW_OK;
 }
 
@@ -185,40 +184,37 @@ typedef struct matrix {
     const double **to;
 } matrix;
 
-static lw_status check_matrix(const char *kind, const matrix *m, lw_error *err)
+static lw_status check_matrix(const matrix *m, lw_error *err)
 {
     int n = m->n_rows * m->n_columns;
     if (n > 0 && m->from == NULL)
-        return lw_error_set(err, LW_ERR_ARGUMENT, "%s law: %s is missing", kind, m->name);
+        return lw_error_set(err, LW_ERR_ARGUMENT, "%s is missing", m->name);
     for (int i = 0; i < n; i++)
         if (!isfinite(m->from[i]))
             return lw_error_set(err, LW_ERR_NOT_FINITE,
-                                "%s law: %s is %.12g in row %d, column %d; a finite number is "
-                                "wanted",
-                                kind, m->name, m->from[i], i / m->n_columns + 1,
-                                i % m->n_columns + 1);
+                                "%s is %.12g in row %d, column %d; a finite number is wanted",
+                                m->name, m->from[i], i / m->n_columns + 1, i % m->n_columns + 1);
     return LW_OK;
 }
 
 // A parameter with copies of the six matrices, or NULL with the message set.
-static feedback *build(const lw_observer *o, const char *kind, lw__limits limits, lw_status *status,
-                       lw_error *err)
+static feedback *build(const lw_observer *o, lw__limits limits, lw_status *status, lw_error *err)
 {
     feedback p = {.limits = limits, .n_x = o->n_x, .n_u = o->n_u, .n_y = o->n_y, .n_w = o->n_w};
     int n_model = o->n_y > 0 ? o->n_x : 0; // rows of the model
     const matrix all[] = {
-        {"a", o->a, n_model, o->n_x, &p.a}, {"b", o->b, n_model, o->n_u, &p.b},
-        {"c", o->c, o->n_y, o->n_x, &p.c},  {"l", o->l, n_model, o->n_y, &p.l},
-        {"k", o->k, o->n_u, o->n_x, &p.k},  {"n", o->n, o->n_u, o->n_w, &p.n},
+        {"A", o->a, n_model, o->n_x, &p.a}, {"B", o->b, n_model, o->n_u, &p.b},
+        {"C", o->c, o->n_y, o->n_x, &p.c},  {"L", o->l, n_model, o->n_y, &p.l},
+        {"K", o->k, o->n_u, o->n_x, &p.k},  {"N", o->n, o->n_u, o->n_w, &p.n},
     };
     size_t cells = 0;
     for (int i = 0; i < 6; i++) {
-        *status = check_matrix(kind, &all[i], err);
+        *status = check_matrix(&all[i], err);
         if (*status != LW_OK)
             return NULL;
         cells += (size_t)(all[i].n_rows * all[i].n_columns);
     }
-    feedback *own = lw__law_param(kind, sizeof *own + sizeof(double) * cells, err);
+    feedback *own = lw__law_param(sizeof *own + sizeof(double) * cells, err);
     *status = own != NULL ? LW_OK : LW_ERR_MEMORY;
     if (own == NULL)
         return NULL;
@@ -238,10 +234,10 @@ static lw_status make(const lw_observer *o, const char *kind, lw_law_def *def, l
                       lw_error *err)
 {
     lw__limits limits = {0, 0};
-    lw_status status = lw__law_limits(kind, o->lo, o->hi, &limits, err);
+    lw_status status = lw__law_limits(o->lo, o->hi, &limits, err);
     if (status != LW_OK)
         return status;
-    feedback *p = build(o, kind, limits, &status, err);
+    feedback *p = build(o, limits, &status, err);
     if (p == NULL)
         return status;
     lw__ports in = {0}, outs = {0}, states = {0};
@@ -264,33 +260,31 @@ static lw_status make(const lw_observer *o, const char *kind, lw_law_def *def, l
 lw_status lw_law_state_feedback(int n_u, int n_x, int n_w, const double *k, const double *n,
                                 double lo, double hi, lw_law **out, lw_error *err)
 {
-    static const char kind[] = "state feedback";
-    lw_status status = check_size(kind, "outputs", n_u, 1, MAX_U, err);
+    lw_status status = check_size("outputs", n_u, 1, MAX_U, err);
     if (status == LW_OK)
-        status = check_size(kind, "measured states", n_x, 1, LW_LAW_MAX_PORTS, err);
+        status = check_size("measured states", n_x, 1, LW_LAW_MAX_PORTS, err);
     if (status == LW_OK)
-        status = check_size(kind, "wanted values", n_w, 0, LW_LAW_MAX_PORTS - n_x, err);
+        status = check_size("wanted values", n_w, 0, LW_LAW_MAX_PORTS - n_x, err);
     if (status != LW_OK)
         return status;
     lw_observer o = {.n_x = n_x, .n_u = n_u, .n_w = n_w, .k = k, .n = n, .lo = lo, .hi = hi};
     lw_law_def def = {
         .step = step_feedback, .lanes = lanes_feedback, .jacobian = jacobian_feedback};
-    return make(&o, kind, &def, out, err);
+    return make(&o, "state feedback", &def, out, err);
 }
 
 lw_status lw_law_observer(const lw_observer *p, lw_law **out, lw_error *err)
 {
-    static const char kind[] = "observer";
-    lw_status status = check_size(kind, "states", p->n_x, 1, MAX_X, err);
+    lw_status status = check_size("states", p->n_x, 1, MAX_X, err);
     if (status == LW_OK)
-        status = check_size(kind, "outputs", p->n_u, 1, MAX_U, err);
+        status = check_size("outputs", p->n_u, 1, MAX_U, err);
     if (status == LW_OK)
-        status = check_size(kind, "measured values", p->n_y, 1, MAX_Y, err);
+        status = check_size("measured values", p->n_y, 1, MAX_Y, err);
     if (status == LW_OK)
-        status = check_size(kind, "wanted values", p->n_w, 0, LW_LAW_MAX_PORTS - p->n_y, err);
+        status = check_size("wanted values", p->n_w, 0, LW_LAW_MAX_PORTS - p->n_y, err);
     if (status != LW_OK)
         return status;
     lw_law_def def = {
         .step = step_observer, .lanes = lanes_observer, .jacobian = jacobian_observer};
-    return make(p, kind, &def, out, err);
+    return make(p, "observer", &def, out, err);
 }

@@ -76,18 +76,18 @@ lw_status lw_law_lead(double gain, double zero, double pole, double lo, double h
 {
     static const char *const states[] = {"previous_error", "previous_output"};
     lead p = {.gain = gain, .zero = zero, .pole = pole};
-    lw_status status = lw__law_field("lead", "gain", gain, err);
+    lw_status status = lw__law_field("gain", gain, err);
     if (status == LW_OK)
-        status = lw__law_field("lead", "zero", zero, err);
+        status = lw__law_field("zero", zero, err);
     if (status == LW_OK)
-        status = lw__law_field("lead", "pole", pole, err);
+        status = lw__law_field("pole", pole, err);
     if (status == LW_OK && !(pole > 0))
-        status = lw__law_bad("lead", "pole", pole, "permitted above 0", err);
+        status = lw__law_bad("pole", pole, "permitted above 0", err);
     if (status == LW_OK)
-        status = lw__law_limits("lead", lo, hi, &p.limits, err);
+        status = lw__law_limits(lo, hi, &p.limits, err);
     if (status != LW_OK)
         return status;
-    lead *param = lw__law_param("lead", sizeof *param, err);
+    lead *param = lw__law_param(sizeof *param, err);
     if (param == NULL)
         return LW_ERR_MEMORY;
     *param = p;
@@ -105,8 +105,6 @@ lw_status lw_law_lead(double gain, double zero, double pole, double lo, double h
 }
 
 // ---- z-transfer function
-
-static const char z_kind[] = "z transfer";
 
 typedef struct z_transfer {
     lw__limits limits;
@@ -177,14 +175,13 @@ static lw_status read_list(const char *name, int n, const double *list, double a
 {
     for (int i = 0; i < n; i++) {
         if (!isfinite(list[i]))
-            return lw_error_set(err, LW_ERR_NOT_FINITE,
-                                "%s law: %s%d is %.12g; a finite number is wanted", z_kind, name, i,
-                                list[i]);
+            return lw_error_set(err, LW_ERR_NOT_FINITE, "%s%d is %.12g; a finite number is wanted",
+                                name, i, list[i]);
         to[i] = list[i] / a0;
         if (!isfinite(to[i]))
             return lw_error_set(err, LW_ERR_NOT_FINITE,
-                                "%s law: %s%d / a0 is %.12g / %.12g, beyond the range of numbers",
-                                z_kind, name, i, list[i], a0);
+                                "%s%d / a0 is %.12g / %.12g, beyond the range of numbers", name, i,
+                                list[i], a0);
     }
     return LW_OK;
 }
@@ -194,8 +191,8 @@ static lw_status check_lengths(int n_b, int n_a, lw_error *err)
     const char *name = n_b < 1 || n_b > LW_LAW_MAX_STATES + 1 ? "b" : "a";
     int n = name[0] == 'b' ? n_b : n_a;
     if (n < 1 || n > LW_LAW_MAX_STATES + 1)
-        return lw_error_set(err, LW_ERR_SHAPE, "%s law: %s has %d coefficients; permitted 1 to %d",
-                            z_kind, name, n, LW_LAW_MAX_STATES + 1);
+        return lw_error_set(err, LW_ERR_SHAPE, "%s has %d coefficients; permitted 1 to %d", name, n,
+                            LW_LAW_MAX_STATES + 1);
     return LW_OK;
 }
 
@@ -204,13 +201,13 @@ static lw_status read_z(int n_b, const double *b, int n_a, const double *a, doub
 {
     lw_status status = check_lengths(n_b, n_a, err);
     if (status == LW_OK && a[0] == 0)
-        status = lw__law_bad(z_kind, "a0", a[0], "any other number is permitted", err);
+        status = lw__law_bad("a0", a[0], "any other number is permitted", err);
     if (status == LW_OK)
         status = read_list("a", n_a, a, a[0], p->a, err);
     if (status == LW_OK)
         status = read_list("b", n_b, b, a[0], p->b, err);
     if (status == LW_OK)
-        status = lw__law_limits(z_kind, lo, hi, &p->limits, err);
+        status = lw__law_limits(lo, hi, &p->limits, err);
     p->order = (n_b > n_a ? n_b : n_a) - 1;
     return status;
 }
@@ -222,13 +219,13 @@ lw_status lw_law_z_transfer(int n_b, const double *b, int n_a, const double *a, 
     lw_status status = read_z(n_b, b, n_a, a, lo, hi, &p, err);
     if (status != LW_OK)
         return status;
-    z_transfer *param = lw__law_param(z_kind, sizeof *param, err);
+    z_transfer *param = lw__law_param(sizeof *param, err);
     if (param == NULL)
         return LW_ERR_MEMORY;
     *param = p;
     lw__ports states = {0};
     lw__ports_add(&states, "s", p.order, 1);
-    lw_law_def def = {.kind = z_kind,
+    lw_law_def def = {.kind = "z transfer",
                       .n_in = 2,
                       .n_out = 2,
                       .n_state = p.order,

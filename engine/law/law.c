@@ -28,14 +28,13 @@ typedef struct name_list {
     const char *const *names;
 } name_list;
 
-static lw_status check_count(const char *kind, const name_list *list, lw_error *err)
+static lw_status check_count(const name_list *list, lw_error *err)
 {
     if (list->n < 0 || list->n > list->most)
-        return lw_error_set(err, LW_ERR_SHAPE, "%s law: number of %ss is %d; permitted 0 to %d",
-                            kind, list->what, list->n, list->most);
+        return lw_error_set(err, LW_ERR_SHAPE, "number of %ss is %d; permitted 0 to %d", list->what,
+                            list->n, list->most);
     if (list->n > 0 && list->names == NULL)
-        return lw_error_set(err, LW_ERR_ARGUMENT, "%s law: names of %ss are missing", kind,
-                            list->what);
+        return lw_error_set(err, LW_ERR_ARGUMENT, "names of %ss are missing", list->what);
     return LW_OK;
 }
 
@@ -47,23 +46,19 @@ static int stands_before(const name_list *list, int end, const char *name)
     return 0;
 }
 
-static lw_status check_names(const char *kind, const name_list *list, const name_list *other,
-                             lw_error *err)
+static lw_status check_names(const name_list *list, const name_list *other, lw_error *err)
 {
     for (int i = 0; i < list->n; i++) {
         const char *name = list->names[i];
         lw_status status = lw__name_check(list->what, name, 0, err);
-        if (status != LW_OK) {
-            lw_error_prefix(err, "%s law: ", kind);
+        if (status != LW_OK)
             return status;
-        }
         if (stands_before(list, i, name))
-            return lw_error_set(err, LW_ERR_DUPLICATE, "%s law: two %ss are named \"%s\"", kind,
-                                list->what, name);
+            return lw_error_set(err, LW_ERR_DUPLICATE, "two %ss are named \"%s\"", list->what,
+                                name);
         if (other != NULL && stands_before(other, other->n, name))
-            return lw_error_set(err, LW_ERR_DUPLICATE,
-                                "%s law: an %s and a %s are both named \"%s\"", kind, other->what,
-                                list->what, name);
+            return lw_error_set(err, LW_ERR_DUPLICATE, "an %s and a %s are both named \"%s\"",
+                                other->what, list->what, name);
     }
     return LW_OK;
 }
@@ -73,29 +68,29 @@ static lw_status check_start(const lw_law_def *def, lw_error *err)
     for (int i = 0; def->start != NULL && i < def->n_state; i++)
         if (!isfinite(def->start[i]))
             return lw_error_set(err, LW_ERR_NOT_FINITE,
-                                "%s law: start of %s is %.12g; a finite number is wanted",
-                                def->kind, def->state_names[i], def->start[i]);
+                                "start of %s is %.12g; a finite number is wanted",
+                                def->state_names[i], def->start[i]);
     return LW_OK;
 }
 
 static lw_status check(const lw_law_def *def, lw_error *err)
 {
     if (def->kind == NULL)
-        return lw_error_set(err, LW_ERR_ARGUMENT, "law: kind is missing");
+        return lw_error_set(err, LW_ERR_ARGUMENT, "kind is missing");
     if (def->step == NULL)
-        return lw_error_set(err, LW_ERR_ARGUMENT, "%s law: step is missing", def->kind);
+        return lw_error_set(err, LW_ERR_ARGUMENT, "step is missing");
     const name_list lists[] = {
         {"input", def->n_in, LW_LAW_MAX_PORTS, def->in_names},
         {"output", def->n_out, LW_LAW_MAX_PORTS, def->out_names},
         {"state", def->n_state, LW_LAW_MAX_STATES, def->state_names},
     };
     for (int i = 0; i < 3; i++) {
-        lw_status status = check_count(def->kind, &lists[i], err);
+        lw_status status = check_count(&lists[i], err);
         if (status != LW_OK)
             return status;
     }
     for (int i = 0; i < 3; i++) {
-        lw_status status = check_names(def->kind, &lists[i], i == 2 ? &lists[1] : NULL, err);
+        lw_status status = check_names(&lists[i], i == 2 ? &lists[1] : NULL, err);
         if (status != LW_OK)
             return status;
     }
@@ -166,7 +161,7 @@ lw_status lw_law_new(const lw_law_def *def, lw_law **out, lw_error *err)
         return status;
     lw_law *law = copy(def);
     if (law == NULL)
-        return lw_error_set(err, LW_ERR_MEMORY, "%s law: no memory for it", def->kind);
+        return lw_error_set(err, LW_ERR_MEMORY, "no memory for a law");
     *out = law;
     return LW_OK;
 }
@@ -193,27 +188,23 @@ const lw_law_def *lw_law_look(const lw_law *law)
     return &law->def;
 }
 
-lw_status lw__law_bad(const char *kind, const char *field, double value, const char *permitted,
-                      lw_error *err)
+lw_status lw__law_bad(const char *field, double value, const char *permitted, lw_error *err)
 {
-    return lw_error_set(err, LW_ERR_ARGUMENT, "%s law: %s is %.12g; %s", kind, field, value,
-                        permitted);
+    return lw_error_set(err, LW_ERR_ARGUMENT, "%s is %.12g; %s", field, value, permitted);
 }
 
-lw_status lw__law_field(const char *kind, const char *field, double value, lw_error *err)
+lw_status lw__law_field(const char *field, double value, lw_error *err)
 {
-    return isfinite(value) ? LW_OK
-                           : lw__law_bad(kind, field, value, "a finite number is wanted", err);
+    return isfinite(value) ? LW_OK : lw__law_bad(field, value, "a finite number is wanted", err);
 }
 
-lw_status lw__law_limits(const char *kind, double lo, double hi, lw__limits *out, lw_error *err)
+lw_status lw__law_limits(double lo, double hi, lw__limits *out, lw_error *err)
 {
     lw__limits limits = {isnan(lo) ? -INFINITY : lo, isnan(hi) ? INFINITY : hi};
     if (!(limits.lo < limits.hi))
         return lw_error_set(err, LW_ERR_ARGUMENT,
-                            "%s law: limits are %.12g and %.12g; the first must be below the "
-                            "second",
-                            kind, limits.lo, limits.hi);
+                            "limits are %.12g and %.12g; the first must be below the second",
+                            limits.lo, limits.hi);
     *out = limits;
     return LW_OK;
 }
@@ -230,11 +221,11 @@ void lw__ports_add(lw__ports *ports, const char *stem, int count, int numbered)
     }
 }
 
-void *lw__law_param(const char *kind, size_t n_bytes, lw_error *err)
+void *lw__law_param(size_t n_bytes, lw_error *err)
 {
     void *param = lw__alloc(n_bytes);
     if (param == NULL)
-        lw_error_set(err, LW_ERR_MEMORY, "%s law: no memory for it", kind);
+        lw_error_set(err, LW_ERR_MEMORY, "no memory for a law");
     return param;
 }
 

@@ -305,22 +305,22 @@ typedef struct field {
     int negative; // may be below 0
 } field;
 
-static lw_status check_field(const char *kind, int parts, const field *f, lw_error *err)
+static lw_status check_field(int parts, const field *f, lw_error *err)
 {
-    lw_status status = lw__law_field(kind, f->name, f->value, err);
+    lw_status status = lw__law_field(f->name, f->value, err);
     if (status != LW_OK)
         return status;
     if (f->part & ~parts && f->value != 0)
-        return lw__law_bad(kind, f->name, f->value,
+        return lw__law_bad(f->name, f->value,
                            f->part == INTEGRAL ? "permitted 0, the law has no integral"
                                                : "permitted 0, the law has no derivative",
                            err);
     if (!f->negative && f->value < 0)
-        return lw__law_bad(kind, f->name, f->value, "permitted from 0 on", err);
+        return lw__law_bad(f->name, f->value, "permitted from 0 on", err);
     return LW_OK;
 }
 
-static lw_status check_fields(const char *kind, int parts, const lw_pid *p, lw_error *err)
+static lw_status check_fields(int parts, const lw_pid *p, lw_error *err)
 {
     const field fields[] = {
         {"kp", p->kp, 0, 1},
@@ -334,41 +334,38 @@ static lw_status check_fields(const char *kind, int parts, const lw_pid *p, lw_e
         {"start", p->start, INTEGRAL, 1},
     };
     for (size_t i = 0; i < sizeof fields / sizeof *fields; i++) {
-        lw_status status = check_field(kind, parts, &fields[i], err);
+        lw_status status = check_field(parts, &fields[i], err);
         if (status != LW_OK)
             return status;
     }
     if (p->integration > LW_TRAPEZOIDAL)
-        return lw__law_bad(kind, "integration", (double)p->integration,
+        return lw__law_bad("integration", (double)p->integration,
                            "permitted 0 (forward Euler) and 1 (trapezoidal)", err);
     return LW_OK;
 }
 
-static lw_status check_windup(const char *kind, int parts, const lw_pid *p, lw__limits limits,
-                              lw_error *err)
+static lw_status check_windup(int parts, const lw_pid *p, lw__limits limits, lw_error *err)
 {
     if ((unsigned)p->anti_windup > LW_WINDUP_BACK_CALCULATION)
-        return lw__law_bad(kind, "anti_windup", (double)p->anti_windup,
+        return lw__law_bad("anti_windup", (double)p->anti_windup,
                            "permitted 0 (none) to 3 (back-calculation)", err);
     const char *word = windup_words[p->anti_windup];
     if (p->anti_windup != LW_WINDUP_NONE && !(parts & INTEGRAL))
         return lw_error_set(err, LW_ERR_ARGUMENT,
-                            "%s law: anti_windup is \"%s\"; permitted \"none\", the law has no "
-                            "integral",
-                            kind, word);
+                            "anti_windup is \"%s\"; permitted \"none\", the law has no integral",
+                            word);
     if (p->anti_windup != LW_WINDUP_NONE && isinf(limits.lo) && isinf(limits.hi))
         return lw_error_set(err, LW_ERR_ARGUMENT,
-                            "%s law: anti_windup is \"%s\"; without a limit \"none\" is permitted",
-                            kind, word);
+                            "anti_windup is \"%s\"; without a limit \"none\" is permitted", word);
     if (p->anti_windup == LW_WINDUP_CLAMP && lw__beyond(limits, p->start))
-        return lw_error_set(err, LW_ERR_ARGUMENT,
-                            "%s law: start is %.12g; permitted %.12g to %.12g, where clamp holds "
-                            "the integral",
-                            kind, p->start, limits.lo, limits.hi);
+        return lw_error_set(
+            err, LW_ERR_ARGUMENT,
+            "start is %.12g; permitted %.12g to %.12g, where clamp holds the integral", p->start,
+            limits.lo, limits.hi);
     if (p->anti_windup == LW_WINDUP_BACK_CALCULATION && !(p->kb > 0))
-        return lw__law_bad(kind, "kb", p->kb, "permitted above 0 with back-calculation", err);
+        return lw__law_bad("kb", p->kb, "permitted above 0 with back-calculation", err);
     if (p->anti_windup != LW_WINDUP_BACK_CALCULATION && p->kb != 0)
-        return lw__law_bad(kind, "kb", p->kb, "permitted 0 without back-calculation", err);
+        return lw__law_bad("kb", p->kb, "permitted 0 without back-calculation", err);
     return LW_OK;
 }
 
@@ -400,7 +397,7 @@ static lw_status make(const char *kind, int shape, const lw_pid *p, lw__limits l
     if (shape & INTEGRAL)
         names[at.integral] = "integral";
     double start[5] = {p->start};
-    pid *param = lw__law_param(kind, sizeof *param, err);
+    pid *param = lw__law_param(sizeof *param, err);
     if (param == NULL)
         return LW_ERR_MEMORY;
     *param = (pid){p->kp, p->ki, p->kd, p->filter, p->kb, limits, shape, at};
@@ -422,14 +419,14 @@ lw_status lw_law_pid(const char *kind, const lw_pid *p, lw_law **out, lw_error *
     int parts = parts_of(kind);
     if (parts < 0)
         return lw_error_set(err, LW_ERR_NAME,
-                            "law: kind is \"%s\"; permitted \"p\", \"pi\", \"pd\" or \"pid\"",
+                            "kind is \"%s\"; permitted \"p\", \"pi\", \"pd\" or \"pid\"",
                             kind != NULL ? kind : "");
     lw__limits limits = {0, 0};
-    lw_status status = check_fields(kind, parts, p, err);
+    lw_status status = check_fields(parts, p, err);
     if (status == LW_OK)
-        status = lw__law_limits(kind, p->lo, p->hi, &limits, err);
+        status = lw__law_limits(p->lo, p->hi, &limits, err);
     if (status == LW_OK)
-        status = check_windup(kind, parts, p, limits, err);
+        status = check_windup(parts, p, limits, err);
     if (status == LW_OK)
         status = make(kind, shape_of(parts, p), p, limits, out, err);
     return status;

@@ -30,11 +30,10 @@ LW__LAW_BODY int lw__beyond(lw__limits limits, double u)
     return u < limits.lo || u > limits.hi;
 }
 
-// `kind` is the law in words, for messages.
-lw_status lw__law_limits(const char *kind, double lo, double hi, lw__limits *out, lw_error *err);
-lw_status lw__law_field(const char *kind, const char *field, double value, lw_error *err);
-lw_status lw__law_bad(const char *kind, const char *field, double value, const char *permitted,
-                      lw_error *err);
+// Messages name the field; whoever has a name for the law puts it before them.
+lw_status lw__law_limits(double lo, double hi, lw__limits *out, lw_error *err);
+lw_status lw__law_field(const char *field, double value, lw_error *err);
+lw_status lw__law_bad(const char *field, double value, const char *permitted, lw_error *err);
 
 // Names built one after the other.
 typedef struct lw__ports {
@@ -47,7 +46,7 @@ typedef struct lw__ports {
 void lw__ports_add(lw__ports *ports, const char *stem, int count, int numbered);
 
 // A cleared parameter block, or NULL with the message set.
-void *lw__law_param(const char *kind, size_t n_bytes, lw_error *err);
+void *lw__law_param(size_t n_bytes, lw_error *err);
 // Make the law that `def` describes; `param` is from lw__law_param and is the law's from now on,
 // or freed.
 lw_status lw__law_finish(lw_law_def *def, void *param, lw_law **out, lw_error *err);

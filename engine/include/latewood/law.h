@@ -54,6 +54,7 @@ typedef struct lw_law lw_law;
 
 // Names follow the rule of every name in a rig (see plant.h); unique among the inputs, and unique
 // among outputs and states together. On failure the parameter is not taken over.
+// Messages name the field only; the caller names the law (lw_error_prefix).
 //   errors  LW_ERR_SHAPE a count out of range; LW_ERR_NAME; LW_ERR_DUPLICATE; LW_ERR_NOT_FINITE a
 //           start; LW_ERR_ARGUMENT kind, step or names missing
 LW_API lw_status lw_law_new(const lw_law_def *def, lw_law **out, lw_error *err);
