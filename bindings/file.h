@@ -1,0 +1,24 @@
+// Data files that a study names: where they are, and columns of numbers in them.
+#ifndef LATEWOOD_BINDINGS_FILE_H
+#define LATEWOOD_BINDINGS_FILE_H
+
+#include "fields.h"
+
+// The path to open for a path as the study wrote it, by the host's rule; on the stack. Raises
+// where the host refuses.
+const char *lw__lua_resolve(const lw__lua_reader *r, const char *field, const char *path);
+
+// A column by its name in the header, or (name NULL) by its number from 1.
+typedef struct lw__lua_column {
+    const char *name;
+    int number;
+} lw__lua_column;
+
+// Two columns of a text of comma-, semicolon- or tab-separated values. Blank lines and lines that
+// begin with # or ; are skipped; a first line without numbers in the columns is a header.
+void lw__lua_read_columns(const lw__lua_reader *r, const char *path,
+                          const lw__lua_column columns[2], lw__lua_list out[2]);
+
+void lw__lua_file_class(lua_State *L);
+
+#endif
