@@ -1,0 +1,369 @@
+// The total order of operations, the timers that make them due, and the sets between them.
+//
+// An operation's number is its place in the order: phase, kind, place of declaration, part. A set
+// of operations is a row of bits, so that the next operation due is the lowest bit.
+
+#include "run/freeze.h"
+
+#include "io/source.h"
+#include "run/sprint.h"
+#include "run/track.h"
+
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+// ---- streams
+
+typedef struct stream_of {
+    uint32_t stream;
+    const char *owner, *origin;
+} stream_of;
+
+static int by_stream(const void *a, const void *b)
+{
+    uint32_t x = ((const stream_of *)a)->stream, y = ((const stream_of *)b)->stream;
+    return (x > y) - (x < y);
+}
+
+// Two draws must not share an address: a collision of hashed names is refused.
+lw_status lw__freeze_streams(lw__freezer *w)
+{
+    const lw_frozen *z = w->z;
+    int n = 0, room = z->n_sources + z->n_adcs + 3;
+    for (int i = 0; i < z->n_loops; i++)
+        room += 2 + z->loops[i].latency.n_streams;
+    stream_of *all = lw__freezer_get(w, sizeof *all * (size_t)room);
+    if (all == NULL)
+        return LW_ERR_MEMORY;
+    for (int i = 0; i < z->n_sources; i++)
+        all[n++] = (stream_of){z->sources[i].stream, z->sources[i].item->def.name,
+                               z->sources[i].item->def.origin};
+    for (int i = 0; i < z->n_adcs; i++)
+        all[n++] = (stream_of){z->adcs[i].noise_stream, z->adcs[i].item->def.name,
+                               z->adcs[i].item->def.origin};
+    for (int i = 0; i < z->n_loops; i++) {
+        const lw__loop *l = &z->loops[i];
+        const char *name = l->item->def.name, *origin = l->item->def.origin;
+        all[n++] = (stream_of){l->latency.lost_stream, name, origin};
+        all[n++] = (stream_of){l->latency.missed_stream, name, origin};
+        for (int k = 0; k < l->latency.n_streams; k++)
+            all[n++] = (stream_of){l->latency.streams[k], name, origin};
+    }
+    qsort(all, (size_t)n, sizeof *all, by_stream);
+    for (int i = 1; i < n; i++)
+        if (all[i].stream == all[i - 1].stream)
+            return lw__fail_at(all[i].origin, w->err, LW_ERR_DUPLICATE,
+                               "\"%s\" and \"%s\" have names whose draw streams collide; rename one",
+                               all[i - 1].owner, all[i].owner);
+    return LW_OK;
+}
+
+// ---- the list of operations
+
+typedef struct ordered {
+    lw__op op;
+    int place;
+} ordered;
+
+typedef struct order {
+    int n, room;
+    ordered *list;
+} order;
+
+static void add_op(order *o, lw__op_kind kind, int phase, int place, int index, int part)
+{
+    if (o->n < o->room)
+        o->list[o->n] = (ordered){{kind, index, part, phase, NULL}, place};
+    o->n++;
+}
+
+static int by_order(const void *a, const void *b)
+{
+    const ordered *x = a, *y = b;
+    const int keys[][2] = {{x->op.phase, y->op.phase},
+                           {(int)x->op.kind, (int)y->op.kind},
+                           {x->place, y->place},
+                           {x->op.index, y->op.index},
+                           {x->op.part, y->op.part}};
+    for (size_t i = 0; i < sizeof keys / sizeof keys[0]; i++)
+        if (keys[i][0] != keys[i][1])
+            return keys[i][0] < keys[i][1] ? -1 : 1;
+    return 0;
+}
+
+static void list_ops(const lw_frozen *z, order *o)
+{
+    for (int g = 0; g < z->n_groups; g++) {
+        add_op(o, LW__OP_ANCHOR, 0, g, g, 0);
+        for (int i = 0; i < z->groups[g].n_generators; i++)
+            add_op(o, LW__OP_TURN, 0, g, g, i);
+        for (int c = 0; c < z->groups[g].n_u; c++)
+            if (z->groups[g].channels[c].delay > 0)
+                add_op(o, LW__OP_DELAYED, 1, g, g, c);
+    }
+    for (int i = 0; i < z->n_sources; i++)
+        if (z->sources[i].timer >= 0)
+            add_op(o, LW__OP_SOURCE, 0, z->sources[i].item->place, i, 0);
+    for (int i = 0; i < z->n_adcs; i++) {
+        int place = z->adcs[i].item->place;
+        add_op(o, LW__OP_SAMPLE, 3, place, i, 0);
+        add_op(o, LW__OP_CONVERT, z->adcs[i].takes > 0 ? 1 : 4, place, i, 0);
+    }
+    for (int i = 0; i < z->n_dacs; i++)
+        if (z->dacs[i].timer >= 0)
+            add_op(o, LW__OP_LATCH, 2, z->dacs[i].item->place, i, 0);
+    for (int i = 0; i < z->n_loops; i++) {
+        int place = z->loops[i].item->place;
+        add_op(o, LW__OP_ARRIVE, 1, place, i, 0);
+        add_op(o, LW__OP_STEP, z->loops[i].in_phase_1 ? 1 : 7, place, i, 0);
+    }
+    for (int i = 0; i < z->n_tracks; i++)
+        add_op(o, LW__OP_TRACK, 8, i, i, 0);
+    for (int i = 0; i < z->n_records; i++)
+        if (z->records[i].is_signal)
+            add_op(o, LW__OP_RECORD, 8, i, i, 0);
+}
+
+static const void *thing_of(const lw_frozen *z, const lw__op *op)
+{
+    switch (op->kind) {
+    case LW__OP_ANCHOR:
+    case LW__OP_TURN:
+    case LW__OP_DELAYED:
+        return &z->groups[op->index];
+    case LW__OP_SOURCE:
+        return &z->sources[op->index];
+    case LW__OP_SAMPLE:
+    case LW__OP_CONVERT:
+        return &z->adcs[op->index];
+    case LW__OP_LATCH:
+        return &z->dacs[op->index];
+    case LW__OP_ARRIVE:
+    case LW__OP_STEP:
+        return &z->loops[op->index];
+    default:
+        return NULL;
+    }
+}
+
+static lw_status number_ops(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    order o = {0};
+    list_ops(z, &o);
+    o.room = o.n;
+    o.n = 0;
+    o.list = lw__freezer_get(w, sizeof *o.list * (size_t)(o.room + 1));
+    z->ops = lw__freezer_get(w, sizeof *z->ops * (size_t)(o.room + 1));
+    if (o.list == NULL || z->ops == NULL)
+        return LW_ERR_MEMORY;
+    list_ops(z, &o);
+    qsort(o.list, (size_t)o.n, sizeof *o.list, by_order);
+    z->n_ops = o.n;
+    z->n_words = (o.n + 63) / 64;
+    z->n_words = z->n_words > 0 ? z->n_words : 1;
+    for (int i = 0; i < o.n; i++) {
+        z->ops[i] = o.list[i].op;
+        z->ops[i].thing = thing_of(z, &z->ops[i]);
+    }
+    return LW_OK;
+}
+
+static int op_number(const lw_frozen *z, lw__op_kind kind, int index, int part)
+{
+    for (int i = 0; i < z->n_ops; i++)
+        if (z->ops[i].kind == kind && z->ops[i].index == index && z->ops[i].part == part)
+            return i;
+    return -1;
+}
+
+// ---- sets
+
+lw_status lw__set_put(lw__freezer *w, lw__set *set, int op)
+{
+    if (set->words == NULL)
+        set->words = lw__freezer_get(w, sizeof(uint64_t) * (size_t)w->z->n_words);
+    if (set->words == NULL)
+        return LW_ERR_MEMORY;
+    if (op >= 0)
+        set->words[op / 64] |= UINT64_C(1) << (op % 64);
+    set->first = set->words[0];
+    return LW_OK;
+}
+
+static lw_status make_due(lw__freezer *w, int timer, lw__op_kind kind, int index, int part)
+{
+    if (timer < 0)
+        return LW_OK;
+    return lw__set_put(w, &w->z->timer_ops[timer], op_number(w->z, kind, index, part));
+}
+
+static lw_status timers_of_plants(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int g = 0; g < z->n_groups; g++) {
+        const lw__group *group = &z->groups[g];
+        int timer = group->timer >= 0 ? group->timer : z->adcs[group->grid_adc].timer;
+        LW__TRY(make_due(w, timer, LW__OP_ANCHOR, g, 0));
+        for (int i = 0; i < group->n_generators; i++) {
+            LW__TRY(make_due(w, group->generators[i].timer, LW__OP_ANCHOR, g, 0));
+            LW__TRY(make_due(w, group->generators[i].timer, LW__OP_TURN, g, i));
+        }
+        for (int c = 0; c < group->n_u; c++)
+            if (group->channels[c].delay > 0)
+                LW__TRY(make_due(w, group->channels[c].timer, LW__OP_DELAYED, g, c));
+    }
+    return LW_OK;
+}
+
+static lw_status timers_of_parts(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int i = 0; i < z->n_sources; i++)
+        LW__TRY(make_due(w, z->sources[i].timer, LW__OP_SOURCE, i, 0));
+    for (int i = 0; i < z->n_adcs; i++) {
+        LW__TRY(make_due(w, z->adcs[i].timer, LW__OP_SAMPLE, i, 0));
+        LW__TRY(make_due(w, z->adcs[i].done_timer, LW__OP_CONVERT, i, 0));
+        z->adcs[i].sample_op = op_number(z, LW__OP_SAMPLE, i, 0);
+        z->adcs[i].convert_op = op_number(z, LW__OP_CONVERT, i, 0);
+    }
+    for (int i = 0; i < z->n_dacs; i++)
+        LW__TRY(make_due(w, z->dacs[i].timer, LW__OP_LATCH, i, 0));
+    for (int i = 0; i < z->n_loops; i++)
+        LW__TRY(make_due(w, z->loops[i].timer, LW__OP_ARRIVE, i, 0));
+    for (int i = 0; i < z->n_records; i++)
+        LW__TRY(make_due(w, z->records[i].timer, LW__OP_RECORD, i, 0));
+    for (int i = 0; i < z->n_tracks; i++)
+        LW__TRY(make_due(w, z->tracks[i].timer, LW__OP_TRACK, i, 0));
+    return LW_OK;
+}
+
+// What the end of a conversion makes due: laws that step on it, adcs that it triggers.
+static lw_status conversions(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int i = 0; i < z->n_adcs; i++) {
+        lw__adc *a = &z->adcs[i];
+        for (int l = 0; l < z->n_loops; l++)
+            if (z->loops[l].adc == a)
+                LW__TRY(lw__set_put(w, &a->after, op_number(z, LW__OP_STEP, l, 0)));
+        for (int k = 0; k < z->n_adcs; k++)
+            if (z->adcs[k].parent == i)
+                LW__TRY(lw__set_put(w, &a->after, z->adcs[k].sample_op));
+    }
+    return LW_OK;
+}
+
+// Which metrics want to know when something changes.
+static lw_status watchers(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int t = 0; t < z->n_tracks; t++) {
+        int op = op_number(z, LW__OP_TRACK, t, 0);
+        LW__TRY(lw__track_watch(w, &z->tracks[t], op));
+    }
+    return LW_OK;
+}
+
+// An anchor moves with the timer of the adc that fixes its grid where that timer is only the grid.
+void lw__freeze_anchors(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int g = 0; g < z->n_groups; g++) {
+        lw__group *group = &z->groups[g];
+        int adc = group->grid_adc;
+        int merged = adc >= 0 && group->first == 0 && z->adcs[adc].n_steps == 1 &&
+                     z->adcs[adc].steps[0].at == 0;
+        group->timer = merged ? -1 : lw__freezer_timer(w);
+    }
+    z->n_model_timers = z->n_timers;
+}
+
+// ---- the compiled driver of a plain loop
+
+static int plain_dac(const lw__dac *d)
+{
+    if (d == NULL || d->drives.n != 1)
+        return 0;
+    const lw__group *g = d->drives.list[0].group;
+    return d->n_phases == 0 && d->plain && d->log < 0 && !d->newest &&
+           d->observers.words == NULL && d->drives.list[0].delay == 0 &&
+           g->observers.words == NULL && g->n_generators == 0;
+}
+
+static int plain_adc(const lw__adc *a)
+{
+    return a->has_clock && a->at_once && a->plain && a->n_channels == 1 && a->takes == 0 &&
+           a->log < 0 && a->observers.words == NULL;
+}
+
+static int plain_loop(const lw__loop *l)
+{
+    const lw__latency *y = &l->latency;
+    int latency = y->timing != NULL || (y->n_list == 1 && y->list[0].whole < 0 &&
+                                        y->list[0].fate == LW_FATE_WRITTEN);
+    for (int k = 0; k < l->n_in; k++)
+        if (l->inputs[k].at.kind != LW__SIGNAL_CELL && l->inputs[k].at.kind != LW__SIGNAL_CONSTANT)
+            return 0;
+    return latency && y->n_state == 0 && !y->by_chance && l->log < 0 && !l->observed &&
+           l->n_targets == 1 && l->observers.words == NULL;
+}
+
+// Found where the rig has one loop and its instants cannot change their order.
+static lw_status find_sprint(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    if (z->n_loops != 1 || z->n_adcs != 1 || z->n_words != 1 || w->general)
+        return LW_OK;
+    const lw__loop *l = &z->loops[0];
+    const lw__dac *d = l->targets[0].dac;
+    const lw__adc *a = l->adc;
+    lw_signal of = a->of[0].at;
+    if (!plain_loop(l) || !plain_adc(a) || !plain_dac(d) || of.kind != LW__SIGNAL_ROW)
+        return LW_OK;
+    const lw__group *g = &z->groups[of.index];
+    lw_tick shortest, longest;
+    lw__grid_steps(a->period, &shortest, &longest);
+    if (g->timer >= 0 || d->drives.list[0].group != g || l->latency.highest > shortest)
+        return LW_OK;
+    for (int k = 0; k < z->n_groups; k++) // no other anchor moves with this adc
+        if (&z->groups[k] != g && z->groups[k].timer < 0)
+            return LW_OK;
+    lw__sprint *sprint = lw__freezer_get(w, sizeof *sprint);
+    if (sprint == NULL)
+        return LW_ERR_MEMORY;
+    *sprint = (lw__sprint){.group = g,
+                           .row = &g->rows[of.part],
+                           .adc = a,
+                           .loop = l,
+                           .dac = d,
+                           .channel = d->drives.list[0].channel,
+                           .output = l->targets[0].output};
+    z->sprint = sprint;
+    return LW_OK;
+}
+
+lw_status lw__freeze_order(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    int observers = z->n_timers - z->n_model_timers;
+    z->due = lw__freezer_integer(w, z->name, "due", LW_SLICE_SCHEDULE, z->n_model_timers);
+    if (lw__freezer_integer(w, z->name, "due for observers", LW_SLICE_METRIC, observers) < 0)
+        return LW_ERR_MEMORY;
+    z->timer_ops = lw__freezer_get(w, sizeof *z->timer_ops * (size_t)(z->n_timers + 1));
+    if (z->due < 0 || z->timer_ops == NULL)
+        return LW_ERR_MEMORY;
+    LW__TRY(number_ops(w));
+    LW__TRY(timers_of_plants(w));
+    LW__TRY(timers_of_parts(w));
+    LW__TRY(conversions(w));
+    LW__TRY(watchers(w));
+    LW__TRY(find_sprint(w));
+    LW__TRY(lw__set_put(w, &z->no_ops, -1));
+    LW__TRY(lw__set_put(w, &z->phase_8, -1));
+    for (int i = 0; i < z->n_ops; i++)
+        if (z->ops[i].phase == 8)
+            LW__TRY(lw__set_put(w, &z->phase_8, i));
+    return LW_OK;
+}

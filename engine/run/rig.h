@@ -1,0 +1,69 @@
+// What a rig holds before it is frozen: copies of the definitions, in order of declaration.
+#ifndef LATEWOOD_RUN_RIG_H
+#define LATEWOOD_RUN_RIG_H
+
+#include "base/arena.h"
+
+#include <latewood/rig.h>
+
+typedef struct lw__plant_item {
+    const char *origin, *name;
+    lw_plant *plant;
+    int place; // order of declaration in the whole rig
+} lw__plant_item;
+
+typedef struct lw__connection_item {
+    const char *origin, *from, *to;
+    int place;
+} lw__connection_item;
+
+typedef struct lw__source_item {
+    lw_source_def def; // texts and lists are copies
+    int place;
+} lw__source_item;
+
+typedef struct lw__value_item {
+    const char *origin, *name;
+    double start;
+    int place;
+} lw__value_item;
+
+typedef struct lw__adc_item {
+    lw_adc_def def;
+    int place;
+} lw__adc_item;
+
+typedef struct lw__dac_item {
+    lw_dac_def def;
+    int place;
+} lw__dac_item;
+
+typedef struct lw__loop_item {
+    lw_loop_def def;
+    lw_law *law;
+    lw_timing *timing;
+    int place;
+} lw__loop_item;
+
+struct lw_rig {
+    int references;
+    lw__arena *arena;
+    const char *name;
+    int n_places;
+    int n_plants, n_connections, n_sources, n_values, n_adcs, n_dacs, n_loops;
+    lw__plant_item *plants;
+    lw__connection_item *connections;
+    lw__source_item *sources;
+    lw__value_item *values;
+    lw__adc_item *adcs;
+    lw__dac_item *dacs;
+    lw__loop_item *loops;
+    int frozen; // a frozen rig refers to it: no more additions
+};
+
+// Put "origin: " before a message, where there is an origin.
+lw_status lw__fail_at(const char *origin, lw_error *err, lw_status status, const char *format, ...)
+    LW_PRINTF(4, 5);
+lw_status lw__blame(const char *origin, lw_error *err, lw_status status);
+
+#endif

@@ -1,0 +1,488 @@
+// Tracks and metrics: a signal as a piecewise polynomial, and what is read off the pieces.
+//
+// Between two changes of its group a plant's signal is smooth. A track keeps the state at the last
+// change; when the next one comes, the stretch between is covered by pieces short enough for a
+// Taylor polynomial in time, on which extremes, crossings and integrals are found exactly.
+//
+// Workload: one update each change of the group: the degree times a matrix-vector product, plus a
+// few sums; roots are looked for only where the coefficients allow one.
+//
+// Invariants
+// 1. A track reads the run and writes its own cells only.
+// 2. Both sides of a jump are seen: the end of one stretch and the start of the next.
+
+#include "run/track.h"
+
+#include "io/source.h"
+#include "run/poly.h"
+
+#include <math.h>
+#include <string.h>
+
+#define NOT_YET (-1.0)
+
+typedef struct piece {
+    double y[LW__POLY_MAX + 1], e[LW__POLY_MAX + 1]; // signal, and signal less wanted
+    int degree;
+    double begin, length; // since `from` [s]
+} piece;
+
+// ---- pieces
+
+static double dot(int n, const double *a, const double *b)
+{
+    double sum = 0;
+    for (int k = 0; k < n; k++)
+        sum += a[k] * b[k];
+    return sum;
+}
+
+// Taylor coefficients of one output over `length`, from state x and inputs u at its start.
+static void row_series(const lw__kernel *k, const lw__row *row, const double *x, const double *u,
+                       double length, int degree, double *work, double *c)
+{
+    int n = k->n;
+    double *term = work, *next = work + n;
+    memcpy(term, x, sizeof(double) * (size_t)n);
+    c[0] = dot(n, row->c, x) + dot(k->m, row->d, u);
+    for (int power = 1; power <= degree; power++) {
+        double factor = length / power;
+        memset(next, 0, sizeof(double) * (size_t)n);
+        for (int j = 0; j < n; j++)
+            for (int i = 0; i < n; i++)
+                next[i] += k->a[j * n + i] * term[j];
+        for (int j = 0; power == 1 && j < k->m; j++)
+            for (int i = 0; i < n; i++)
+                next[i] += k->b[j * n + i] * u[j];
+        for (int i = 0; i < n; i++)
+            term[i] = next[i] * factor;
+        c[power] = dot(n, row->c, term);
+    }
+}
+
+// Taylor coefficients of a moving source over `length` from tick t on.
+static void source_series(const lw_source_def *def, lw_tick t, double length, int degree, double *c)
+{
+    memset(c, 0, sizeof(double) * (size_t)(degree + 1));
+    c[0] = lw__source_value(def, t);
+    if (def->kind != LW_SOURCE_SINE) {
+        if (degree > 0)
+            c[1] = lw__source_slope(def, t) * length;
+        return;
+    }
+    double sine, cosine, turn = lw__source_turn(def) * length, factor = 1;
+    lw__source_sine(def, t, &sine, &cosine);
+    for (int k = 1; k <= degree; k++) {
+        factor *= turn / k;
+        double derivative = k % 2 == 1 ? cosine : sine;
+        c[k] = (k % 4 == 2 || k % 4 == 3 ? -derivative : derivative) * factor;
+    }
+}
+
+// Coefficients of a signal over the stretch that began at `began`, from tick t on.
+static void signal_series(const lw__lane *s, const lw__track *track, const lw__reference *r,
+                          double held, lw_tick began, lw_tick t, double length, double *c)
+{
+    int W = s->width, L = s->lane, degree = track->degree;
+    if (r->at.kind == LW__SIGNAL_SOURCE) {
+        source_series(&s->z->sources[r->at.index].item->def, t, length, degree, c);
+        return;
+    }
+    memset(c, 0, sizeof(double) * (size_t)(degree + 1));
+    c[0] = held;
+    if (r->at.kind != LW__SIGNAL_ROW)
+        return;
+    const lw__changes none = {0, NULL, NULL, NULL};
+    const lw__group *g = &s->z->groups[r->at.index];
+    double *x0 = s->work, *u = x0 + g->n_x, *x = u + g->n_u, *work = x + g->n_x;
+    for (int k = 0; k < g->n_x; k++)
+        x0[k] = LW__F(track->x + k);
+    for (int k = 0; k < g->n_u; k++)
+        u[k] = LW__F(track->u + k);
+    lw__kernel_value(&g->kernel, began, x0, u, &none, t, x, work);
+    row_series(&g->kernel, &g->rows[r->at.part], x, u, length, degree, work, c);
+}
+
+// ---- what is read off a piece
+
+LW__INLINE double *sum_of(lw__lane *s, const lw__track *t, lw__sum which)
+{
+    int W = s->width, L = s->lane;
+    return &LW__F(t->sums + (int)which);
+}
+
+static void note_extreme(lw__lane *s, const lw__track *t, double value, double at)
+{
+    if (value > *sum_of(s, t, LW__SUM_MAXIMUM)) {
+        *sum_of(s, t, LW__SUM_MAXIMUM) = value;
+        *sum_of(s, t, LW__SUM_MAXIMUM_AT) = at;
+    }
+    if (value < *sum_of(s, t, LW__SUM_MINIMUM)) {
+        *sum_of(s, t, LW__SUM_MINIMUM) = value;
+        *sum_of(s, t, LW__SUM_MINIMUM_AT) = at;
+    }
+}
+
+static int turning_points(int degree, const double *c, double *roots)
+{
+    double d[LW__POLY_MAX + 1];
+    for (int k = 1; k <= degree; k++)
+        d[k - 1] = k * c[k];
+    return degree > 0 ? lw__poly_roots(degree - 1, d, roots) : 0;
+}
+
+static void extremes(lw__lane *s, const lw__track *t, const piece *p)
+{
+    double swing = lw__poly_swing(p->degree, p->y), roots[LW__POLY_MAX];
+    if (p->y[0] + swing <= *sum_of(s, t, LW__SUM_MAXIMUM) &&
+        p->y[0] - swing >= *sum_of(s, t, LW__SUM_MINIMUM))
+        return;
+    note_extreme(s, t, p->y[0], p->begin);
+    int n = turning_points(p->degree, p->y, roots);
+    for (int k = 0; k < n; k++)
+        note_extreme(s, t, lw__poly_value(p->degree, p->y, roots[k]),
+                     p->begin + roots[k] * p->length);
+    note_extreme(s, t, lw__poly_value(p->degree, p->y, 1), p->begin + p->length);
+}
+
+static void error_peak(lw__lane *s, const lw__track *t, const piece *p)
+{
+    double *peak = sum_of(s, t, LW__SUM_ERROR_PEAK), roots[LW__POLY_MAX];
+    if (fabs(p->e[0]) + lw__poly_swing(p->degree, p->e) <= *peak)
+        return;
+    *peak = fmax(*peak, fmax(fabs(p->e[0]), fabs(lw__poly_value(p->degree, p->e, 1))));
+    int n = turning_points(p->degree, p->e, roots);
+    for (int k = 0; k < n; k++)
+        *peak = fmax(*peak, fabs(lw__poly_value(p->degree, p->e, roots[k])));
+}
+
+// Integrals of |e| and of time times |e|: between the roots of e the sign is one.
+static void absolute(lw__lane *s, const lw__track *t, const piece *p)
+{
+    double edges[LW__POLY_MAX + 2], timed[LW__POLY_MAX + 2];
+    int n = lw__poly_roots(p->degree, p->e, edges), degree = p->degree;
+    edges[n] = 1;
+    timed[0] = p->begin * p->e[0];
+    for (int k = 1; k <= degree; k++)
+        timed[k] = p->begin * p->e[k] + p->length * p->e[k - 1];
+    timed[degree + 1] = p->length * p->e[degree];
+    double from = 0;
+    for (int k = 0; k <= n; k++) {
+        double part = lw__poly_integral(degree, p->e, from, edges[k]);
+        *sum_of(s, t, LW__SUM_ABSOLUTE) += fabs(part) * p->length;
+        if (t->needs & LW__NEED_TIMED)
+            *sum_of(s, t, LW__SUM_TIMED) +=
+                fabs(lw__poly_integral(degree + 1, timed, from, edges[k])) * p->length;
+        from = edges[k];
+    }
+}
+
+// Roots of y - level on the piece.
+static int crossings(const piece *p, double level, double *roots)
+{
+    double c[LW__POLY_MAX + 1];
+    memcpy(c, p->y, sizeof(double) * (size_t)(p->degree + 1));
+    c[0] -= level;
+    return lw__poly_roots(p->degree, c, roots);
+}
+
+static void settling(lw__lane *s, const lw__metric *m, const lw__track *t, const piece *p)
+{
+    int W = s->width, L = s->lane;
+    double band = m->def.band * fabs(t->level - *sum_of(s, t, LW__SUM_BASE));
+    double off = fabs(p->y[0] - t->level), swing = lw__poly_swing(p->degree, p->y);
+    double *last = &LW__F(m->own), *outside = &LW__F(m->own + 1);
+    *outside = 0;
+    if (off + swing <= band)
+        return;
+    if (fabs(lw__poly_value(p->degree, p->y, 1) - t->level) > band) {
+        *outside = 1;
+        *last = p->begin + p->length;
+        return;
+    }
+    double roots[LW__POLY_MAX], latest = off > band ? 0 : NOT_YET;
+    for (int side = -1; side <= 1; side += 2) {
+        int n = crossings(p, t->level + side * band, roots);
+        latest = n > 0 && roots[n - 1] > latest ? roots[n - 1] : latest;
+    }
+    if (latest >= 0)
+        *last = p->begin + latest * p->length;
+}
+
+static void rising(lw__lane *s, const lw__metric *m, const lw__track *t, const piece *p)
+{
+    int W = s->width, L = s->lane;
+    double base = *sum_of(s, t, LW__SUM_BASE), span = t->level - base;
+    for (int k = 0; k < 2; k++) {
+        double *at = &LW__F(m->own + k);
+        double level = base + (k == 0 ? m->def.low : m->def.high) * span, roots[LW__POLY_MAX];
+        if (*at != NOT_YET)
+            continue;
+        if ((p->y[0] - level) * span >= 0)
+            *at = p->begin;
+        else if (fabs(p->y[0] - level) <= lw__poly_swing(p->degree, p->y) &&
+                 crossings(p, level, roots) > 0)
+            *at = p->begin + roots[0] * p->length;
+    }
+}
+
+static void take_piece(lw__lane *s, int track, const piece *p)
+{
+    const lw__track *t = &s->z->tracks[track];
+    int needs = t->needs;
+    if (needs & LW__NEED_EXTREMES)
+        extremes(s, t, p);
+    if (needs & LW__NEED_MEAN)
+        *sum_of(s, t, LW__SUM_VALUE) += lw__poly_integral(p->degree, p->y, 0, 1) * p->length;
+    if (needs & LW__NEED_SQUARE)
+        *sum_of(s, t, LW__SUM_SQUARE) +=
+            lw__poly_product_integral(p->degree, p->y, p->degree, p->y) * p->length;
+    if (needs & LW__NEED_ERROR_SQUARE)
+        *sum_of(s, t, LW__SUM_ERROR_SQUARE) +=
+            lw__poly_product_integral(p->degree, p->e, p->degree, p->e) * p->length;
+    if (needs & (LW__NEED_ABSOLUTE | LW__NEED_TIMED))
+        absolute(s, t, p);
+    if (needs & LW__NEED_ERROR_PEAK)
+        error_peak(s, t, p);
+    for (int k = 0; (needs & (LW__NEED_SETTLING | LW__NEED_RISE)) && k < s->z->n_metrics; k++) {
+        const lw__metric *m = &s->z->metrics[k];
+        if (m->track == track && m->def.kind == LW_METRIC_SETTLING)
+            settling(s, m, t, p);
+        if (m->track == track && m->def.kind == LW_METRIC_RISE)
+            rising(s, m, t, p);
+    }
+    *sum_of(s, t, LW__SUM_SECONDS) += p->length;
+    *sum_of(s, t, LW__SUM_FINAL) = lw__poly_value(p->degree, p->y, 1);
+    *sum_of(s, t, LW__SUM_WANTED) =
+        *sum_of(s, t, LW__SUM_FINAL) - lw__poly_value(p->degree, p->e, 1);
+}
+
+// ---- stretches
+
+// From the last change up to the present tick.
+static void close_stretch(lw__lane *s, int track)
+{
+    const lw__track *t = &s->z->tracks[track];
+    int W = s->width, L = s->lane;
+    lw_tick began = LW__I(t->began), at = began;
+    double held = LW__F(t->held), wanted = LW__F(t->wanted);
+    while (at < s->now) {
+        lw_tick end = at + t->piece < s->now ? at + t->piece : s->now;
+        double r[LW__POLY_MAX + 1];
+        piece p = {.degree = t->degree,
+                   .begin = lw_tick_seconds(at - t->from),
+                   .length = lw_tick_seconds(end - at)};
+        signal_series(s, t, &t->of, held, began, at, p.length, p.y);
+        signal_series(s, t, &t->against, wanted, began, at, p.length, r);
+        for (int k = 0; k <= p.degree; k++)
+            p.e[k] = p.y[k] - r[k];
+        take_piece(s, track, &p);
+        at = end;
+    }
+}
+
+static void begin_stretch(lw__lane *s, const lw__track *t)
+{
+    int W = s->width, L = s->lane;
+    LW__I(t->began) = s->now;
+    LW__F(t->held) = t->of.at.kind == LW__SIGNAL_ROW ? 0 : lw__signal_value(s, &t->of);
+    LW__F(t->wanted) = lw__signal_value(s, &t->against);
+    if (t->of.at.kind != LW__SIGNAL_ROW)
+        return;
+    const lw__group *g = &s->z->groups[t->of.at.index];
+    double *x = s->work + 4 * (s->z->most_x + s->z->most_u), *u = x + g->n_x;
+    lw__group_state(s, t->of.at.index, x, u);
+    for (int k = 0; k < g->n_x; k++)
+        LW__F(t->x + k) = x[k];
+    for (int k = 0; k < g->n_u; k++)
+        LW__F(t->u + k) = u[k];
+}
+
+static void open_window(lw__lane *s, const lw__track *t)
+{
+    int W = s->width, L = s->lane;
+    LW__I(t->open) = 1;
+    double wanted = lw__signal_value(s, &t->against), value = lw__signal_value(s, &t->of);
+    double base = !isnan(t->base)                               ? t->base
+                  : t->against_name != NULL && wanted != t->level ? wanted
+                                                                  : value;
+    *sum_of(s, t, LW__SUM_BASE) = base;
+    *sum_of(s, t, LW__SUM_MAXIMUM) = *sum_of(s, t, LW__SUM_MINIMUM) = value;
+    *sum_of(s, t, LW__SUM_FINAL) = value;
+    *sum_of(s, t, LW__SUM_WANTED) = wanted;
+}
+
+void lw__track_update(lw__lane *s, int track)
+{
+    const lw__track *t = &s->z->tracks[track];
+    int W = s->width, L = s->lane;
+    int64_t *due = &LW__I(s->z->due + t->timer);
+    if (LW__I(t->open) == 2 || s->now < t->from)
+        return;
+    if (LW__I(t->open) == 0)
+        open_window(s, t);
+    else
+        close_stretch(s, track);
+    if (s->now >= t->until)
+        LW__I(t->open) = 2;
+    else
+        begin_stretch(s, t);
+    if (*due == s->now)
+        *due = s->now < t->until && t->until != LW_NEVER ? t->until : LW_NEVER;
+}
+
+void lw__track_finish(lw__lane *s, int track)
+{
+    const lw__track *t = &s->z->tracks[track];
+    int W = s->width, L = s->lane;
+    if (LW__I(t->open) == 1)
+        close_stretch(s, track);
+    LW__I(t->open) = 2;
+}
+
+// ---- latencies of a loop
+
+void lw__track_latency(lw__lane *s, int loop, lw_tick latency)
+{
+    int W = s->width, L = s->lane;
+    double seconds = lw_tick_seconds(latency);
+    for (int k = 0; k < s->z->n_metrics; k++) {
+        const lw__metric *m = &s->z->metrics[k];
+        if (m->loop != loop || s->now < m->def.from || s->now > m->def.until)
+            continue;
+        LW__F(m->own) += seconds;
+        LW__F(m->own + 1) += 1;
+        LW__F(m->own + 2) = fmax(LW__F(m->own + 2), seconds);
+        if (m->def.kind != LW_METRIC_LATENCY_PERCENTILE)
+            continue;
+        double cell = floor((seconds - m->lo) * m->per_cell);
+        cell = cell < 0 ? 0 : cell > LW__CELLS - 1 ? LW__CELLS - 1 : cell;
+        LW__I(m->cells + (int)cell) += 1;
+    }
+}
+
+// Upper edge of the cell in which the share is reached.
+static double percentile(const lw__lane *s, const lw__metric *m)
+{
+    int W = s->width, L = s->lane;
+    double total = LW__F(m->own + 1), below = 0;
+    if (total == 0)
+        return (double)NAN;
+    for (int k = 0; k < LW__CELLS; k++) {
+        below += (double)LW__I(m->cells + k);
+        if (below >= m->def.share * total)
+            return m->per_cell > 0 ? m->lo + (k + 1) / m->per_cell : m->lo;
+    }
+    return LW__F(m->own + 2);
+}
+
+static double loop_metric(const lw__lane *s, const lw__metric *m)
+{
+    int W = s->width, L = s->lane;
+    const lw__loop *l = &s->z->loops[m->loop];
+    switch (m->def.kind) {
+    case LW_METRIC_LATENCY_PERCENTILE:
+        return percentile(s, m);
+    case LW_METRIC_LATENCY_MEAN:
+        return LW__F(m->own + 1) > 0 ? LW__F(m->own) / LW__F(m->own + 1) : (double)NAN;
+    case LW_METRIC_LATENCY_MAXIMUM:
+        return LW__F(m->own + 1) > 0 ? LW__F(m->own + 2) : (double)NAN;
+    case LW_METRIC_LOST:
+        return (double)LW__I(l->n_lost);
+    default:
+        return (double)LW__I(l->n_missed);
+    }
+}
+
+// ---- metrics of a track
+
+typedef struct reading {
+    double sums[LW__N_SUMS];
+    double level;
+} reading;
+
+// The extreme farther beyond the level, seen from the base.
+static double peak_of(const reading *r, double *at)
+{
+    const double *u = r->sums;
+    double up = u[LW__SUM_MAXIMUM] - r->level, down = r->level - u[LW__SUM_MINIMUM];
+    int rises = r->level > u[LW__SUM_BASE] || (r->level == u[LW__SUM_BASE] && up >= down);
+    *at = rises ? u[LW__SUM_MAXIMUM_AT] : u[LW__SUM_MINIMUM_AT];
+    return rises ? u[LW__SUM_MAXIMUM] : u[LW__SUM_MINIMUM];
+}
+
+static double overshoot(const reading *r)
+{
+    double at, span = r->level - r->sums[LW__SUM_BASE], peak = peak_of(r, &at);
+    if (span == 0)
+        return (double)NAN;
+    double beyond = (peak - r->level) / span;
+    return beyond > 0 ? beyond : 0;
+}
+
+static double settling_time(const lw__lane *s, const lw__metric *m)
+{
+    int W = s->width, L = s->lane;
+    return LW__F(m->own + 1) != 0 ? (double)NAN : LW__F(m->own);
+}
+
+static double rise_time(const lw__lane *s, const lw__metric *m)
+{
+    int W = s->width, L = s->lane;
+    double low = LW__F(m->own), high = LW__F(m->own + 1);
+    return low == NOT_YET || high == NOT_YET ? (double)NAN : high - low;
+}
+
+static double track_metric(const lw__lane *s, const lw__metric *m)
+{
+    const lw__track *t = &s->z->tracks[m->track];
+    int W = s->width, L = s->lane;
+    reading r;
+    for (int k = 0; k < LW__N_SUMS; k++)
+        r.sums[k] = LW__F(t->sums + k);
+    r.level = isnan(t->level) ? r.sums[LW__SUM_WANTED] : t->level;
+    double at, seconds = r.sums[LW__SUM_SECONDS];
+    switch (m->def.kind) {
+    case LW_METRIC_MAXIMUM:
+        return r.sums[LW__SUM_MAXIMUM];
+    case LW_METRIC_MINIMUM:
+        return r.sums[LW__SUM_MINIMUM];
+    case LW_METRIC_PEAK:
+        return peak_of(&r, &at);
+    case LW_METRIC_PEAK_TIME:
+        peak_of(&r, &at);
+        return at;
+    case LW_METRIC_OVERSHOOT:
+        return overshoot(&r);
+    case LW_METRIC_SETTLING:
+        return settling_time(s, m);
+    case LW_METRIC_RISE:
+        return rise_time(s, m);
+    case LW_METRIC_MEAN:
+        return r.sums[LW__SUM_VALUE] / seconds;
+    case LW_METRIC_SATURATION_TIME:
+        return r.sums[LW__SUM_VALUE];
+    case LW_METRIC_RMS:
+        return sqrt(fmax(r.sums[LW__SUM_SQUARE], 0) / seconds);
+    case LW_METRIC_FINAL:
+        return r.sums[LW__SUM_FINAL];
+    case LW_METRIC_IAE:
+        return r.sums[LW__SUM_ABSOLUTE];
+    case LW_METRIC_ITAE:
+        return r.sums[LW__SUM_TIMED];
+    case LW_METRIC_ISE:
+        return r.sums[LW__SUM_ERROR_SQUARE];
+    case LW_METRIC_ERROR_RMS:
+        return sqrt(fmax(r.sums[LW__SUM_ERROR_SQUARE], 0) / seconds);
+    case LW_METRIC_ERROR_PEAK:
+        return r.sums[LW__SUM_ERROR_PEAK];
+    default:
+        return (double)NAN;
+    }
+}
+
+double lw__metric_value(const lw__lane *s, int metric)
+{
+    const lw__metric *m = &s->z->metrics[metric];
+    return m->track < 0 ? loop_metric(s, m) : track_metric(s, m);
+}

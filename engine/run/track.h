@@ -1,0 +1,79 @@
+// Tracks: one signal followed through a window, piece by piece, for the metrics taken of it.
+#ifndef LATEWOOD_RUN_TRACK_H
+#define LATEWOOD_RUN_TRACK_H
+
+#include "run/freeze.h"
+#include "run/state.h"
+
+// What the metrics of a track need beyond its plain sums.
+typedef enum lw__need {
+    LW__NEED_EXTREMES = 1,
+    LW__NEED_MEAN = 2,
+    LW__NEED_SQUARE = 4,
+    LW__NEED_ABSOLUTE = 8,
+    LW__NEED_TIMED = 16,
+    LW__NEED_ERROR_SQUARE = 32,
+    LW__NEED_ERROR_PEAK = 64,
+    LW__NEED_SETTLING = 128,
+    LW__NEED_RISE = 256
+} lw__need;
+
+// Sums of a track: doubles from `sums` on.
+typedef enum lw__sum {
+    LW__SUM_MAXIMUM,
+    LW__SUM_MAXIMUM_AT, // since `from` [s]
+    LW__SUM_MINIMUM,
+    LW__SUM_MINIMUM_AT,
+    LW__SUM_VALUE,
+    LW__SUM_SQUARE,
+    LW__SUM_ABSOLUTE,
+    LW__SUM_TIMED,
+    LW__SUM_ERROR_SQUARE,
+    LW__SUM_ERROR_PEAK,
+    LW__SUM_FINAL,  // value of the signal at the end of the last piece
+    LW__SUM_WANTED, // and of what it is taken against
+    LW__SUM_BASE,
+    LW__SUM_SECONDS, // length of the window so far
+    LW__N_SUMS
+} lw__sum;
+
+typedef struct lw__track {
+    const char *name;            // of the signal, for messages
+    lw__reference of, against;   // against: a constant where nothing is named
+    const char *against_name;
+    double level;                // at the end; NAN: not known before the end
+    double base;                 // NAN: found when the window opens
+    lw_tick from, until;
+    int needs, timer;
+    lw_tick piece; // longest stretch one polynomial serves
+    int degree;
+    int n_x, n_u; // of the group where `of` is a row
+    // cells
+    int x, u, held, wanted, sums; // doubles
+    int began, open;              // integers; open: 0 not yet, 1 open, 2 closed
+} lw__track;
+
+// A metric: a reading of a track, or of a loop's latencies.
+typedef struct lw__metric {
+    lw_metric_def def;
+    int track; // -1: of a loop
+    int loop;
+    double lo, per_cell; // histogram of latencies: cells over the timing's support
+    int own;             // doubles: settling: last instant outside, outside at the end;
+                         // rise: instants of low and high; latencies: sum, count, largest
+    int cells;           // integers: histogram
+} lw__metric;
+
+#define LW__CELLS 1000
+#define LW__N_OWN 3
+
+lw_status lw__track_watch(lw__freezer *w, lw__track *t, int op);
+void lw__track_update(lw__lane *s, int track);
+void lw__track_finish(lw__lane *s, int track);
+void lw__track_latency(lw__lane *s, int loop, lw_tick latency);
+double lw__metric_value(const lw__lane *s, int metric);
+
+// The observers of what changes a signal of this name; NULL where nothing does.
+lw__set *lw__signal_observers(lw_frozen *z, const char *name);
+
+#endif
