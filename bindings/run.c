@@ -19,6 +19,7 @@
 
 #define PRESENT_KEY "latewood.present"
 #define DESCRIBED_SECONDS 1.0
+#define MOST_RUNS_WITHIN_RUNS 16 // each takes some of the C stack, unseen by Lua's own limit
 
 // ---- the functions behind a rig
 
@@ -173,7 +174,7 @@ lw__lua_present *lw__lua_present_of(lua_State *L)
     if (lua_getfield(L, LUA_REGISTRYINDEX, PRESENT_KEY) != LUA_TUSERDATA) {
         lua_pop(L, 1);
         lw__lua_present *made = lua_newuserdatauv(L, sizeof *made, 0);
-        made->run = NULL;
+        *made = (lw__lua_present){NULL, 0};
         lua_setfield(L, LUA_REGISTRYINDEX, PRESENT_KEY);
         return made;
     }
@@ -190,16 +191,21 @@ static lw_status advance(lua_State *L, int run, lw_tick until)
     lua_getiuservalue(L, run, RUN_RIG);
     int rig = lua_gettop(L);
     forget_failures(L, rig);
+    if (present->depth == MOST_RUNS_WITHIN_RUNS)
+        lw__lua_fail(L, "runs are within runs, more than %d deep", MOST_RUNS_WITHIN_RUNS);
     const lw__lua_run *before = present->run;
     box->busy = 1;
     present->run = box;
+    present->depth++;
     lw_status status = lw_run_advance(box->run, until);
+    present->depth--;
     present->run = before;
     box->busy = 0;
     if (lw_run_status(box->run, 0, NULL) == LW_ERR_LAW) {
         push_failure(L, rig);
         lua_setiuservalue(L, run, RUN_MESSAGE);
     }
+    forget_failures(L, rig);
     lua_settop(L, rig - 1);
     return status;
 }

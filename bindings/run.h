@@ -29,9 +29,11 @@ int lw__lua_metric_place(lua_State *L, const lw__lua_run *run, int index);
 // Add the lists `record` and `metrics` of the table to the watch.
 void lw__lua_watch_read(const lw__lua_reader *r, lw_watch *watch);
 
-// The run that is being advanced in this Lua state, for lw.random.
+// The run that is being advanced in this Lua state, for lw.random, and how many runs are inside one
+// another: a law may run another rig.
 typedef struct lw__lua_present {
     const lw__lua_run *run;
+    int depth;
 } lw__lua_present;
 lw__lua_present *lw__lua_present_of(lua_State *L);
 

@@ -597,7 +597,7 @@ static lw_status freeze_group(lw__freezer *w, int group)
     lw__group *g = &w->z->groups[group];
     joint j = {0};
     lw_plant *plant = NULL;
-    system_of s;
+    system_of s = {0};
     g->name = group_name(w, group);
     g->origin = group_origin(w, group);
     LW__TRY(join_group(w, group, &j));
