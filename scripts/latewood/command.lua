@@ -1,0 +1,330 @@
+-- The commands of the program: run, describe, new. The program calls command.main with its
+-- arguments and with the few things a script may not do itself (host).
+--
+-- host.load(path): the value a study file returns, or nil, message, exit code
+-- host.write(folder, file, text): true, or nil and a message; by temporary name and rename
+-- host.make_folder(path): true, or nil and a message
+-- host.out(text), host.err(text), host.terminal: 1 where standard error is a terminal with colour
+
+local lw = require "latewood"
+local csv = require "latewood.csv"
+local figure = require "latewood.figure"
+local json = require "latewood.json"
+local report = require "latewood.report"
+local starter = require "latewood.starter"
+local study = require "latewood.study"
+
+local command = {}
+
+local OK, NOT_MET, UNDECIDED = 0, 1, 2
+local USAGE, DATA, CANNOT_CREATE = 64, 65, 73
+
+local main_help = [[
+usage: latewood COMMAND ...
+
+What control timing does to a loop: simulate it exactly, judge it against stated limits.
+
+commands
+  run STUDY.lua [name=value ...]        run a study: table, verdict, figures
+  describe STUDY.lua [name=value ...]   a study's rig in words; runs nothing
+  new DIR                               write a study to start from
+
+latewood COMMAND --help tells more. latewood --version prints the version.
+
+exit codes
+  0 requirements met (or none stated)   1 not met   2 undecided
+  64 wrong usage   65 the study is wrong   66 no such file   70 a fault of the program
+  73 a file cannot be created   74 input or output failed   128 + n stopped by signal n
+]]
+
+local helps = {
+  run = [[
+usage: latewood run STUDY.lua [options] [name=value ...]
+
+Runs the study and prints what it says. Figures (SVG), traces (CSV) and the same result as JSON go
+to a folder beside the study, named after it: STUDY-results.
+
+  name=value     set a parameter that the study lists under `given`
+  --out DIR      put the results there instead
+  --runs N       number of runs, instead of the study's
+  --seed N       seed of the draws, instead of the study's
+  --json         print the result as JSON (schema latewood-run-1) and nothing else
+  --quiet        print the verdict only
+
+A study may use 2e9 Lua instructions and 1 GiB of memory.
+]],
+  describe = [[
+usage: latewood describe STUDY.lua [options] [name=value ...]
+
+Builds and checks the study's rig, says in words what it is made of, which defaults were taken,
+what was rounded, and who sees what at one instant. Runs nothing.
+
+  name=value     set a parameter that the study lists under `given`
+  --json         print the lines as JSON (schema latewood-describe-1)
+]],
+  new = [[
+usage: latewood new DIR
+
+Writes study.lua, README.md and .luarc.json into DIR, which is made if it is not there. Files that
+exist are left alone, and nothing is written then.
+]],
+}
+
+local takes = { run = { ["--out"] = true, ["--runs"] = true, ["--seed"] = true },
+  describe = {}, new = {} }
+local flags = { run = { ["--json"] = true, ["--quiet"] = true }, describe = { ["--json"] = true },
+  new = {} }
+
+local function options_of(name)
+  local list = { "--help" }
+  for k in pairs(takes[name]) do list[#list + 1] = k end
+  for k in pairs(flags[name]) do list[#list + 1] = k end
+  table.sort(list)
+  return list
+end
+
+-- Split arguments into a file, options and name=value pairs; nil and a message if they are wrong.
+local function parse(name, arguments)
+  local p = { pairs = {}, options = {} }
+  local i = 1
+  while i <= #arguments do
+    local a = arguments[i]
+    local key, value = a:match("^([^=]+)=(.*)$")
+    if a:sub(1, 2) == "--" then
+      local option, inline = a:match("^(%-%-[^=]+)=(.*)$")
+      option = option or a
+      if takes[name][option] then
+        if not inline then
+          i = i + 1
+          inline = arguments[i]
+        end
+        if not inline then return nil, ("option %s needs a value"):format(option) end
+        p.options[option] = inline
+      elseif flags[name][option] and a == option then
+        p.options[option] = true
+      else
+        local near = lw.nearest(option, options_of(name))
+        return nil, ("%s has no option %s%s"):format(name, option,
+          near and ("; nearest " .. near) or "")
+      end
+    elseif p.file == nil then
+      p.file = a
+    elseif key and name ~= "new" then
+      for _, pair in ipairs(p.pairs) do
+        if pair.name == key then return nil, ("parameter \"%s\" is set twice"):format(key) end
+      end
+      p.pairs[#p.pairs + 1] = { name = key, text = value }
+    else
+      return nil, ("\"%s\" is one argument too many; parameters are set by name=value"):format(a)
+    end
+    i = i + 1
+  end
+  if not p.file then return nil, (name == "new" and "DIR" or "STUDY.lua") .. " is missing" end
+  return p
+end
+
+local function whole(options, name, least, most)
+  local text = options[name]
+  if text == nil then return nil end
+  local n = text:match("^%d+$") and math.tointeger(tonumber(text))
+  if not n or n < least or n > most then
+    return nil, ("option %s is \"%s\"; a whole number from %d to %d is wanted"):format(name, text,
+      least, most)
+  end
+  return n
+end
+
+-- Tell of a failure in the way asked for; returns the exit code.
+local function complain(host, options, code, message)
+  if options["--json"] then
+    host.out(json.encode(report.error_data(code, message)))
+  end
+  host.err("latewood: " .. message .. "\n")
+  return code
+end
+
+-- The study in a file, or nil, message, exit code.
+local function load_study(host, file)
+  local value, message, code = host.load(file)
+  if code then return nil, message, code end
+  if not study.is(value) then
+    return nil, ("%s: the file returns %s; a study is wanted (return lw.study { ... })")
+      :format(file, value == nil and "nothing" or "a " .. type(value)), DATA
+  end
+  return value
+end
+
+-- Run a function of the study; a raised message is the study's fault.
+local function guarded(f, ...)
+  local results = table.pack(pcall(f, ...))
+  if results[1] then return table.unpack(results, 2, results.n) end
+  return nil, tostring(results[2])
+end
+
+local function base_name(path)
+  return (path:gsub("^.*/", ""):gsub("%.lua$", ""))
+end
+
+-- Figures and traces of a result, and the JSON that names them.
+local function write_results(host, s, result, folder, name)
+  local made, message = host.make_folder(folder)
+  if not made then return nil, message end
+  local files, pending = {}, {}
+  for _, f in ipairs(figure.all(s, result)) do
+    pending[#pending + 1] = { f.file, f.text }
+  end
+  for i, f in ipairs(s.figures) do
+    local stem = pending[i][1]:gsub("%.svg$", "")
+    for _, variant in ipairs(result.variants) do
+      local signals = {}
+      for signal in pairs(variant.traces[i]) do signals[#signals + 1] = signal end
+      table.sort(signals)
+      for _, signal in ipairs(signals) do
+        local file = ("%s--%s--%s"):format(stem, variant.name, signal):gsub("[^%w%-%.]+", "_")
+        pending[#pending + 1] = { file .. ".csv", csv.encode(variant.traces[i][signal]) }
+      end
+    end
+    f.index = nil
+  end
+  for _, p in ipairs(pending) do files[#files + 1] = p[1] end
+  files[#files + 1] = "result.json"
+  pending[#pending + 1] = { "result.json", json.encode(report.data(s, result, name, files)) }
+  for _, p in ipairs(pending) do
+    local done, why = host.write(folder, p[1], p[2])
+    if not done then return nil, why end
+  end
+  return files
+end
+
+local function run(host, p)
+  local options = p.options
+  local runs, bad = whole(options, "--runs", 1, 1000000)
+  if bad then return complain(host, options, USAGE, bad) end
+  local seed, worse = whole(options, "--seed", 0, math.maxinteger)
+  if worse then return complain(host, options, USAGE, worse) end
+  local s, message, code = load_study(host, p.file)
+  if not s then return complain(host, options, code, message) end
+  local result, why = guarded(s.execute, s, p.pairs, { runs = runs, seed = seed })
+  if not result then return complain(host, options, DATA, why) end
+  local folder = options["--out"] or p.file:gsub("%.lua$", "") .. "-results"
+  local files, trouble = write_results(host, s, result, folder, base_name(p.file))
+  if not files then return complain(host, options, CANNOT_CREATE, trouble) end
+  if options["--json"] then
+    host.out(json.encode(report.data(s, result, base_name(p.file), files)))
+  elseif options["--quiet"] then
+    host.out((result.verdict or "no requirement") .. ", of the model\n")
+  else
+    local shown = {}
+    for _, f in ipairs(files) do
+      if not f:find("%.csv$") then shown[#shown + 1] = f end
+    end
+    if #files > #shown then shown[#shown + 1] = ("%d CSV files"):format(#files - #shown) end
+    local lines = report.lines(s, result, shown, folder, "latewood describe " .. p.file)
+    host.out(table.concat(lines, "\n") .. "\n")
+  end
+  return ({ met = OK, ["not met"] = NOT_MET, undecided = UNDECIDED })[result.verdict or "met"]
+end
+
+-- Differences between two lists of lines, as those of the second.
+local function changed(first, second)
+  local known, out = {}, {}
+  for _, line in ipairs(first) do known[line] = true end
+  for _, line in ipairs(second) do
+    if not known[line] then out[#out + 1] = line end
+  end
+  return out
+end
+
+local function describe_variant(s, pairs_, variant)
+  local parameters, message = s:parameters(pairs_, variant.own)
+  if not parameters then return nil, message end
+  local rig = s:rig(parameters)
+  rig:freeze { lasts = s.lasts, metrics = s.metrics, record = s:records() }
+  return rig:describe { lasts = s.lasts, metrics = s.metrics }
+end
+
+local function describe(host, p)
+  local s, message, code = load_study(host, p.file)
+  if not s then return complain(host, p.options, code, message) end
+  local lines, data = {}, {}
+  for i, variant in ipairs(s:variants()) do
+    local own, why = guarded(describe_variant, s, p.pairs, variant)
+    if not own then return complain(host, p.options, DATA, why) end
+    data[i] = json.ordered({ "variant", "lines" }, { variant = variant.name,
+      lines = json.list(own) })
+    if i > 1 then
+      lines[#lines + 1] = ""
+      lines[#lines + 1] = ("what is different in \"%s\":"):format(variant.name)
+      own = changed(data[1].lines, own)
+      if #own == 0 then own = { "  nothing in the rig" } end
+    end
+    table.move(own, 1, #own, #lines + 1, lines)
+  end
+  if p.options["--json"] then
+    host.out(json.encode(json.ordered({ "schema", "variants" },
+      { schema = "latewood-describe-1", variants = json.list(data) })))
+  else
+    host.out(table.concat(lines, "\n") .. "\n")
+  end
+  return OK
+end
+
+local function new(host, p)
+  local made, message = host.make_folder(p.file)
+  if not made then return complain(host, p.options, CANNOT_CREATE, message) end
+  for _, f in ipairs(starter) do
+    if host.exists(p.file .. "/" .. f.file) then
+      return complain(host, p.options, CANNOT_CREATE,
+        ("%s/%s exists; nothing was written"):format(p.file, f.file))
+    end
+  end
+  for _, f in ipairs(starter) do
+    local done, why = host.write(p.file, f.file, f.text)
+    if not done then return complain(host, p.options, CANNOT_CREATE, why) end
+  end
+  host.out(("wrote study.lua, README.md and .luarc.json to %s\nnext: latewood run %s/study.lua\n")
+    :format(p.file, p.file))
+  return OK
+end
+
+local commands = { run = run, describe = describe, new = new }
+
+-- Do what the arguments say; returns the exit code.
+function command.main(arguments, host)
+  local name = arguments[1]
+  if name == "--help" or name == "-h" or name == "help" then
+    host.out(main_help)
+    return OK
+  end
+  if name == "--version" then
+    host.out(lw._VERSION .. "\n")
+    return OK
+  end
+  if not name then
+    host.err(main_help)
+    return USAGE
+  end
+  if not commands[name] then
+    local near = lw.nearest(name, { "run", "describe", "new", "--help", "--version" })
+    host.err(("latewood: there is no command \"%s\"%s; latewood --help lists them\n"):format(name,
+      near and ("; nearest \"%s\""):format(near) or ""))
+    return USAGE
+  end
+  local rest = table.move(arguments, 2, #arguments, 1, {})
+  for _, a in ipairs(rest) do
+    if a == "--help" then
+      host.out(helps[name])
+      return OK
+    end
+  end
+  local p, message = parse(name, rest)
+  if not p then
+    local wants_json = false
+    for _, a in ipairs(rest) do wants_json = wants_json or a == "--json" end
+    return complain(host, { ["--json"] = wants_json }, USAGE,
+      message .. ("; latewood %s --help tells more"):format(name))
+  end
+  return commands[name](host, p)
+end
+
+return command
