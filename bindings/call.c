@@ -5,12 +5,14 @@
 #include "captured.h"
 
 #include <latewood/quantity.h>
+#include <string.h>
 
 void *lw__lua_call_new(lua_State *L, int function, size_t size, int n_slots)
 {
     luaL_checkstack(L, 4, NULL);
     lw__lua_call *call = lua_newuserdatauv(L, size, 1);
-    *call = (lw__lua_call){NULL, 1, 0, {LW_OK, ""}};
+    memset(call, 0, size);
+    call->top = 1;
     lua_State *thread = lua_newthread(L);
     lua_setiuservalue(L, -2, 1);
     if (!lua_checkstack(thread, n_slots + LUA_MINSTACK))

@@ -4,22 +4,20 @@
 
 #include <lua.h>
 
-struct lw__lua_reader;
-
 // X(name): lw__lua_plant_NAME is lw.plant.NAME, and so on.
+// clang-format off
 #define LW__LUA_PLANTS(X)                                                                          \
-    X(state_space)                                                                                 \
-    X(transfer) X(zeros_poles) X(gain) X(integrator) X(first_order) X(second_order) X(winding)     \
-        X(dc_machine) X(two_mass_drive) X(series) X(parallel) X(feedback) X(connect)
+    X(state_space) X(transfer) X(zeros_poles) X(gain) X(integrator) X(first_order)                 \
+    X(second_order) X(winding) X(dc_machine) X(two_mass_drive)                                     \
+    X(series) X(parallel) X(feedback) X(connect)
 #define LW__LUA_PLANT_METHODS(X) X(states) X(inputs) X(outputs) X(matrices)
 
 #define LW__LUA_SOURCES(X)                                                                         \
     X(constant) X(step) X(ramp) X(sine) X(chirp) X(pulses) X(table) X(noise) X(own)
 
 #define LW__LUA_TIMINGS(X)                                                                         \
-    X(constant)                                                                                    \
-    X(uniform) X(triangular) X(normal) X(log_normal) X(exponential) X(gumbel) X(discrete)          \
-        X(histogram) X(replay) X(modes) X(stall) X(maximum)
+    X(constant) X(uniform) X(triangular) X(normal) X(log_normal) X(exponential) X(gumbel)          \
+    X(discrete) X(histogram) X(replay) X(modes) X(stall) X(maximum)
 #define LW__LUA_TIMING_METHODS(X)                                                                  \
     X(support) X(cdf) X(density) X(quantile) X(median) X(moment) X(nodes) X(draw) X(describe)
 
@@ -28,13 +26,12 @@ struct lw__lua_reader;
 #define LW__LUA_LAW_METHODS(X) X(inputs) X(outputs) X(states)
 
 #define LW__LUA_RIG_METHODS(X)                                                                     \
-    X(plant)                                                                                       \
-    X(connect) X(source) X(value) X(adc) X(dac) X(loop) X(freeze) X(describe) X(slices) X(start)   \
-        X(run) X(close)
+    X(plant) X(connect) X(source) X(value) X(adc) X(dac) X(loop)                                   \
+    X(freeze) X(describe) X(slices) X(start) X(run) X(close)
 #define LW__LUA_RUN_METHODS(X)                                                                     \
-    X(advance)                                                                                     \
-    X(finish) X(restart) X(status) X(now) X(instants) X(value) X(metric) X(metrics) X(record)      \
-        X(csv) X(json) X(block) X(close)
+    X(advance) X(finish) X(restart) X(status) X(now) X(instants) X(value) X(metric) X(metrics)     \
+    X(record) X(csv) X(json) X(block) X(close)
+// clang-format on
 
 #define LW__LUA_DECLARE_PLANT(name) int lw__lua_plant_##name(lua_State *L);
 #define LW__LUA_DECLARE_SOURCE(name) int lw__lua_source_##name(lua_State *L);

@@ -142,7 +142,8 @@ static lw_part *read_parts(const lw__lua_reader *r, int *n)
         lua_rawgeti(L, entry.table, 1);
         parts[i].name = lw__lua_field_text(&entry, "its name", -1);
         lua_rawgeti(L, entry.table, 2);
-        parts[i].plant = plant_at(L, -1, lua_pushfstring(L, "%s: element 2", entry.subject));
+        int second = lua_gettop(L);
+        parts[i].plant = plant_at(L, second, lua_pushfstring(L, "%s: element 2", entry.subject));
     }
     return parts;
 }

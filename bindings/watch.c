@@ -34,7 +34,8 @@ static const lw__lua_field record_fields[] = {
     OTHER("at"),
     OPTIONAL(record, every, "every", FIELD_PERIOD, NULL),
     OPTIONAL(record, from, "from", FIELD_TICK, NULL),
-    OPTIONAL(record, until, "until", FIELD_TICK, NULL),
+    OPTIONAL(record, until, "until", FIELD_TICK, NULL), // a keyword of Lua: ["until"] = ...
+    OPTIONAL(record, until, "to", FIELD_TICK, NULL),
     OPTIONAL(record, limit, "limit", FIELD_LONG, NULL),
 };
 
@@ -93,6 +94,7 @@ static const lw__lua_field metric_fields[] = {
     OPTIONAL(lw_metric_def, share, "share", FIELD_NUMBER, "1"),
     OPTIONAL(lw_metric_def, from, "from", FIELD_TICK, NULL),
     OPTIONAL(lw_metric_def, until, "until", FIELD_TICK, NULL),
+    OPTIONAL(lw_metric_def, until, "to", FIELD_TICK, NULL),
 };
 
 // The kind by its words: the second element, or the name itself.
