@@ -32,8 +32,12 @@ static int place_of(lua_State *L, const char *what, int index, int n,
                         near ? near : "", near ? "\"" : "");
 }
 
+// A record by name, or by its place in the list that was asked for.
 int lw__lua_record_place(lua_State *L, const lw__lua_run *run, int index)
 {
+    int n = lw_frozen_n_records(run->frozen);
+    if (lua_isinteger(L, index) && lua_tointeger(L, index) >= 1 && lua_tointeger(L, index) <= n)
+        return (int)lua_tointeger(L, index) - 1;
     return place_of(L, "record", index, lw_frozen_n_records(run->frozen), lw_frozen_record_name,
                     run->frozen);
 }
