@@ -36,9 +36,10 @@ LW_API lw_plant_view lw_plant_look(const lw_plant *plant);
 LW_API void lw_plant_free(lw_plant *plant);
 
 // State space. Any name list may be NULL: states x1.., inputs in or in1.., outputs out or out1...
-// (without number if there is one). d and start may be NULL (zeros). n_x may be 0 (a gain).
-//   errors  LW_ERR_SHAPE sizes out of range; LW_ERR_NOT_FINITE names matrix, row and column;
-//           LW_ERR_NAME, LW_ERR_DUPLICATE
+// (without number if there is one). d and start may be NULL (zeros). n_x may be 0 (a gain), n_u
+// too; a plant has a state or an output.
+//   errors  LW_ERR_SHAPE sizes out of range; LW_ERR_NOT_FINITE names matrix, row and column, or
+//           the state whose start it is; LW_ERR_NAME, LW_ERR_DUPLICATE
 LW_API lw_status lw_plant_state_space(int n_x, int n_u, int n_y, const double *a, const double *b,
                                       const double *c, const double *d, const double *start,
                                       const char *const *state_names,
@@ -53,22 +54,33 @@ typedef struct lw_poly {
 } lw_poly;
 
 // Transfer functions: entry (i, j) of the n_y x n_u arrays `num` and `den` is output i from input
-// j; each must be proper. The realisation is controllable canonical per column with a common
-// denominator where all denominators of the column are equal, otherwise entry by entry; start is
-// zero state.
-//   errors  LW_ERR_ARGUMENT improper ("degree 3 over degree 2"), leading zero, empty
+// j; each must be proper. States x1, x2, ... are column by column, within a column row by row; all
+// start at 0. Where the denominators of a column are equal, coefficient by coefficient, its entries
+// share their states; otherwise each brings its own. An entry of numerator 0 has no states and its
+// denominator counts for nothing.
+//   form    controllable canonical: with s^n + a1 s^(n-1) + ... + an the monic denominator and
+//           b0 s^n + ... + bn the numerator by the same divisor,
+//               x1' = -a1 x1 - ... - an xn + u,  x(k+1)' = xk,  y = sum (bk - b0 ak) xk + b0 u,
+//           each state divided by a power of two: x1 by 1, the others such that A is balanced
+//   errors  LW_ERR_ARGUMENT improper ("degree 3 over degree 2"), leading zero, empty;
+//           LW_ERR_NOT_FINITE; LW_ERR_SHAPE more states than a plant may have
 LW_API lw_status lw_plant_transfer(int n_y, int n_u, const lw_poly *num, const lw_poly *den,
                                    const char *const *input_names, const char *const *output_names,
                                    lw_plant **out, lw_error *err);
 
 // Zeros, poles (complex as re, im pairs, conjugates both present) and gain: k prod(s - z) /
-// prod(s - p). Realised as a chain of real first- and second-order sections, so that repeated and
-// widely spread poles keep their accuracy.
+// prod(s - p), in -> out. Realised as a chain of real first- and second-order sections in the order
+// of `poles`, so that repeated and widely spread poles keep their accuracy: A is block triangular
+// and holds the poles themselves.
+//   errors  LW_ERR_ARGUMENT more zeros than poles, a conjugate that is missing;
+//           LW_ERR_NOT_FINITE; LW_ERR_SHAPE
 LW_API lw_status lw_plant_zeros_poles(int n_zeros, const double (*zeros)[2], int n_poles,
                                       const double (*poles)[2], double gain, lw_plant **out,
                                       lw_error *err);
 
 // Ready plants. All parameters in SI; LW_ERR_ARGUMENT names the parameter, its value and range.
+// Outputs are states and bear their names. Resistances, frictions, stiffness and damping of a shaft
+// are >= 0, inductances and inertias > 0; constants and gains may have either sign.
 //   integrator    in -> out: gain / s
 //   first order   in -> out: gain / (time_constant s + 1), time_constant > 0
 //   second order  in -> out: gain w^2 / (s^2 + 2 damping w s + w^2), w > 0 [rad/s]; states out, rate
@@ -101,6 +113,8 @@ LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **
 
 // A copy of `plant` with an input delay of `seconds` >= 0 added to input `input`, with the state
 // at time zero replaced (n values), or with inputs, outputs, states renamed (NULL list: keep).
+//   errors  LW_ERR_NAME no such input, with the nearest; LW_ERR_ARGUMENT a delay that is negative
+//           or beyond the range of time; LW_ERR_SHAPE n is not the number of states
 LW_API lw_status lw_plant_delayed(const lw_plant *plant, const char *input, double seconds,
                                   lw_plant **out, lw_error *err);
 LW_API lw_status lw_plant_started(const lw_plant *plant, int n, const double *start,
@@ -109,17 +123,24 @@ LW_API lw_status lw_plant_renamed(const lw_plant *plant, const char *const *stat
                                   const char *const *input_names, const char *const *output_names,
                                   lw_plant **out, lw_error *err);
 
-// Composition by signal names. `parts` carry a name each; a port is "part.port".
-//   links    output port -> input port, sign +1 or -1; several links may feed one input (summed)
+// Composition by signal names. `parts`, 1 to 64, carry a name each; a port is "part.port".
+//   links    output port -> input port, sign +1 or -1; several links may feed one input (summed),
+//            each pair of ports once
 //   inputs   external inputs: a name and the input port it drives; one external input may drive
 //            several ports (repeat the name) and may be summed with links
-//   outputs  external outputs: a name and the output port it shows
-// States are named "part_state". An algebraic loop is LW_ERR_LOOP and names its signals in order:
+//   outputs  external outputs: a name and the output port it shows; up to 4 LW_PLANT_MAX_PORTS
+// An input port that nothing feeds is 0. States are named "part_state", in the order of the parts;
+// inputs are in the order in which their names first stand. An algebraic loop is LW_ERR_LOOP and
+// names its signals in order:
 // `signals depend on themselves without delay: a.out -> b.in -> b.out -> a.in`.
+//
 // Input delays: a delay on an external input is kept; a delay on a linked input moves upstream to
 // the external inputs when the chain is open, otherwise LW_ERR_LOOP names the part and input
-// (a delay inside continuous feedback). Where one external input would need two different delays
-// it is split: the second becomes the error LW_ERR_ARGUMENT naming both.
+// (a delay inside continuous feedback). The parts it moves past are described late: their states
+// are those of that much earlier, exact if these parts rest until time zero (their start must be
+// 0, and what drives them should be). A part as a whole is late by one delay, and not at all if an
+// output shows it or no link leads on from it; an external input has one delay: where two would be
+// needed, LW_ERR_ARGUMENT names both.
 typedef struct lw_part {
     const char *name;
     const lw_plant *plant;
@@ -138,7 +159,7 @@ LW_API lw_status lw_plant_connect(int n_parts, const lw_part *parts, int n_links
                                   lw_error *err);
 
 // Single input and output shorthands: b after a; a + sign b; a / (1 - sign a b), sign -1 being
-// negative feedback. Ports are named in and out.
+// negative feedback. Ports are named in and out, states as in a connection of parts "a" and "b".
 LW_API lw_status lw_plant_series(const lw_plant *a, const lw_plant *b, lw_plant **out,
                                  lw_error *err);
 LW_API lw_status lw_plant_parallel(const lw_plant *a, const lw_plant *b, double sign,
