@@ -32,7 +32,9 @@ typedef struct lw__lane {
     const char *text; // in words
 } lw__lane;
 
-#define LW__WORK(z) (12 * (z)->most_x + 6 * (z)->most_u + 4 * LW_LAW_MAX_STATES + 64)
+// Scratch: what forming a group's state takes stands first, results may stand behind it.
+#define LW__WORK_BEHIND(z) (6 * (z)->most_x + 3 * (z)->most_u + 2 * LW__LIST_CAPACITY)
+#define LW__WORK(z) (2 * LW__WORK_BEHIND(z) + 4 * LW_LAW_MAX_STATES)
 
 // Operations due in this pass and in the next one.
 typedef struct lw__pass {

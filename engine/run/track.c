@@ -290,7 +290,7 @@ static void begin_stretch(lw__lane *s, const lw__track *t)
     if (t->of.at.kind != LW__SIGNAL_ROW)
         return;
     const lw__group *g = &s->z->groups[t->of.at.index];
-    double *x = s->work + 4 * (s->z->most_x + s->z->most_u), *u = x + g->n_x;
+    double *x = s->work + LW__WORK_BEHIND(s->z), *u = x + g->n_x;
     lw__group_state(s, t->of.at.index, x, u);
     for (int k = 0; k < g->n_x; k++)
         LW__F(t->x + k) = x[k];

@@ -7,7 +7,6 @@
 -- host.out(text), host.err(text), host.terminal: 1 where standard error is a terminal with colour
 
 local lw = require "latewood"
-local csv = require "latewood.csv"
 local figure = require "latewood.figure"
 local json = require "latewood.json"
 local report = require "latewood.report"
@@ -181,7 +180,7 @@ local function write_results(host, s, result, folder, name)
       table.sort(signals)
       for _, signal in ipairs(signals) do
         local file = ("%s--%s--%s"):format(stem, variant.name, signal):gsub("[^%w%-%.]+", "_")
-        pending[#pending + 1] = { file .. ".csv", csv.encode(variant.traces[i][signal]) }
+        pending[#pending + 1] = { file .. ".csv", variant.traces[i][signal].csv }
       end
     end
     f.index = nil

@@ -78,6 +78,13 @@ local function new(_, t)
   }, study)
 end
 
+-- A limit: a number, a quantity in any unit, or a percentage.
+local function limit_of(value)
+  if value == nil then return nil end
+  if type(value) == "string" and value:find("%%%s*$") then return lw.quantity(value, "1") end
+  return lw.quantity(value)
+end
+
 -- Two positional entries: a name and a kind in words; one serves as both.
 local function add_metric(self, what, t, skip)
   if type(t) ~= "table" or type(t[1]) ~= "string" then fail("%s: its name is missing", what) end
@@ -112,8 +119,8 @@ function study:requirement(t)
   end
   self.requirements[#self.requirements + 1] = {
     name = t[1], kind = def[2],
-    at_most = t.at_most ~= nil and lw.quantity(t.at_most) or nil,
-    at_least = t.at_least ~= nil and lw.quantity(t.at_least) or nil,
+    at_most = limit_of(t.at_most),
+    at_least = limit_of(t.at_least),
   }
   return self
 end
@@ -238,6 +245,7 @@ local function traces_of(self, run)
       if not recorded[key] then
         next_record = next_record + 1
         recorded[key] = run:record(next_record)
+        recorded[key].csv = run:csv(next_record)
       end
       of[signal] = recorded[key]
     end
