@@ -75,6 +75,7 @@ end
 
 -- Count latencies in cells that are alike in ratio, so that rare long ones show beside the rest.
 local CELLS = 60
+local OFFSET = 0.15 -- height of a single sample
 
 local function histogram(values, lo, step)
   local counts, n = {}, 0
@@ -102,21 +103,42 @@ local function latency_range(f, result)
   return lo, math.max(hi, lo * 1.5)
 end
 
+-- Marks of a logarithmic time axis at 1, 2 and 5 times powers of ten.
+local function time_marks(lo, hi)
+  local marks, power = {}, 1e-12
+  while power < hi do
+    for _, m in ipairs { 1, 2, 5 } do
+      local t = m * power
+      if t >= lo and t <= hi then marks[#marks + 1] = { math.log(t, 10), words.time(t) } end
+    end
+    power = power * 10
+  end
+  return marks
+end
+
+local function count_marks(top)
+  local marks, n = {}, 1
+  while math.log(n, 10) + OFFSET <= top do
+    marks[#marks + 1] = { math.log(n, 10) + OFFSET, ("%d"):format(n) }
+    n = n * 10
+  end
+  return marks
+end
+
 local function latencies(f, result)
   local lo, hi = latency_range(f, result)
-  local size, unit = words.time_unit(lo)
   local step = math.log(hi / lo) / CELLS
-  local p = { x = { math.log(lo / size, 10), math.log(hi / size, 10) },
-    y = { 0, 1, flat = true }, bars = {}, log_x = true,
-    x_label = ("latency / %s, power of ten"):format(unit), y_label = "samples (power of ten)" }
+  local p = { x = { math.log(lo, 10), math.log(hi, 10) }, y = { 0, 1, flat = true }, bars = {},
+    x_marks = time_marks(lo, hi), x_label = "latency, logarithmic",
+    y_label = "samples, logarithmic" }
   local top = 1
   for v, variant in ipairs(result.variants) do
     local counts, n = histogram(variant.traces[f.index][f.latency_of].latency, lo, step)
     for cell, count in pairs(counts) do
       local from, till = lo * math.exp((cell - 1) * step), lo * math.exp(cell * step)
-      local height = math.log(count, 10) + 0.15
+      local height = math.log(count, 10) + OFFSET
       top = math.max(top, height)
-      p.bars[#p.bars + 1] = { from = math.log(from / size, 10), till = math.log(till / size, 10),
+      p.bars[#p.bars + 1] = { from = math.log(from, 10), till = math.log(till, 10),
         height = height, style = #result.variants == 1 and 2 or v, cell = cell, v = v,
         name = ("%s: %d of %d from %s to %s"):format(variant.name, count, n, words.time(from),
           words.time(till)) }
@@ -127,6 +149,7 @@ local function latencies(f, result)
     return a.cell < b.cell
   end)
   p.y[2] = top
+  p.y_marks = count_marks(top)
   return svg.page { title = f.title, legend = legend_of(f, result), panels = { p },
     notes = notes_of(f) }
 end

@@ -69,28 +69,36 @@ local function panel(box, x_range, y_range)
   return p
 end
 
-local function axes(out, p, x_label, y_label)
+-- Marks of an axis: those the panel brings, or plain ones.
+local function marks_of(own, lo, hi, n)
+  if own then return own end
+  local marks = {}
+  for i, t in ipairs(svg.ticks(lo, hi, n)) do marks[i] = { t, short(t) } end
+  return marks
+end
+
+local function axes(out, p, q)
   local b = p.box
-  for _, t in ipairs(svg.ticks(p.x[1], p.x[2], 8)) do
-    local x = coordinate(p.at_x(t))
+  for _, mark in ipairs(marks_of(q.x_marks, p.x[1], p.x[2], 8)) do
+    local x = coordinate(p.at_x(mark[1]))
     out[#out + 1] = ('<line class="grid" x1="%s" x2="%s" y1="%d" y2="%d"/>'):format(x, x, b.y,
       b.y + b.h)
     out[#out + 1] = ('<text class="small" x="%s" y="%d" text-anchor="middle">%s</text>'):format(x,
-      b.y + b.h + 16, short(t))
+      b.y + b.h + 16, escape(mark[2]))
   end
-  for _, t in ipairs(svg.ticks(p.y[1], p.y[2], 5)) do
-    local y = coordinate(p.at_y(t))
+  for _, mark in ipairs(marks_of(q.y_marks, p.y[1], p.y[2], 5)) do
+    local y = coordinate(p.at_y(mark[1]))
     out[#out + 1] = ('<line class="grid" x1="%d" x2="%d" y1="%s" y2="%s"/>'):format(b.x, b.x + b.w,
       y, y)
     out[#out + 1] = ('<text class="small" x="%d" y="%s" text-anchor="end">%s</text>'):format(
-      b.x - 6, coordinate(p.at_y(t) + 4), short(t))
+      b.x - 6, coordinate(p.at_y(mark[1]) + 4), escape(mark[2]))
   end
   out[#out + 1] = ('<path class="axis" fill="none" d="M%d %dV%dH%d"/>'):format(b.x, b.y, b.y + b.h,
     b.x + b.w)
   out[#out + 1] = ('<text class="small" x="%d" y="%d" text-anchor="end">%s</text>'):format(
-    b.x + b.w, b.y + b.h + 32, escape(x_label))
+    b.x + b.w, b.y + b.h + 32, escape(q.x_label))
   out[#out + 1] = ('<text class="small" x="%d" y="%d">%s</text>'):format(b.x, b.y - 7,
-    escape(y_label))
+    escape(q.y_label))
 end
 
 -- Least and largest of each pixel column, in the order of time, so that no peak is lost.
@@ -160,7 +168,8 @@ end
 
 -- A page of panels stacked over one another.
 --   page: title, legend = { { name, style } }, notes = { text },
---         panels = { { x_label, y_label, x = {lo, hi}, y = {lo, hi}, traces = {}, bars = {} } }
+--         panels = { { x_label, y_label, x = {lo, hi}, y = {lo, hi}, traces = {}, bars = {},
+--                      x_marks, y_marks = { { value, text } } } }
 --   trace: name, style, x = {}, y = {}      bar: from, till, height, name, style
 function svg.page(page)
   local WIDTH, LEFT, RIGHT, HEIGHT, GAP = 820, 70, 20, 190, 62
@@ -179,7 +188,7 @@ function svg.page(page)
     local box = { x = LEFT, y = top + (i - 1) * (HEIGHT + GAP), w = WIDTH - LEFT - RIGHT,
       h = HEIGHT }
     local p = panel(box, q.x, padded(q.y))
-    axes(out, p, q.x_label, q.y_label)
+    axes(out, p, q)
     draw_bars(out, p, q.bars or {})
     for _, trace in ipairs(q.traces or {}) do draw_trace(out, p, trace) end
   end
