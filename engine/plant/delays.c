@@ -23,10 +23,10 @@ typedef struct reason {
     int number; // output of the net, or link
 } reason;
 
+// reaches: n_parts x n_parts, whether a chain of links leads from row to column.
 typedef struct mover {
     lw__net *net;
-    unsigned char
-        *reaches; // n_parts x n_parts: a link, or a chain of links, leads from row to column
+    unsigned char *reaches;
     double *late; // n_parts
     reason *why;  // n_parts
 } mover;
@@ -135,11 +135,13 @@ static lw_status two_delays(const mover *m, int link, double wanted)
     int p = from_part(net, link), input = net->link[link].to;
     const char *part = net->parts[p].name, *to = lw__net_part_of_input(net, input),
                *port = lw__net_input(net, input);
-    if (m->why[p].kind == SHOWN)
+    if (m->why[p].kind == SHOWN) {
+        int shown = net->shown[m->why[p].number];
         return lw_error_set(net->err, LW_ERR_ARGUMENT,
-                            "part \"%s\" would need two delays: %.12g s for \"%s.%s\" and none for "
-                            "output \"%s\"",
-                            part, wanted, to, port, net->shown_port[m->why[p].number].name);
+                            "part \"%s\" would need two delays: %.12g s for \"%s.%s\" and none "
+                            "where \"%s.%s\" is shown",
+                            part, wanted, to, port, part, lw__net_output(net, shown));
+    }
     int other = net->link[m->why[p].number].to;
     return lw_error_set(net->err, LW_ERR_ARGUMENT,
                         "part \"%s\" would need two delays: %.12g s for \"%s.%s\" and %.12g s for "

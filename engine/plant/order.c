@@ -15,10 +15,12 @@
 #include <stdio.h>
 #include <string.h>
 
+enum { NEW, OPEN, DONE };
+
 typedef struct search {
     const lw__net *net;
-    enum { NEW, OPEN, DONE } * state; // n_y
-    int *path, *by;                   // n_y: outputs, and the input each leads to the next by
+    unsigned char *state; // n_y
+    int *path, *by;       // n_y: outputs, and the input each leads to the next by
     int depth;
     int *order; // filled from its end
     int left;   // places in it

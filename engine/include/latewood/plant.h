@@ -83,7 +83,8 @@ LW_API lw_status lw_plant_zeros_poles(int n_zeros, const double (*zeros)[2], int
 // are >= 0, inductances and inertias > 0; constants and gains may have either sign.
 //   integrator    in -> out: gain / s
 //   first order   in -> out: gain / (time_constant s + 1), time_constant > 0
-//   second order  in -> out: gain w^2 / (s^2 + 2 damping w s + w^2), w > 0 [rad/s]; states out, rate
+//   second order  in -> out: gain w^2 / (s^2 + 2 damping w s + w^2), w > 0 [rad/s];
+//                 states out, rate
 //   winding       voltage -> current: L i' = v - R i, R >= 0, L > 0
 //   DC machine    voltage, load_torque -> current, speed:
 //                 L i' = v - R i - ke w;  J w' = kt i - friction w - load_torque
