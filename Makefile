@@ -197,6 +197,7 @@ runner = B="$(B)" LUA="$(LUA)" CC="$(CC)" \
 run-tests: all $(test_programs)
 	@$(runner) $(TESTS)
 run-long-tests: all $(long_programs) run-tests
+	@scripts/setup.sh long
 	@$(runner) $(LONG_TESTS)
 
 check-layers:

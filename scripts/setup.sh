@@ -1,10 +1,10 @@
 #!/bin/sh
 # Sees that this machine has what Latewood needs, and says how to compile against it.
 #
-#   usage: scripts/setup.sh build|tests|lint
+#   usage: scripts/setup.sh build|tests|long|lint
 #
 # build: what the library, the Lua module and the program are made with; tests: what the tests
-# need besides; lint: the tools of `make lint`.
+# need besides; long: what `make check-long` needs besides; lint: the tools of `make lint`.
 #
 # 1. Nothing missing: quick, silent, changes nothing.
 # 2. Something missing on Debian and its relatives, as root or with sudo: one apt-get call for all
@@ -74,7 +74,6 @@ need_build() {
   need_library liblua5.4-dev "the library Lua 5.4" lua_library
   need_library libgsl-dev "the GNU Scientific Library" have_library gsl
   need_library libsleef-dev "the library SLEEF" have_library sleef
-  need_library libsqlite3-dev "the library SQLite 3" have_library sqlite3
 }
 
 need_tests() {
@@ -82,6 +81,14 @@ need_tests() {
   need_library check "the test library Check" have_check
   need_library libsubunit-dev "the library subunit, which Check may need" have_check
   lua_command >/dev/null || missing lua5.4 "the interpreter lua5.4"
+}
+
+have_python_module() { python3 -c "import $1" 2>/dev/null || /usr/bin/python3 -c "import $1" 2>/dev/null; }
+
+need_long() {
+  need_tests
+  have_python_module mpmath || missing python3-mpmath "Python's module mpmath"
+  have_python_module scipy || missing python3-scipy "Python's module SciPy"
 }
 
 need_lint() {
@@ -121,9 +128,9 @@ print_flags() { # prefix, module
 
 group=${1:-}
 case $group in
-build | tests | lint) "need_$group" ;;
+build | tests | long | lint) "need_$group" ;;
 *)
-  say "usage: scripts/setup.sh build|tests|lint"
+  say "usage: scripts/setup.sh build|tests|long|lint"
   exit 64
   ;;
 esac
@@ -146,7 +153,6 @@ build)
   print_flags GSL gsl
   print_flags LUA "$(lua_library)"
   print_flags SLEEF sleef
-  print_flags SQLITE sqlite3
   ;;
 tests)
   print_flags CHECK check

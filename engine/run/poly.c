@@ -85,12 +85,13 @@ static int sign_changes(int n, const double *b)
     return changes;
 }
 
-// The one root between a and b, where the values have different signs or one is zero.
+// The one root between a and b. Where rounding hides the change of sign it is at an end.
 static double single_root(int degree, const double *c, double a, double b)
 {
-    double at_a = lw__poly_value(degree, c, a), s = 0.5 * (a + b);
-    if (at_a == 0)
-        return a;
+    double at_a = lw__poly_value(degree, c, a), at_b = lw__poly_value(degree, c, b);
+    double s = 0.5 * (a + b);
+    if (at_a * at_b >= 0)
+        return fabs(at_a) <= fabs(at_b) ? a : b;
     for (int k = 0; k < 100 && b - a > 0x1p-54; k++) {
         double v = lw__poly_value(degree, c, s);
         if (v == 0)
