@@ -9,7 +9,7 @@
 #include <stdio.h>
 #include <string.h>
 
-#define SHOWN_BYTES 60
+#define SHOWN_BYTES 200
 
 // ---- where the user's code stands
 
