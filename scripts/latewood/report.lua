@@ -103,7 +103,9 @@ local function verdict_lines(study, result)
     verdict_words[result.verdict], met, #study.requirements,
     #result.variants > 1 and (" (%s)"):format(result.variants[#result.variants].name) or "") }
   if result.runs > 1 and result.verdict == "met" then
-    lines[2] = ("%d runs without a failure: at 95 %% confidence fewer than %.2g %% of runs fail.")
+    lines[2] = result.runs < 30 and ("%d runs without a failure are too few to bound how often " ..
+      "one fails."):format(result.runs) or
+      ("%d runs without a failure: at 95 %% confidence fewer than %.2g %% of runs fail (3/n).")
       :format(result.runs, 300 / result.runs)
   end
   return lines
