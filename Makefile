@@ -185,6 +185,11 @@ $(B)/tests/support.a: $(support_objects) $(B)/sources
 $(B)/tests/%: $(B)/tests/%.o $(B)/tests/support.a $(library)
 	@echo "link $@"
 	@$(link) -o $@ $^ $(libraries) $(CHECK_LIBS)
+# The one that calls Lua brings the module's objects and an interpreter.
+$(B)/tests/bench_lua.o: test_flags += $(call as_system,$(LUA_CFLAGS))
+$(B)/tests/bench_lua: $(B)/tests/bench_lua.o $(module_objects) $(library)
+	@echo "link $@"
+	@$(link) -o $@ $^ $(libraries) $(LUA_LIBS)
 .SECONDARY: $(test_programs:%=%.o) $(long_programs:%=%.o) $(bench_programs:%=%.o)
 
 test-programs: $(test_programs)

@@ -57,7 +57,8 @@ local function build(p)
   rig:adc    { "current", of = "axis.current", every = "30 kHz", takes = "3 us", bits = 12,
                range = { -20, 20 }, noise = 0.01 }
   rig:adc    { "speeds", of = { "axis.motor_speed", "stiff.out", "hiss" },
-               skew = { 0, "1 us", "2 us" }, every = "200 us", takes = "4 us", average = 3, average_every = "600 ns" }
+               skew = { 0, "1 us", "2 us" }, every = "200 us", takes = "4 us", average = 3,
+               average_every = "600 ns" }
   rig:dac    { "bridge", to = "axis.voltage", bits = 11, range = { -24, 24 }, slew = 3e6 }
   rig:loop   { "loop", law = laws[p.kind], wanted = "wanted", measured = "current",
                output = "bridge", latency = timings[p.kind], lost = 0.02, missed = 0.01 }
