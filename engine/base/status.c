@@ -104,7 +104,8 @@ static int distance(const char *a, const char *b)
 const char *lw_nearest_name(const char *name, const char *const *names, int n)
 {
     const char *nearest = NULL;
-    int best = (int)(strlen(name) + 2) / 3 + 1; // a slip touches less than a third of the letters
+    size_t length = strlen(name) < LONGEST ? strlen(name) : LONGEST; // what `distance` looks at
+    int best = (int)(length + 2) / 3 + 1; // a slip touches less than a third of the letters
     for (int i = 0; i < n; i++) {
         int d = distance(name, names[i]);
         if (d < best) {
