@@ -9,6 +9,7 @@
 #include <complex.h>
 #include <latewood/plant.h>
 #include <stdint.h>
+#include <stdio.h>
 #include <string.h>
 
 #define N_MAX LW_PLANT_MAX_STATES
@@ -25,13 +26,13 @@ typedef double complex number;
     } while (0)
 
 // The call fails with this status and message, and leaves `out` alone.
-#define REFUSED(status, message, call)                                                             \
+#define REFUSED(code, message, call)                                                               \
     do {                                                                                           \
         lw_plant *made_ = NULL, **out = &made_;                                                    \
         lw_error err_ = {LW_OK, ""}, *err = &err_;                                                 \
-        ck_assert_int_eq((call), (status));                                                        \
+        ck_assert_int_eq((call), (code));                                                          \
         ck_assert_str_eq(err_.text, (message));                                                    \
-        ck_assert_int_eq(err_.status, (status));                                                   \
+        ck_assert_int_eq(err_.status, (code));                                                     \
         ck_assert_ptr_null(made_);                                                                 \
     } while (0)
 
@@ -56,48 +57,84 @@ static inline int below(uint64_t *seed, int n)
     return k < n ? k : n - 1;
 }
 
+// Complex numbers in double-double, so that what a comparison shows is the plant, not the test.
+typedef struct wide {
+    lw__dd re, im;
+} wide;
+
+static inline wide wide_of(number v)
+{
+    return (wide){lw__dd_from_double(creal(v)), lw__dd_from_double(cimag(v))};
+}
+
+static inline number narrow(wide v)
+{
+    return lw__dd_to_double(v.re) + I * lw__dd_to_double(v.im);
+}
+
+static inline wide wide_sub(wide a, wide b)
+{
+    return (wide){lw__dd_sub(a.re, b.re), lw__dd_sub(a.im, b.im)};
+}
+
+static inline wide wide_mul(wide a, wide b)
+{
+    return (wide){lw__dd_sub(lw__dd_mul(a.re, b.re), lw__dd_mul(a.im, b.im)),
+                  lw__dd_add(lw__dd_mul(a.re, b.im), lw__dd_mul(a.im, b.re))};
+}
+
+static inline wide wide_div(wide a, wide b)
+{
+    lw__dd size = lw__dd_add(lw__dd_mul(b.re, b.re), lw__dd_mul(b.im, b.im));
+    wide c = wide_mul(a, (wide){b.re, lw__dd_neg(b.im)});
+    return (wide){lw__dd_div(c.re, size), lw__dd_div(c.im, size)};
+}
+
+static inline void swap_wide(wide *a, wide *b)
+{
+    wide t = *a;
+    *a = *b;
+    *b = t;
+}
+
 // Solve m x = b (n x n, row-major) in place of b, by elimination with pivots.
-static inline void solve(int n, number *m, number *b)
+static inline void solve(int n, wide *m, wide *b)
 {
     for (int c = 0; c < n; c++) {
         int pivot = c;
         for (int i = c + 1; i < n; i++)
-            pivot = cabs(m[i * n + c]) > cabs(m[pivot * n + c]) ? i : pivot;
-        for (int k = 0; k < n; k++) {
-            number t = m[c * n + k];
-            m[c * n + k] = m[pivot * n + k];
-            m[pivot * n + k] = t;
-        }
-        number t = b[c];
-        b[c] = b[pivot];
-        b[pivot] = t;
+            pivot = cabs(narrow(m[i * n + c])) > cabs(narrow(m[pivot * n + c])) ? i : pivot;
+        for (int k = 0; k < n; k++)
+            swap_wide(&m[c * n + k], &m[pivot * n + k]);
+        swap_wide(&b[c], &b[pivot]);
         for (int i = 0; i < n; i++) {
             if (i == c)
                 continue;
-            number factor = m[i * n + c] / m[c * n + c];
+            wide factor = wide_div(m[i * n + c], m[c * n + c]);
             for (int k = c; k < n; k++)
-                m[i * n + k] -= factor * m[c * n + k];
-            b[i] -= factor * b[c];
+                m[i * n + k] = wide_sub(m[i * n + k], wide_mul(factor, m[c * n + k]));
+            b[i] = wide_sub(b[i], wide_mul(factor, b[c]));
         }
     }
     for (int i = 0; i < n; i++)
-        b[i] /= m[i * n + i];
+        b[i] = wide_div(b[i], m[i * n + i]);
 }
 
-// c (s I - a)^-1 b for a row c and a column b.
-static inline number resolvent(int n, const double *a, number s, const double *b, const double *c)
+// c (s I - a)^-1 b + d for a row c and a column b.
+static inline number resolvent(int n, const double *a, number s, const double *b, const double *c,
+                               double d)
 {
-    static number m[N_MAX * N_MAX], x[N_MAX];
-    number y = 0;
+    static wide m[N_MAX * N_MAX], x[N_MAX];
+    wide minus_y = wide_of(-d);
     for (int i = 0; i < n; i++) {
         for (int j = 0; j < n; j++)
-            m[i * n + j] = (i == j ? s : 0) - a[i * n + j];
-        x[i] = b[i];
+            m[i * n + j] = wide_sub(wide_of(i == j ? s : 0), wide_of(a[i * n + j]));
+        x[i] = wide_of(b[i]);
     }
     solve(n, m, x);
     for (int i = 0; i < n; i++)
-        y += c[i] * x[i];
-    return y;
+        minus_y = wide_sub(minus_y, wide_mul(wide_of(c[i]), x[i]));
+    return -narrow(minus_y);
 }
 
 // Transfer from input j to output i at s, delays left out.
@@ -107,7 +144,7 @@ static inline number response(const lw_plant *plant, int i, int j, number s)
     double b[N_MAX];
     for (int k = 0; k < v.n_x; k++)
         b[k] = v.b[k * v.n_u + j];
-    return resolvent(v.n_x, v.a, s, b, v.c + i * v.n_x) + v.d[i * v.n_u + j];
+    return resolvent(v.n_x, v.a, s, b, v.c + i * v.n_x, v.d[i * v.n_u + j]);
 }
 
 static inline double off(number got, number want)
