@@ -28,9 +28,12 @@ typedef struct dash {
     int64_t mask, head, count; // writes in flight
     lw_tick sample, arrive;    // due
     lw_tick limit;             // first tick that is not ours
+    lw_tick whole;             // the period where it is a whole number of ticks, else 0
     int64_t k, job;            // sample and job numbers
     lw_tick stepped_at, anchor;
-    int n_u;
+    int n_in, n_out;
+    int other_inputs; // some input of the group but ours may have changed since the anchor
+    const double *in[LW_LAW_MAX_PORTS]; // where the law's inputs stand
 } dash;
 
 // The least of the timers that are not the loop's own.
@@ -48,7 +51,8 @@ static dash begin_dash(lw__lane *s, const lw__sprint *c, lw_tick until)
     const lw__group *g = c->group;
     const lw__loop *l = c->loop;
     lw_tick other = others(s, c);
-    return (dash){.c = c,
+    lw_period period = c->adc->period;
+    dash d = {.c = c,
                   .x = &s->f[g->x],
                   .u_anchor = &s->f[g->u_anchor],
                   .u_now = &s->f[g->u_now],
@@ -66,7 +70,14 @@ static dash begin_dash(lw__lane *s, const lw__sprint *c, lw_tick until)
                   .job = LW__I(l->jobs),
                   .stepped_at = LW__I(l->stepped_at),
                   .anchor = LW__I(g->anchor),
-                  .n_u = g->n_u};
+                  .n_in = l->n_in,
+                  .n_out = l->n_out,
+                  .other_inputs = g->n_u > 1,
+                  .whole = period.den == 1 && until < LW_TICK_MAX - period.num ? period.num : 0};
+    for (int k = 0; k < l->n_in; k++)
+        d.in[k] = l->inputs[k].at.kind == LW__SIGNAL_CELL ? &LW__F(l->inputs[k].at.index)
+                                                          : &l->inputs[k].constant;
+    return d;
 }
 
 static void end_dash(lw__lane *s, const dash *d)
@@ -89,8 +100,10 @@ LW__INLINE void dash_anchor(lw__lane *s, dash *d)
     lw__changes c = {LW__I(g->list_n), &s->i[g->list_tick], &s->i[g->list_channel],
                      &s->f[g->list_du]};
     lw__kernel_advance(&g->kernel, d->anchor, d->x, d->u_anchor, &c, s->now, s->work);
-    for (int k = 0; k < d->n_u; k++)
+    d->u_anchor[d->c->channel] = d->u_now[d->c->channel];
+    for (int k = 0; d->other_inputs && k < g->n_u; k++)
         d->u_anchor[k] = d->u_now[k];
+    d->other_inputs = 0; // they stand still while only our timers are due
     d->anchor = LW__I(g->anchor) = s->now;
     LW__I(g->list_n) = 0;
 }
@@ -129,8 +142,7 @@ LW__INLINE void dash_arrive(lw__lane *s, dash *d)
     d->head = (slot + 1) & d->mask;
     d->count = 0;
     d->arrive = LW_NEVER;
-    dash_output(s, d, d->flight_out[slot * d->c->loop->n_out + d->c->output],
-                d->flight_job[slot]);
+    dash_output(s, d, d->flight_out[slot * d->n_out + d->c->output], d->flight_job[slot]);
 }
 
 LW__INLINE void dash_convert(lw__lane *s, dash *d)
@@ -142,7 +154,7 @@ LW__INLINE void dash_convert(lw__lane *s, dash *d)
     LW__I(a->sampled_at) = s->now;
     LW__F(a->taken) = y;
     d->k++;
-    d->sample = lw__grid_at(a->period, a->offset, d->k);
+    d->sample = d->whole > 0 ? s->now + d->whole : lw__grid_at(a->period, a->offset, d->k);
     if (s->status != LW_OK)
         return;
     LW__F(a->input) = y;
@@ -168,9 +180,8 @@ LW__INLINE void dash_step(lw__lane *s, dash *d)
     double in[LW_LAW_MAX_PORTS];
     int64_t job = d->job++;
     lw_tick at = s->now + dash_latency(s, l, job);
-    for (int k = 0; k < l->n_in; k++)
-        in[k] = l->inputs[k].at.kind == LW__SIGNAL_CELL ? LW__F(l->inputs[k].at.index)
-                                                        : l->inputs[k].constant;
+    for (int k = 0; k < d->n_in; k++)
+        in[k] = *d->in[k];
     lw_law_time time = {.now = lw__seconds(s->now),
                         .nominal = l->nominal,
                         .dt = d->stepped_at < 0 ? l->nominal : lw__seconds(s->now - d->stepped_at),
@@ -178,9 +189,11 @@ LW__INLINE void dash_step(lw__lane *s, dash *d)
                         .missed = LW__I(l->missed)};
     double sum = 0;
     int failed = l->step(l->param, &time, in, &s->f[l->state], d->outs);
-    int64_t slot = d->head & d->mask;
-    for (int o = 0; o < l->n_out; o++)
+    int64_t slot = d->head;
+    int o = 0;
+    do
         sum += d->outs[o] - d->outs[o];
+    while (++o < d->n_out);
     if (failed || sum != 0) {
         lw__end_lane(s, failed ? LW_ERR_LAW : LW_ERR_NOT_FINITE, l->item->def.name,
                      failed ? "its law failed" : "the law's output is not finite");
@@ -195,8 +208,11 @@ LW__INLINE void dash_step(lw__lane *s, dash *d)
     d->flight_tick[slot] = d->arrive = at;
     d->flight_job[slot] = job;
     d->count = 1;
-    for (int o = 0; o < l->n_out; o++)
-        d->flight_out[slot * l->n_out + o] = d->outs[o];
+    double *flight = d->flight_out + slot * d->n_out;
+    o = 0;
+    do
+        flight[o] = d->outs[o];
+    while (++o < d->n_out);
 }
 
 int64_t lw__sprint_run(lw__lane *s, const lw__sprint *sprint, lw_tick until)
