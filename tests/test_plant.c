@@ -319,6 +319,21 @@ START_TEST(entries_of_a_column_with_one_denominator_have_its_states_once)
 }
 END_TEST
 
+START_TEST(entries_without_a_numerator_decide_nothing)
+{
+    const lw_poly num[] = {{1, nought}, {1, two}, {2, lag}},
+                  den[] = {{2, slow}, {2, lag}, {3, pair}};
+    lw_plant *p;
+    MADE(p, lw_plant_transfer(3, 1, num, den, NULL, NULL, out, err));
+    ck_assert_int_eq(lw_plant_look(p).n_x, 1 + 2);
+    const number s = -0.2 + I;
+    ck_assert(response(p, 0, 0, s) == 0);
+    ck_response(response(p, 1, 0, s), 2 / (s + 1), 1e-14);
+    ck_response(response(p, 2, 0, s), (s + 1) / (s * s + 0.2 * s + 4), 1e-14);
+    lw_plant_free(p);
+}
+END_TEST
+
 START_TEST(transfer_functions_are_refused_by_field)
 {
     const double cubic[] = {1, 0, 0, 0}, leading[] = {0, 1}, bad[] = {1, INFINITY};
@@ -830,6 +845,7 @@ static void add_transfer(TCase *t)
     tcase_add_test(t, a_transfer_function_may_have_the_degree_of_its_denominator);
     tcase_add_test(t, entries_of_a_column_share_states_where_denominators_are_equal);
     tcase_add_test(t, entries_of_a_column_with_one_denominator_have_its_states_once);
+    tcase_add_test(t, entries_without_a_numerator_decide_nothing);
     tcase_add_test(t, transfer_functions_are_refused_by_field);
     tcase_add_test(t, a_transfer_matrix_of_too_many_states_is_refused);
     tcase_add_test(t, coefficients_that_overflow_by_division_are_refused);

@@ -612,27 +612,54 @@ END_TEST
 
 // ---- lack of memory
 
+// A chain of n parts by turns without and with a delay, each output shown.
+static lw_status chain(int n, lw_plant *const *p, lw_plant **out, lw_error *err)
+{
+    static char part[64][8], in[64][16], shown[64][16];
+    lw_part parts[64];
+    lw_link links[64];
+    for (int i = 0; i < n; i++) {
+        snprintf(part[i], sizeof part[i], "p%d", i);
+        snprintf(in[i], sizeof in[i], "p%d.in", i);
+        snprintf(shown[i], sizeof shown[i], "p%d.out", i);
+        parts[i] = (lw_part){part[i], p[i % 2]};
+        if (i > 0)
+            links[i - 1] = (lw_link){shown[i - 1], in[i], 1};
+    }
+    const lw_port input = {"u", in[0]}, outputs[] = {{"y", shown[n - 1]}, {"z", shown[n - 1]}};
+    return lw_plant_connect(n, parts, n - 1, links, 1, &input, 2, outputs, out, err);
+}
+
 static lw_status join(int i, lw_plant *const *p, lw_plant **out, lw_error *err)
 {
-    const lw_part parts[] = {{"a", p[0]}, {"b", p[1]}};
-    const lw_link link = {"a.out", "b.in", 1};
-    const lw_port in = {"u", "a.in"}, shown = {"y", "b.out"};
     switch (i) {
     case 0:
-        return lw_plant_connect(2, parts, 1, &link, 1, &in, 1, &shown, out, err);
+        return chain(3, p, out, err);
     case 1:
-        return lw_plant_series(p[0], p[1], out, err);
+        return chain(64, p, out, err);
     case 2:
+        return lw_plant_series(p[0], p[1], out, err);
+    case 3:
         return lw_plant_parallel(p[0], p[2], -1, out, err);
     default:
         return lw_plant_feedback(p[0], p[2], -1, out, err);
     }
 }
 
+START_TEST(a_long_chain_adds_up_all_its_delays)
+{
+    lw_plant *p[3] = {lag(1), late(lag(1), 0.5)};
+    MADE(p[2], chain(64, p, out, err));
+    ck_assert_int_eq(lw_plant_look(p[2]).n_x, 64);
+    ck_assert(lw_plant_look(p[2]).delay[0] == 16);
+    free_plants(3, p);
+}
+END_TEST
+
 START_TEST(lack_of_memory_is_said_and_leaves_nothing_behind)
 {
     lw_plant *p[3] = {lag(1), late(lag(1), 1), lag(2)};
-    for (int i = 0; i < 4; i++) {
+    for (int i = 0; i < 5; i++) {
         lw_plant *made = NULL;
         long n = 1; // the allocation that fails first
         for (; n < 40; n++) {
@@ -660,6 +687,7 @@ static void add_delays(TCase *t)
     tcase_add_test(t, a_delay_at_an_external_input_stays_there);
     tcase_add_test(t, delays_along_an_open_chain_add_up_at_its_beginning);
     tcase_add_test(t, a_moved_delay_leaves_every_path_as_late_as_before);
+    tcase_add_test(t, a_long_chain_adds_up_all_its_delays);
     tcase_add_test(t, sums_of_delays_agree_despite_their_rounding);
     tcase_add_test(t, a_delay_inside_feedback_is_refused_by_part_and_input);
     tcase_add_test(t, a_part_that_would_need_two_delays_is_refused_with_both);
