@@ -322,12 +322,45 @@ lw.law.own { step = function(wanted) return helper(wanted) end }]],
   test("a_law_called_from_inside_itself_fails_cleanly", function()
     local box = {}
     local law = lw.law.own { step = function(wanted, measured)
-      return select("#", box.rig:run { lasts = "1 ms" }:status()) + wanted + measured
+      local _, message = box.rig:run { lasts = "1 ms" }:status()
+      local told = message:find("a function of a run may not run itself", 1, true)
+      return (told and 1 or 0) + 0 * (wanted + measured)
     end }
     box.rig = coil.loop { inductance = 1, period = "100 us", wanted = 1, law = law }
-    local run = box.rig:run { lasts = "1 ms" }
-    -- the inner run ends by the law that is busy; the outer one goes on with what it returns
+    -- each inner run ends by the law that is busy; the outer one goes on with what it returns
+    local run = box.rig:run { lasts = "300 us", record = { "control" } }
     equal(run:status(), "done")
+    harness.same_list(run:record("control").out, { 1, 1, 1, 1 })
+  end)
+
+  test("runs_within_runs_end_before_the_stack_does", function()
+    local function rig_of(step)
+      return coil.loop { inductance = 1, period = "1 ms", wanted = 1,
+        law = lw.law.own { step = step } }
+    end
+    local function step(wanted, measured, now)
+      local run = rig_of(step):run { lasts = 0.001 }
+      local status, message = run:status()
+      if status ~= "done" then error(message, 0) end
+      return wanted + measured + now
+    end
+    local status, message = rig_of(step):run { lasts = "1 ms" }:status()
+    equal(status, "LW_ERR_LAW")
+    equal(message:find("runs are within runs, more than 16 deep", 1, true) ~= nil, true, message)
+  end)
+
+  test("what_changes_from_outside_during_a_run_is_named_too", function()
+    local gain, later = 1, nil
+    local law = lw.law.own { step = function(wanted, measured)
+      return (later or gain) * (wanted - measured)
+    end }
+    local rig = coil.loop { inductance = 1, period = "100 us", wanted = 1, law = law }
+    local run = rig:start { lasts = "1 ms" }
+    later = 2
+    raises(function() run:advance("1 ms"):finish() end, "the captured later changed")
+    run = rig:start { lasts = "1 ms" }
+    gain = 3
+    raises(function() run:advance("1 ms"):finish() end, "the captured gain changed")
   end)
 
   test("own_laws_refuse_what_cannot_be_matched", function()
