@@ -10,7 +10,8 @@ build() { # compiler, options
   folder=build/builds/$1$(printf '%s' "$2" | tr -d ' ')
   command -v "$1" >/dev/null || { echo "$1 is not on this machine: left out"; return; }
   if MAKELEVEL=0 make -s CC="$1" CFLAGS="$2" B="$folder" all >"$folder.log" 2>&1 &&
-    LATEWOOD=$folder/latewood "$here/test_golden.sh"; then
+    MAKELEVEL=0 make -s CC="$1" CFLAGS="$2" B="$folder" "$folder/tests/test_elementary" &&
+    "$folder/tests/test_elementary" && LATEWOOD=$folder/latewood "$here/test_golden.sh"; then
     passed=$((passed + 1))
   else
     failed=$((failed + 1))
