@@ -12,4 +12,4 @@ if [ -z "$python" ]; then
   echo "0 passed, 1 failed"
   exit 1
 fi
-exec "$python" "$here/long_reference.py" "${CASES:-600}"
+exec "$python" "$here/long_reference.py" "${CASES:-300}"
