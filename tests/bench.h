@@ -42,8 +42,9 @@ static inline void bench_pair(const char *name, long n, double (*ours)(long), do
         b[round] = (t2 - t1) / (double)n;
     }
     double own = bench_median(a), base = bench_median(b);
-    printf("bench %s ratio %.2f   (%.2f ns against %.2f ns a period; they end at %.12g and %.12g)\n",
-           name, own / base, own, base, x, y);
+    printf(
+        "bench %s ratio %.2f   (%.2f ns against %.2f ns a period; they end at %.12g and %.12g)\n",
+        name, own / base, own, base, x, y);
     fflush(stdout);
 }
 

@@ -1,7 +1,7 @@
 // Speed of whole loops against hand-written C for the one loop, in one run:
 //   W1  integrator, P, one sample of delay
-//   W2  four-state axis of a mount drive, 12-bit adc, PI with filter and anti-windup, latency 0.37 T
-//   W3  as W2, latency uniform in 0.2 to 0.9 T
+//   W2  four-state axis of a mount drive, 12-bit adc, PI with filter and anti-windup, latency 0.37
+//   T W3  as W2, latency uniform in 0.2 to 0.9 T
 // The plain C has everything of its loop as constants; transitions are formed beforehand in both.
 // All parameters are invented.
 
@@ -45,11 +45,22 @@
 #define EARLY 0.2
 #define LATE 0.9
 
-static const double axis_a[16] = {
-    -1.2 / 0.0018,   -0.11 / 0.0018,       0,               0,
-    0.11 / 0.00014,  -0.01225 / 0.00014,   -160 / 0.00014,  0.012 / 0.00014,
-    0,               1,                    0,               -1,
-    0,               0.012 / 0.0009,       160 / 0.0009,    -0.0123 / 0.0009};
+static const double axis_a[16] = {-1.2 / 0.0018,
+                                  -0.11 / 0.0018,
+                                  0,
+                                  0,
+                                  0.11 / 0.00014,
+                                  -0.01225 / 0.00014,
+                                  -160 / 0.00014,
+                                  0.012 / 0.00014,
+                                  0,
+                                  1,
+                                  0,
+                                  -1,
+                                  0,
+                                  0.012 / 0.0009,
+                                  160 / 0.0009,
+                                  -0.0123 / 0.0009};
 static const double axis_b[4] = {1 / 0.0018, 0, 0, 0};
 
 // The controller of W2 and W3: filter, PI, back-calculation.
@@ -279,7 +290,8 @@ static double jitter_engine(long n)
 static void build(void)
 {
     static const char *const y[] = {"y"};
-    static const lw_latency_entry one = {1, 1, LW_FATE_WRITTEN}, part = {LATENCY, 1, LW_FATE_WRITTEN};
+    static const lw_latency_entry one = {1, 1, LW_FATE_WRITTEN},
+                                  part = {LATENCY, 1, LW_FATE_WRITTEN};
     double zero = 0, gain = 1 / COIL_L, unit = 1, c[4] = {0, 1, 0, 0};
     lw_timing *timing = NULL;
     simple_loop s = simple_default();
@@ -291,7 +303,8 @@ static void build(void)
     OK(lw_timing_uniform(EARLY * AXIS_T, LATE * AXIS_T, &timing, e));
     for (int k = 0; k < 2; k++) {
         s = simple_default();
-        OK(lw_plant_state_space(4, 1, 1, axis_a, axis_b, c, NULL, NULL, NULL, NULL, y, &s.plant, e));
+        OK(lw_plant_state_space(4, 1, 1, axis_a, axis_b, c, NULL, NULL, NULL, NULL, y, &s.plant,
+                                e));
         s.law = axis_law();
         s.period = 50 * US;
         s.adc = (lw_quantiser){12, -40, 40, LW_ROUND_NEAREST};

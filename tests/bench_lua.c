@@ -1,6 +1,6 @@
 // Speed of a control law written in Lua: W6, a PI with filter called each period, under the full
-// contract of a law inside a whole loop (plant, adc, dac), against a bare protected call from C with
-// positional scalars and a lag as cheap as can be.
+// contract of a law inside a whole loop (plant, adc, dac), against a bare protected call from C
+// with positional scalars and a lag as cheap as can be.
 
 #include "bench.h"
 

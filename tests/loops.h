@@ -12,9 +12,9 @@
 #ifndef OK // measurements have their own
 #define OK(call)                                                                                   \
     do {                                                                                           \
-        lw_error err_ = {0}, *e = &err_;                                                            \
+        lw_error err_ = {0}, *e = &err_;                                                           \
         lw_status status_ = (call);                                                                \
-        ck_assert_msg(status_ == LW_OK, "%s: %s", #call, err_.text);                                \
+        ck_assert_msg(status_ == LW_OK, "%s: %s", #call, err_.text);                               \
         (void)e;                                                                                   \
     } while (0)
 #endif
@@ -24,8 +24,8 @@
 
 // A loop as a table: plant `p`, law `l`, and what differs from the plainest loop.
 typedef struct simple_loop {
-    lw_plant *plant; // taken over
-    lw_law *law;     // taken over
+    lw_plant *plant;      // taken over
+    lw_law *law;          // taken over
     const char *measured; // plant signal, "plant.out" where NULL
     double wanted;
     lw_tick period, takes;

@@ -27,7 +27,12 @@ static const published rows[] = {
      1e-15,
      1},
     // X-03, the same set, test 6
-    {"X-03", 2, {1, 1, 0, 1}, {2.718281828459046, 2.718281828459046, 0, 2.718281828459046}, 2e-15, 0},
+    {"X-03",
+     2,
+     {1, 1, 0, 1},
+     {2.718281828459046, 2.718281828459046, 0, 2.718281828459046},
+     2e-15,
+     0},
     // X-04, the same set, test 7: nearly confluent
     {"X-04", 2, {1 + 1e-5, 1, 0, 1 - 1e-5}, {2.718309, 2.718282, 0, 2.718255}, 5.1e-7, 0},
     // X-06, the same set, test 9
@@ -145,8 +150,8 @@ START_TEST(closed_forms_are_met_to_the_last_digits)
     const double five[] = {21, 17, 6, -5, -1, -6, 4, 4, 16};
     double u = exp(16), v = exp(4);
     // X-05, Burkardt's set, test 8
-    const double w5[] = {13 * u - v,  13 * u - 5 * v, 2 * u - 2 * v, -9 * u + v, -9 * u + 5 * v,
-                         -2 * u + 2 * v, 16 * u,      16 * u,        4 * u};
+    const double w5[] = {13 * u - v,     13 * u - 5 * v, 2 * u - 2 * v, -9 * u + v, -9 * u + 5 * v,
+                         -2 * u + 2 * v, 16 * u,         16 * u,        4 * u};
     exponential(3, five, 1, e);
     for (int i = 0; i < 9; i++)
         ck_near(e[i], w5[i] / 4, 1e-14, 0);

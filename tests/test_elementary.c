@@ -18,7 +18,10 @@ typedef struct function {
 } function;
 
 static const function functions[] = {
-#define ROW(name, lo, hi, hash) {#name, lw_##name, name, lo, hi, UINT64_C(hash)}
+#define ROW(name, lo, hi, hash)                                                                    \
+    {                                                                                              \
+#name, lw_##name, name, lo, hi, UINT64_C(hash)                                             \
+    }
 #include "elementary_hashes.inc"
 };
 enum { N_FUNCTIONS = sizeof functions / sizeof functions[0], N_ARGUMENTS = 1000000 };
@@ -57,8 +60,8 @@ START_TEST(results_are_within_four_units_of_the_last_place)
     for (int k = 0; k < 20000; k++) {
         double x = argument(f, k), want = f->libm(x);
         double unit = nextafter(fabs(want), (double)INFINITY) - fabs(want);
-        ck_assert_msg(fabs(f->ours(x) - want) <= 4 * unit, "%s(%.17g) is %.17g, the C library %.17g",
-                      f->name, x, f->ours(x), want);
+        ck_assert_msg(fabs(f->ours(x) - want) <= 4 * unit,
+                      "%s(%.17g) is %.17g, the C library %.17g", f->name, x, f->ours(x), want);
     }
 }
 END_TEST

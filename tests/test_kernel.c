@@ -35,8 +35,8 @@ static const system_of systems[] = {
      1e-14},
     {"flexible",
      6,
-     {-667, -61, 0, 0, 0, 0, 786, -88, -1.14e6, 86, 0, 0, 0, 1,    0,   -1, 0, 0,
-      0,    13,  1.78e5, -14, -9e4, 1, 0, 0, 0, 1, 0, -1, 0, 0,    0,   2,  8e4, -3},
+     {-667, -61, 0,      0,   0,    0, 786, -88, -1.14e6, 86, 0, 0,  0, 1, 0, -1, 0,   0,
+      0,    13,  1.78e5, -14, -9e4, 1, 0,   0,   0,       1,  0, -1, 0, 0, 0, 2,  8e4, -3},
      {555, 0, 0, 0, 0, 0},
      5e-5,
      1e-13},
@@ -79,8 +79,8 @@ static built build(const system_of *s)
 {
     built k = {lw__arena_new(), {0}, (lw_tick)(s->reach * 1e12 + 0.5)};
     lw_error err;
-    lw_status status = lw__kernel_build(k.arena, s->n, 1, s->a, s->b, k.reach, 1, &k.reach,
-                                        &k.kernel, &err);
+    lw_status status =
+        lw__kernel_build(k.arena, s->n, 1, s->a, s->b, k.reach, 1, &k.reach, &k.kernel, &err);
     ck_assert_msg(status == LW_OK, "%s", err.text);
     return k;
 }

@@ -216,8 +216,9 @@ START_TEST(latency_below_the_conversion_is_refused)
     s.latency.list = &entry;
     lw_rig *rig = simple_rig(&s);
     ck_assert_int_eq(lw_rig_freeze(rig, NULL, MS, &frozen, &err), LW_ERR_ARGUMENT);
-    ck_assert_str_eq(err.text, "loop \"loop\": latency is 1e-06 s; it includes the conversion and is "
-                               "at least 2e-06 s");
+    ck_assert_str_eq(err.text,
+                     "loop \"loop\": latency is 1e-06 s; it includes the conversion and is "
+                     "at least 2e-06 s");
     lw_rig_free(rig);
 }
 END_TEST

@@ -109,9 +109,9 @@ static const struct {
 } table[] = {
     // M-01: overshoot in percent, formula read in a source, values from memory;
     // M-03: N. Nise, Control Systems Engineering, normalised 10-90 % rise time
-    {0.1, 72.9, 1.104}, {0.2, 52.7, 1.203}, {0.3, 37.2, 1.321}, {0.4, 25.4, 1.463},
-    {0.5, 16.3, 1.638}, {0.6, 9.48, 1.854}, {0.7, 4.60, 2.126}, {0.8, 1.52, 2.467},
-    {0.9, 0.15, 2.883},
+    {0.1, 72.9, 1.104}, {0.2, 52.7, 1.203}, {0.3, 37.2, 1.321},
+    {0.4, 25.4, 1.463}, {0.5, 16.3, 1.638}, {0.6, 9.48, 1.854},
+    {0.7, 4.60, 2.126}, {0.8, 1.52, 2.467}, {0.9, 0.15, 2.883},
 };
 
 START_TEST(second_order_overshoot_and_rise_table)

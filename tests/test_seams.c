@@ -202,8 +202,8 @@ static int compare_common(const lw_run *a, const lw_frozen *za, const lw_run *b,
             if (s.kind == LW_SLICE_METRIC || strcmp(s.owner, t.owner) != 0 ||
                 strcmp(s.name, t.name) != 0 || s.count != t.count)
                 continue;
-            ck_assert_msg(memcmp(cells_of(a, za, &s), cells_of(b, zb, &t),
-                                 (size_t)(8 * s.count)) == 0,
+            ck_assert_msg(memcmp(cells_of(a, za, &s), cells_of(b, zb, &t), (size_t)(8 * s.count)) ==
+                              0,
                           "%s of %s differs", s.name, s.owner);
             compared++;
         }
@@ -333,9 +333,8 @@ END_TEST
 // Plain loops of several shapes: the compiled driver leaves the bytes of the queue driver.
 static lw_rig *plain_loop(int shape)
 {
-    static const lw_latency_entry entries[] = {{0, 0, LW_FATE_WRITTEN},
-                                               {0.37, 1, LW_FATE_WRITTEN},
-                                               {1, 1, LW_FATE_WRITTEN}};
+    static const lw_latency_entry entries[] = {
+        {0, 0, LW_FATE_WRITTEN}, {0.37, 1, LW_FATE_WRITTEN}, {1, 1, LW_FATE_WRITTEN}};
     simple_loop s = simple_default();
     lw_timing *timing = NULL;
     s.plant = integrator(250);

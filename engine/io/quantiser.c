@@ -29,9 +29,10 @@ lw_status lw_quantiser_check(const lw_quantiser *q, lw_error *err)
                             q->lo, q->hi);
     double lsb = ldexp(q->hi - q->lo, -q->bits), steps = q->lo / lsb;
     if (q->bits > 0 && steps != rint(steps))
-        return lw_error_set(err, LW_ERR_ARGUMENT,
-                            "range begins at %g, which is %.17g LSB of %g; a whole number is wanted",
-                            q->lo, steps, lsb);
+        return lw_error_set(
+            err, LW_ERR_ARGUMENT,
+            "range begins at %g, which is %.17g LSB of %g; a whole number is wanted", q->lo, steps,
+            lsb);
     return LW_OK;
 }
 

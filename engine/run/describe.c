@@ -68,8 +68,7 @@ static void describe_plants(writer *w, const lw_frozen *z)
     for (int i = 0; i < z->n_plants; i++) {
         const lw_plant_view *v = &z->plants[i].view;
         say(w, "plant \"%s\": %d state%s, %d input%s, %d output%s", z->plants[i].name, v->n_x,
-            v->n_x == 1 ? "" : "s", v->n_u, v->n_u == 1 ? "" : "s", v->n_y,
-            v->n_y == 1 ? "" : "s");
+            v->n_x == 1 ? "" : "s", v->n_u, v->n_u == 1 ? "" : "s", v->n_y, v->n_y == 1 ? "" : "s");
         for (int k = 0; k < v->n_u; k++)
             if (v->delay[k] > 0)
                 say(w, "  input \"%s\" is delayed by %s s", v->input_names[k],
@@ -138,8 +137,7 @@ static void describe_adcs(writer *w, const lw_frozen *z)
                 time_words(a->offset).text, range_words(&d->quantiser).text);
         else
             say(w, "adc \"%s\": samples \"%s\"%s when adc \"%s\" is done; %s", d->name, d->of[0],
-                d->n_channels > 1 ? " and others" : "", d->after,
-                range_words(&d->quantiser).text);
+                d->n_channels > 1 ? " and others" : "", d->after, range_words(&d->quantiser).text);
         say(w, "  a conversion takes %s%s", time_words(a->takes).text,
             a->takes == 0 ? " (default)" : "");
         if (d->average > 1)
@@ -233,8 +231,9 @@ static void describe_roundings(writer *w, const lw_frozen *z)
         rounding(w, "offset", d->name, d->offset);
         rounding(w, "conversion time", d->name, d->takes);
         if (d->every.den > 1)
-            say(w, "the period of \"%s\" is kept as the fraction %lld/%lld ps; each instant is "
-                   "rounded by itself",
+            say(w,
+                "the period of \"%s\" is kept as the fraction %lld/%lld ps; each instant is "
+                "rounded by itself",
                 d->name, (long long)d->every.num, (long long)d->every.den);
     }
     for (int i = 0; i < z->n_loops; i++) {

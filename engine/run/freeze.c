@@ -299,9 +299,9 @@ static lw_status place_plants(lw__freezer *w)
 {
     lw_frozen *z = w->z;
     for (int i = 0; i < z->n_plants; i++)
-        z->plants[i] = (lw__plant_place){w->rig->plants[i].name,
-                                         lw_plant_look(w->rig->plants[i].plant), w->group_of[i],
-                                         w->first_row[i], w->first_state[i]};
+        z->plants[i] =
+            (lw__plant_place){w->rig->plants[i].name, lw_plant_look(w->rig->plants[i].plant),
+                              w->group_of[i], w->first_row[i], w->first_state[i]};
     for (int g = 0; g < z->n_groups; g++) {
         z->most_x = z->groups[g].n_x > z->most_x ? z->groups[g].n_x : z->most_x;
         z->most_u = z->groups[g].n_u > z->most_u ? z->groups[g].n_u : z->most_u;

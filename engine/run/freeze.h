@@ -75,9 +75,9 @@ lw_status lw__freeze_plants(lw__freezer *w);     // groups, rows, channels, kern
 lw_status lw__freeze_converters(lw__freezer *w); // sources, values, adcs, dacs
 lw_status lw__freeze_loops(lw__freezer *w);
 lw_status lw__freeze_streams(lw__freezer *w); // collisions refused
-void lw__freeze_anchors(lw__freezer *w);       // whose timer moves each anchor
-lw_status lw__freeze_watch(lw__freezer *w); // records, tracks, metrics
-lw_status lw__freeze_order(lw__freezer *w); // operations, timers, sets
+void lw__freeze_anchors(lw__freezer *w);      // whose timer moves each anchor
+lw_status lw__freeze_watch(lw__freezer *w);   // records, tracks, metrics
+lw_status lw__freeze_order(lw__freezer *w);   // operations, timers, sets
 
 // A name of a signal that must exist; failure names origin, thing, field.
 lw_status lw__freezer_signal(lw__freezer *w, const char *origin, const char *what,

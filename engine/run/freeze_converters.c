@@ -119,7 +119,8 @@ static lw_status adc_cells(lw__freezer *w, lw__adc *a, const lw_adc_def *def)
     a->sample = lw__freezer_integer(w, name, "sample number", LW_SLICE_SCHEDULE, 1);
     a->sampled_at = lw__freezer_integer(w, name, "instant of the sample", LW_SLICE_IN_FLIGHT, 1);
     a->result = lw__freezer_integer(w, name, "instant of the value's sample", LW_SLICE_HELD, 1);
-    a->step = lw__freezer_integer(w, name, "samples taken of this conversion", LW_SLICE_SCHEDULE, 1);
+    a->step =
+        lw__freezer_integer(w, name, "samples taken of this conversion", LW_SLICE_SCHEDULE, 1);
     a->reads = lw__freezer_integer(w, name, "reads of the value", LW_SLICE_HELD, n);
     return a->reads >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
@@ -257,8 +258,8 @@ static lw_status dac_latch(lw__freezer *w, lw__dac *d, const lw_dac_def *def)
         const char *near = lw_nearest_name(def->latched_by, names, n);
         return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
                            "dac \"%s\": latch: no adc \"%s\" with a clock of its own%s%s%s",
-                           def->name, def->latched_by, near ? "; nearest \"" : "",
-                           near ? near : "", near ? "\"" : "");
+                           def->name, def->latched_by, near ? "; nearest \"" : "", near ? near : "",
+                           near ? "\"" : "");
     }
     d->n_phases = d->latch.num > 0 ? def->n_phases : 0;
     d->set_up = ticks(def->set_up);

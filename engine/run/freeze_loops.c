@@ -246,8 +246,8 @@ static lw_status loop_cells(lw__freezer *w, lw__loop *l, const char *name)
         lw__freezer_double(w, name, "state of the latency", LW_SLICE_SCHEDULE, l->latency.n_state);
     l->flight_out = lw__freezer_double(w, name, "outputs in flight", LW_SLICE_IN_FLIGHT,
                                        l->capacity * l->law->n_out);
-    l->flight_tick =
-        lw__freezer_integer(w, name, "instants of writes in flight", LW_SLICE_IN_FLIGHT, l->capacity);
+    l->flight_tick = lw__freezer_integer(w, name, "instants of writes in flight",
+                                         LW_SLICE_IN_FLIGHT, l->capacity);
     l->flight_job =
         lw__freezer_integer(w, name, "jobs of writes in flight", LW_SLICE_IN_FLIGHT, l->capacity);
     l->head = lw__freezer_integer(w, name, "first write in flight", LW_SLICE_IN_FLIGHT, 1);

@@ -53,9 +53,10 @@ lw_status lw__freeze_streams(lw__freezer *w)
     qsort(all, (size_t)n, sizeof *all, by_stream);
     for (int i = 1; i < n; i++)
         if (all[i].stream == all[i - 1].stream)
-            return lw__fail_at(all[i].origin, w->err, LW_ERR_DUPLICATE,
-                               "\"%s\" and \"%s\" have names whose draw streams collide; rename one",
-                               all[i - 1].owner, all[i].owner);
+            return lw__fail_at(
+                all[i].origin, w->err, LW_ERR_DUPLICATE,
+                "\"%s\" and \"%s\" have names whose draw streams collide; rename one",
+                all[i - 1].owner, all[i].owner);
     return LW_OK;
 }
 
@@ -287,9 +288,8 @@ static int plain_dac(const lw__dac *d)
     if (d == NULL || d->drives.n != 1)
         return 0;
     const lw__group *g = d->drives.list[0].group;
-    return d->n_phases == 0 && d->plain && d->log < 0 && !d->newest &&
-           d->observers.words == NULL && d->drives.list[0].delay == 0 &&
-           g->observers.words == NULL && g->n_generators == 0;
+    return d->n_phases == 0 && d->plain && d->log < 0 && !d->newest && d->observers.words == NULL &&
+           d->drives.list[0].delay == 0 && g->observers.words == NULL && g->n_generators == 0;
 }
 
 static int plain_adc(const lw__adc *a)
@@ -301,8 +301,8 @@ static int plain_adc(const lw__adc *a)
 static int plain_loop(const lw__loop *l)
 {
     const lw__latency *y = &l->latency;
-    int latency = y->timing != NULL || (y->n_list == 1 && y->list[0].whole < 0 &&
-                                        y->list[0].fate == LW_FATE_WRITTEN);
+    int latency = y->timing != NULL ||
+                  (y->n_list == 1 && y->list[0].whole < 0 && y->list[0].fate == LW_FATE_WRITTEN);
     for (int k = 0; k < l->n_in; k++)
         if (l->inputs[k].at.kind != LW__SIGNAL_CELL && l->inputs[k].at.kind != LW__SIGNAL_CONSTANT)
             return 0;

@@ -118,7 +118,8 @@ static lw_status find_driver(lw__freezer *w, const lw__connection_item *item, lw
 static lw_status collect_feeds(lw__freezer *w)
 {
     const lw_rig *rig = w->rig;
-    w->feeds = lw__freezer_get(w, sizeof *w->feeds * (size_t)(rig->n_connections + rig->n_dacs + 1));
+    w->feeds =
+        lw__freezer_get(w, sizeof *w->feeds * (size_t)(rig->n_connections + rig->n_dacs + 1));
     if (w->feeds == NULL)
         return LW_ERR_MEMORY;
     for (int i = 0; i < rig->n_connections; i++) {
@@ -357,8 +358,8 @@ static lw_status delayed_source(lw__freezer *w, const lw__source_item **item, do
     return LW_OK;
 }
 
-static lw_status fill_inputs(lw__freezer *w, const joint *j, const lw_plant_view *v,
-                             system_of *s, lw__generator *generators, lw__channel *channels)
+static lw_status fill_inputs(lw__freezer *w, const joint *j, const lw_plant_view *v, system_of *s,
+                             lw__generator *generators, lw__channel *channels)
 {
     int state = v->n_x, slope = v->n_u, next = 0;
     for (int i = 0; i < j->n_inputs; i++) {
@@ -376,7 +377,10 @@ static lw_status fill_inputs(lw__freezer *w, const joint *j, const lw_plant_view
             continue;
         LW__TRY(delayed_source(w, &item, v->delay[i]));
         lw__generator *gen = &generators[next++];
-        *gen = (lw__generator){.source = f->driver.index, .def = &item->def, .state = state, .slope = -1,
+        *gen = (lw__generator){.source = f->driver.index,
+                               .def = &item->def,
+                               .state = state,
+                               .slope = -1,
                                .is_sine = item->def.kind == LW_SOURCE_SINE};
         s->u_start[i] = 0;
         channels[i].delay = 0;
@@ -547,10 +551,10 @@ static lw_status group_cells(lw__freezer *w, lw__group *g)
     g->list_du = lw__freezer_double(w, name, "input changes", LW_SLICE_PLANT, LW__LIST_CAPACITY);
     g->anchor = lw__freezer_integer(w, name, "anchor", LW_SLICE_PLANT, 1);
     g->list_n = lw__freezer_integer(w, name, "number of input changes", LW_SLICE_PLANT, 1);
-    g->list_tick =
-        lw__freezer_integer(w, name, "instants of input changes", LW_SLICE_PLANT, LW__LIST_CAPACITY);
-    g->list_channel =
-        lw__freezer_integer(w, name, "channels of input changes", LW_SLICE_PLANT, LW__LIST_CAPACITY);
+    g->list_tick = lw__freezer_integer(w, name, "instants of input changes", LW_SLICE_PLANT,
+                                       LW__LIST_CAPACITY);
+    g->list_channel = lw__freezer_integer(w, name, "channels of input changes", LW_SLICE_PLANT,
+                                          LW__LIST_CAPACITY);
     g->count = lw__freezer_integer(w, name, "anchors so far", LW_SLICE_PLANT, 1);
     for (int i = 0; i < g->n_generators; i++) {
         g->generators[i].timer = lw__freezer_timer(w);
@@ -569,9 +573,8 @@ static lw_status delay_cells(lw__freezer *w, lw__channel *c)
         return LW_OK;
     c->capacity = 256;
     c->queue_f = lw__freezer_double(w, c->name, "delayed values", LW_SLICE_IN_FLIGHT, c->capacity);
-    c->queue_i =
-        lw__freezer_integer(w, c->name, "instants of delayed values", LW_SLICE_IN_FLIGHT,
-                            c->capacity + 2); // then head and count
+    c->queue_i = lw__freezer_integer(w, c->name, "instants of delayed values", LW_SLICE_IN_FLIGHT,
+                                     c->capacity + 2); // then head and count
     c->timer = lw__freezer_timer(w);
     return c->queue_f >= 0 && c->queue_i >= 0 ? LW_OK : LW_ERR_MEMORY;
 }

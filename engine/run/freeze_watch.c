@@ -125,8 +125,9 @@ static lw_status track_level(lw__freezer *w, lw__track *t, const lw_metric_def *
         return lw__blame(def->origin, w->err, status);
     }
     if (t->against.at.kind == LW__SIGNAL_ROW)
-        return metric_error(w, def, "against: a plant's output; a source, a value or a number is "
-                                    "wanted");
+        return metric_error(w, def,
+                            "against: a plant's output; a source, a value or a number is "
+                            "wanted");
     if (!isnan(t->level))
         return LW_OK;
     for (int i = 0; i < w->z->n_sources; i++) {
@@ -229,8 +230,9 @@ static lw_status track_metric(lw__freezer *w, lw__metric *m)
     if (needs_level(def->kind) && isnan(def->level) && def->against == NULL)
         return metric_error(w, def, "level or against is missing; it is measured against one");
     if (level_first(def->kind) && isnan(t.level))
-        return metric_error(w, def, "level is missing; what it is taken against is not known "
-                                    "before the end of the run");
+        return metric_error(w, def,
+                            "level is missing; what it is taken against is not known "
+                            "before the end of the run");
     if (def->kind == LW_METRIC_SATURATION_TIME && strstr(t.name, ".saturated") == NULL)
         return metric_error(w, def, "of: a dac is wanted");
     m->own = lw__freezer_double(w, def->name, "instants", LW_SLICE_METRIC, LW__N_OWN);

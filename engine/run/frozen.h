@@ -64,7 +64,7 @@ typedef struct lw__generator {
 } lw__generator;
 
 typedef struct lw__channel {
-    const char *name;  // the plant input, for messages
+    const char *name; // the plant input, for messages
     lw_tick delay;
     int timer, queue_f, queue_i, capacity; // changes in flight where delay is not 0
 } lw__channel;
@@ -80,7 +80,7 @@ typedef struct lw__group {
     lw__channel *channels;
     lw__set observers; // operations of phase 8 that want to know of a change
     // cells
-    int x, u_anchor, u_now, list_du;            // doubles
+    int x, u_anchor, u_now, list_du;             // doubles
     int anchor, list_n, list_tick, list_channel; // integers
     // the anchor grid
     lw_period grid;
@@ -136,11 +136,11 @@ typedef struct lw__adc {
     double inverse_average;
     uint32_t noise_stream;
     // cells: channel values, codes and inputs as read; sums while sampling; inputs under conversion
-    int value, code, input, sum, taken;          // doubles, n_channels each
+    int value, code, input, sum, taken;  // doubles, n_channels each
     int sample, sampled_at, step, reads; // integers (reads: n_channels)
-    int result; // integer: instant of the sample whose value stands
+    int result;                          // integer: instant of the sample whose value stands
     int timer, done_timer, sample_op, convert_op;
-    lw__set after;    // operations that the end of conversion makes due
+    lw__set after; // operations that the end of conversion makes due
     lw__set observers;
     lw_tick stale_after;
     int log; // record of events, -1
@@ -173,8 +173,8 @@ typedef struct lw__target {
 typedef struct lw__latency {
     int n_list;
     const struct lw__latency_step {
-        lw_tick ticks;   // used where whole is < 0
-        int64_t whole;   // >= 0: whole samples on the adc's grid
+        lw_tick ticks; // used where whole is < 0
+        int64_t whole; // >= 0: whole samples on the adc's grid
         lw_fate fate;
     } * list;
     const lw_timing *timing;
@@ -204,9 +204,9 @@ typedef struct lw__loop {
     int capacity; // power of two
     double nominal;
     // cells
-    int state, outs, memory;                   // doubles: law state, outputs, timing state
-    int flight_out;                            // doubles: capacity * n_out
-    int flight_tick, flight_job, head, count;  // integers
+    int state, outs, memory;                        // doubles: law state, outputs, timing state
+    int flight_out;                                 // doubles: capacity * n_out
+    int flight_tick, flight_job, head, count;       // integers
     int stepped_at, missed, jobs, n_lost, n_missed; // integers; stepped_at < 0: never
     int timer;
     lw__set observers;
@@ -280,17 +280,17 @@ struct lw_frozen {
     // operations in their total order; bit b of a set is operation b
     int n_ops, n_words;
     lw__op *ops;
-    lw__set phase_8; // operations of phase 8
-    lw__set no_ops;  // the empty set
+    lw__set phase_8;                 // operations of phase 8
+    lw__set no_ops;                  // the empty set
     const struct lw__sprint *sprint; // the rig's one plain loop, NULL where there is none
-    int n_timers, n_model_timers; // those of observers come last
-    int due; // integer cells, one a timer
-    lw__set *timer_ops; // operations of each timer
+    int n_timers, n_model_timers;    // those of observers come last
+    int due;                         // integer cells, one a timer
+    lw__set *timer_ops;              // operations of each timer
 
     int n_f, n_i; // cells a lane
     int n_slices;
     lw_slice *slices;
-    int now; // integer cell
+    int now;            // integer cell
     int most_x, most_u; // largest sizes, for scratch
 };
 

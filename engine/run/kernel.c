@@ -132,7 +132,8 @@ static void gamma_series(const builder *w, const lw__dd *e, double half, int deg
         out[i] = lw__dd_to_double(e[i * w->size + n + channel]);
         v[i] = lw__dd_from_double(0);
         for (int j = 0; j < n; j++)
-            v[i] = lw__dd_add(v[i], lw__dd_mul_double(e[i * w->size + j], w->b[j * w->m + channel]));
+            v[i] =
+                lw__dd_add(v[i], lw__dd_mul_double(e[i * w->size + j], w->b[j * w->m + channel]));
         v[i] = lw__dd_mul(v[i], h);
     }
     for (int k = 1; k <= degree; k++) {
@@ -155,8 +156,8 @@ static lw_status build_pieces(builder *w, lw__kernel *k, lw_error *err)
 {
     size_t series = (size_t)(k->degree + 1) * (size_t)(w->n + 1);
     lw__transition *centre = lw__arena_get(w->arena, sizeof *centre * (size_t)k->n_pieces);
-    double *polynomial = lw__arena_get(w->arena, sizeof(double) * series * (size_t)k->n_pieces *
-                                                     (size_t)(w->m + 1));
+    double *polynomial =
+        lw__arena_get(w->arena, sizeof(double) * series * (size_t)k->n_pieces * (size_t)(w->m + 1));
     if (centre == NULL || polynomial == NULL)
         return lw_error_set(err, LW_ERR_MEMORY, "no memory for the polynomials of a plant");
     k->centre = centre;
@@ -278,9 +279,8 @@ lw_status lw__kernel_build(lw__arena *arena, int n, int m, const double *a, cons
 // ---- evaluation
 
 // out += matrix (n x n, by columns) v, summed over columns in order.
-static inline __attribute__((always_inline)) void add_product(int n, int columns,
-                                                              const double *matrix, const double *v,
-                                                              double *out)
+static inline __attribute__((always_inline)) void
+add_product(int n, int columns, const double *matrix, const double *v, double *out)
 {
     for (int j = 0; j < columns; j++)
         for (int i = 0; i < n; i++)

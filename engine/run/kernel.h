@@ -37,10 +37,10 @@ typedef struct lw__kernel {
     int n_grid;
     // Taylor pieces over (0, reach], or one piece over [0, q) of the ladder
     int n_pieces, degree;
-    lw_tick piece;                    // length
-    double per_half;                  // 2 / piece
-    const lw__transition *centre;     // n_pieces: to the middle of each
-    const double *polynomial;         // [piece][channel][power][n] in s = (tau - centre) / (piece/2)
+    lw_tick piece;                // length
+    double per_half;              // 2 / piece
+    const lw__transition *centre; // n_pieces: to the middle of each
+    const double *polynomial;     // [piece][channel][power][n] in s = (tau - centre) / (piece/2)
     // ladder
     int n_rungs;
     const lw__transition *rung; // lengths q 2^k

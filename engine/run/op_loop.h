@@ -122,8 +122,8 @@ LW__INLINE outcome latency_of(lw__lane *s, const lw__loop *l, int64_t job, lw_ti
         o.fate = e->fate;
         o.at = t + e->ticks;
         if (e->whole >= 0)
-            o.at = lw_period_at(l->adc->period, l->adc->offset,
-                                LW__I(l->adc->sample) - 1 + e->whole);
+            o.at =
+                lw_period_at(l->adc->period, l->adc->offset, LW__I(l->adc->sample) - 1 + e->whole);
     }
     if (y->by_chance)
         o.fate = draw_fate(s, y, o.fate, (uint32_t)job);

@@ -37,8 +37,7 @@ void lw__table_add(lw__lane *s, int record, const double *row)
     if (t->n_rows == t->room) {
         int64_t room = t->room == 0 ? 256 : 2 * t->room;
         room = room > r->limit ? r->limit : room;
-        double *grown =
-            lw__realloc(t->cell, sizeof(double) * (size_t)room * (size_t)r->n_columns);
+        double *grown = lw__realloc(t->cell, sizeof(double) * (size_t)room * (size_t)r->n_columns);
         if (grown == NULL) {
             lw__end_lane(s, LW_ERR_MEMORY, r->name, "no memory for the record");
             return;

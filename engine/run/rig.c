@@ -153,7 +153,6 @@ static lw_status no_memory(const char *origin, lw_error *err)
 
 // ---- names
 
-
 static int same(const char *a, const char *b)
 {
     return strcmp(a, b) == 0;
@@ -245,8 +244,8 @@ static lw_status check_period(const subject *s, const char *field, lw_period per
 
 // ---- plants and connections
 
-lw_status lw_rig_add_plant(lw_rig *rig, const char *origin, const char *name,
-                           const lw_plant *plant, lw_error *err)
+lw_status lw_rig_add_plant(lw_rig *rig, const char *origin, const char *name, const lw_plant *plant,
+                           lw_error *err)
 {
     TRY(check_new_name(rig, origin, "plant", name, err));
     lw_plant *own = NULL;
@@ -285,7 +284,9 @@ lw_status lw_rig_connect(lw_rig *rig, const char *origin, const char *from, cons
 
 lw_source_def lw_source_default(lw_source_kind kind)
 {
-    return (lw_source_def){.kind = kind, .every = {0, 1}, .period = {0, 1},
+    return (lw_source_def){.kind = kind,
+                           .every = {0, 1},
+                           .period = {0, 1},
                            .level = kind == LW_SOURCE_RAMP ? (double)NAN : 0.0};
 }
 
@@ -476,10 +477,8 @@ lw_status lw_rig_add_adc(lw_rig *rig, const lw_adc_def *def, lw_error *err)
 
 lw_dac_def lw_dac_default(void)
 {
-    return (lw_dac_def){.latch = {0, 1},
-                        .n_phases = 1,
-                        .quantiser = lw_quantiser_default(),
-                        .slew = (double)NAN};
+    return (lw_dac_def){
+        .latch = {0, 1}, .n_phases = 1, .quantiser = lw_quantiser_default(), .slew = (double)NAN};
 }
 
 static lw_status check_dac_latch(const subject *s, const lw_dac_def *def)
@@ -622,8 +621,8 @@ lw_status lw_rig_add_loop(lw_rig *rig, const lw_loop_def *def, lw_error *err)
     item.def.on = copy_text(&c, def->on);
     item.def.inputs = copy_wires(&c, def->n_inputs, def->inputs);
     item.def.outputs = copy_wires(&c, def->n_outputs, def->outputs);
-    item.def.latency.list = copy_bytes(&c, def->latency.list,
-                                       sizeof *def->latency.list * (size_t)def->latency.n_list);
+    item.def.latency.list =
+        copy_bytes(&c, def->latency.list, sizeof *def->latency.list * (size_t)def->latency.n_list);
     lw__loop_item *at = room((void **)&rig->loops, rig->n_loops, sizeof item);
     if (at == NULL || c.failed)
         return no_memory(def->origin, err);

@@ -45,8 +45,7 @@ static void start_plants(lw__lane *s, int W, int L)
         if (g->timer >= 0)
             LW__I(z->due + g->timer) = lw_period_at(g->grid, g->grid_offset, g->first);
         for (int k = 0; k < g->n_generators; k++)
-            LW__I(z->due + g->generators[k].timer) =
-                lw__source_change(g->generators[k].def, 0);
+            LW__I(z->due + g->generators[k].timer) = lw__source_change(g->generators[k].def, 0);
     }
 }
 
@@ -250,8 +249,8 @@ lw_status lw_run_status(const lw_run *run, int lane, lw_error *err)
     const lw__lane *s = &run->lanes[lane];
     if (s->status == LW_OK)
         return LW_OK;
-    return lw_error_set(err, s->status, "at %.12g s: \"%s\": %s", lw_tick_seconds(s->now),
-                        s->what, s->text);
+    return lw_error_set(err, s->status, "at %.12g s: \"%s\": %s", lw_tick_seconds(s->now), s->what,
+                        s->text);
 }
 
 double lw_run_read(const lw_run *run, int lane, lw_signal signal)

@@ -53,27 +53,27 @@ static dash begin_dash(lw__lane *s, const lw__sprint *c, lw_tick until)
     lw_tick other = others(s, c);
     lw_period period = c->adc->period;
     dash d = {.c = c,
-                  .x = &s->f[g->x],
-                  .u_anchor = &s->f[g->u_anchor],
-                  .u_now = &s->f[g->u_now],
-                  .outs = &s->f[l->outs],
-                  .flight_out = &s->f[l->flight_out],
-                  .flight_tick = &s->i[l->flight_tick],
-                  .flight_job = &s->i[l->flight_job],
-                  .mask = l->capacity - 1,
-                  .head = LW__I(l->head),
-                  .count = LW__I(l->count),
-                  .sample = LW__I(s->z->due + c->adc->timer),
-                  .arrive = LW__I(s->z->due + l->timer),
-                  .limit = other <= until ? other : until + 1,
-                  .k = LW__I(c->adc->sample),
-                  .job = LW__I(l->jobs),
-                  .stepped_at = LW__I(l->stepped_at),
-                  .anchor = LW__I(g->anchor),
-                  .n_in = l->n_in,
-                  .n_out = l->n_out,
-                  .other_inputs = g->n_u > 1,
-                  .whole = period.den == 1 && until < LW_TICK_MAX - period.num ? period.num : 0};
+              .x = &s->f[g->x],
+              .u_anchor = &s->f[g->u_anchor],
+              .u_now = &s->f[g->u_now],
+              .outs = &s->f[l->outs],
+              .flight_out = &s->f[l->flight_out],
+              .flight_tick = &s->i[l->flight_tick],
+              .flight_job = &s->i[l->flight_job],
+              .mask = l->capacity - 1,
+              .head = LW__I(l->head),
+              .count = LW__I(l->count),
+              .sample = LW__I(s->z->due + c->adc->timer),
+              .arrive = LW__I(s->z->due + l->timer),
+              .limit = other <= until ? other : until + 1,
+              .k = LW__I(c->adc->sample),
+              .job = LW__I(l->jobs),
+              .stepped_at = LW__I(l->stepped_at),
+              .anchor = LW__I(g->anchor),
+              .n_in = l->n_in,
+              .n_out = l->n_out,
+              .other_inputs = g->n_u > 1,
+              .whole = period.den == 1 && until < LW_TICK_MAX - period.num ? period.num : 0};
     for (int k = 0; k < l->n_in; k++)
         d.in[k] = l->inputs[k].at.kind == LW__SIGNAL_CELL ? &LW__F(l->inputs[k].at.index)
                                                           : &l->inputs[k].constant;
@@ -169,8 +169,8 @@ LW__INLINE lw_tick dash_latency(lw__lane *s, const lw__loop *l, int64_t job)
     const lw__latency *y = &l->latency;
     if (y->timing == NULL)
         return y->list[0].ticks;
-    double value = lw_timing_draw(y->timing, s->seed, s->run, (uint32_t)job, y->streams,
-                                  &s->f[l->memory]);
+    double value =
+        lw_timing_draw(y->timing, s->seed, s->run, (uint32_t)job, y->streams, &s->f[l->memory]);
     return (lw_tick)floor(value * y->scale + 0.5);
 }
 

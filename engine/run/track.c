@@ -303,7 +303,7 @@ static void open_window(lw__lane *s, const lw__track *t)
     int W = s->width, L = s->lane;
     LW__I(t->open) = 1;
     double wanted = lw__signal_value(s, &t->against), value = lw__signal_value(s, &t->of);
-    double base = !isnan(t->base)                               ? t->base
+    double base = !isnan(t->base)                                 ? t->base
                   : t->against_name != NULL && wanted != t->level ? wanted
                                                                   : value;
     *sum_of(s, t, LW__SUM_BASE) = base;

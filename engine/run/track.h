@@ -38,11 +38,11 @@ typedef enum lw__sum {
 } lw__sum;
 
 typedef struct lw__track {
-    const char *name;            // of the signal, for messages
-    lw__reference of, against;   // against: a constant where nothing is named
+    const char *name;          // of the signal, for messages
+    lw__reference of, against; // against: a constant where nothing is named
     const char *against_name;
-    double level;                // at the end; NAN: not known before the end
-    double base;                 // NAN: found when the window opens
+    double level; // at the end; NAN: not known before the end
+    double base;  // NAN: found when the window opens
     lw_tick from, until;
     int needs, timer;
     lw_tick piece; // longest stretch one polynomial serves

@@ -79,8 +79,7 @@ static lw_status check_record(const lw_record_def *def, lw_error *err)
     return LW_OK;
 }
 
-static lw_status add_record(lw_watch *watch, const lw_record_def *def, int is_events,
-                            lw_error *err)
+static lw_status add_record(lw_watch *watch, const lw_record_def *def, int is_events, lw_error *err)
 {
     int failed = 0;
     lw__record_item item = {*def, is_events};

@@ -63,13 +63,13 @@ static void modes_describe(const lw_timing *t, char *text, int size)
     char quiet[120], burst[120];
     name_of(t->a, quiet, sizeof quiet);
     name_of(t->b, burst, sizeof burst);
-    snprintf(text, (size_t)size, "quiet (%s) and burst (%s), entered with %.4g, left with %.4g a job",
-             quiet, burst, t->p[0], t->p[1]);
+    snprintf(text, (size_t)size,
+             "quiet (%s) and burst (%s), entered with %.4g, left with %.4g a job", quiet, burst,
+             t->p[0], t->p[1]);
 }
 
-static const lw__family modes_family = {"modes",         modes_draw,      NULL,
-                                        mixture_cdf,     mixture_density, mixture_moment,
-                                        modes_describe};
+static const lw__family modes_family = {"modes",         modes_draw,     NULL,          mixture_cdf,
+                                        mixture_density, mixture_moment, modes_describe};
 
 static lw_status check_chance(const char *name, double value, lw_error *err)
 {
@@ -142,13 +142,11 @@ static void affine_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "%.6g times (%s), shifted by %.6g s", t->p[0], inner, t->p[1]);
 }
 
-static const lw__family affine_family = {"affine",   affine_draw,    affine_quantile,
-                                         affine_cdf, affine_density, affine_moment,
-                                         affine_describe};
+static const lw__family affine_family = {"affine",       affine_draw,   affine_quantile, affine_cdf,
+                                         affine_density, affine_moment, affine_describe};
 // the same over a timing that has no quantile of its own
-static const lw__family affine_drawn_family = {"affine",   affine_draw,    NULL,
-                                               affine_cdf, affine_density, affine_moment,
-                                               affine_describe};
+static const lw__family affine_drawn_family = {
+    "affine", affine_draw, NULL, affine_cdf, affine_density, affine_moment, affine_describe};
 
 lw_status lw_timing_affine(const lw_timing *of, double factor, double shift, lw_timing **out,
                            lw_error *err)
@@ -160,8 +158,7 @@ lw_status lw_timing_affine(const lw_timing *of, double factor, double shift, lw_
     if (factor == 0 || of->lo == of->hi)
         return lw_timing_constant(factor * of->lo + shift, out, err);
     int has_quantile = of->family->quantile != NULL;
-    lw_timing *t =
-        lw__timing_node(has_quantile ? &affine_family : &affine_drawn_family, of, NULL);
+    lw_timing *t = lw__timing_node(has_quantile ? &affine_family : &affine_drawn_family, of, NULL);
     if (t != NULL) {
         t->p[0] = factor;
         t->p[1] = shift;
@@ -284,12 +281,11 @@ static void maximum_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "the larger of (%s) and (%s)", a, b);
 }
 
-static const lw__family maximum_family = {"maximum",       maximum_draw,   maximum_quantile,
+static const lw__family maximum_family = {"maximum",       maximum_draw,    maximum_quantile,
                                           maximum_cdf,     maximum_density, maximum_moment,
                                           maximum_describe};
-static const lw__family maximum_drawn_family = {"maximum",       maximum_draw,    NULL,
-                                                maximum_cdf,     maximum_density, maximum_moment,
-                                                maximum_describe};
+static const lw__family maximum_drawn_family = {
+    "maximum", maximum_draw, NULL, maximum_cdf, maximum_density, maximum_moment, maximum_describe};
 
 static int both_have_quantiles(const lw_timing *a, const lw_timing *b)
 {

@@ -75,8 +75,8 @@ static void constant_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "constant %.6g s", t->lo);
 }
 
-static const lw__family constant_family = {"constant",   constant_draw,   constant_quantile,
-                                           constant_cdf, no_density,      constant_moment,
+static const lw__family constant_family = {"constant",       constant_draw, constant_quantile,
+                                           constant_cdf,     no_density,    constant_moment,
                                            constant_describe};
 
 lw_status lw_timing_constant(double value, lw_timing **out, lw_error *err)
@@ -143,8 +143,8 @@ static void uniform_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "uniform %.6g to %.6g s", t->lo, t->hi);
 }
 
-static const lw__family uniform_family = {"uniform",   uniform_draw,    uniform_quantile,
-                                          uniform_cdf, uniform_density, moment_by_quantile,
+static const lw__family uniform_family = {"uniform",       uniform_draw,    uniform_quantile,
+                                          uniform_cdf,     uniform_density, moment_by_quantile,
                                           uniform_describe};
 
 lw_status lw_timing_uniform(double lo, double hi, lw_timing **out, lw_error *err)
@@ -234,12 +234,12 @@ static double normal_density(const lw_timing *t, double x)
 
 static void normal_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "normal, mean %.6g, deviation %.6g, cut to %.6g .. %.6g s", t->p[0],
-             t->p[1], t->lo, t->hi);
+    snprintf(text, (size_t)size, "normal, mean %.6g, deviation %.6g, cut to %.6g .. %.6g s",
+             t->p[0], t->p[1], t->lo, t->hi);
 }
 
-static const lw__family normal_family = {"normal",   draw_by_quantile, normal_quantile,
-                                         normal_cdf, normal_density,   moment_by_quantile,
+static const lw__family normal_family = {"normal",       draw_by_quantile, normal_quantile,
+                                         normal_cdf,     normal_density,   moment_by_quantile,
                                          normal_describe};
 
 lw_status lw_timing_normal(double mean, double deviation, double lo, double hi, lw_timing **out,
@@ -384,12 +384,12 @@ static double gumbel_density(const lw_timing *t, double x)
 
 static void gumbel_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "Gumbel, location %.6g, scale %.6g, cut to %.6g .. %.6g s", t->p[0],
-             t->p[1], t->lo, t->hi);
+    snprintf(text, (size_t)size, "Gumbel, location %.6g, scale %.6g, cut to %.6g .. %.6g s",
+             t->p[0], t->p[1], t->lo, t->hi);
 }
 
-static const lw__family gumbel_family = {"Gumbel",   draw_by_quantile, gumbel_quantile,
-                                         gumbel_cdf, gumbel_density,   moment_by_quantile,
+static const lw__family gumbel_family = {"Gumbel",       draw_by_quantile, gumbel_quantile,
+                                         gumbel_cdf,     gumbel_density,   moment_by_quantile,
                                          gumbel_describe};
 
 lw_status lw_timing_gumbel(double location, double scale, double lo, double hi, lw_timing **out,

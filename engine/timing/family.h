@@ -34,7 +34,7 @@ struct lw_timing {
     double p[6];            // parameters of the family
     double lo, hi;          // support
     lw_timing *a, *b;
-    int64_t every, phase;   // of stalls
+    int64_t every, phase; // of stalls
     int flag;
 };
 

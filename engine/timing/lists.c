@@ -72,8 +72,8 @@ static lw_status set_lists(lw_timing *t, int n, const double *value, int n_value
         t->weight[i] = i + 1 < n ? t->weight[i] / sum : 1;
     for (int i = 0; i < n_values; i++) {
         if (!isfinite(value[i]))
-            return lw_error_set(err, LW_ERR_NOT_FINITE,
-                                "value %d is %g; a finite number is wanted", i + 1, value[i]);
+            return lw_error_set(err, LW_ERR_NOT_FINITE, "value %d is %g; a finite number is wanted",
+                                i + 1, value[i]);
         t->value[i] = value[i];
     }
     t->n = n;
@@ -119,8 +119,8 @@ static void discrete_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "one of %d values, %.6g to %.6g s", t->n, t->lo, t->hi);
 }
 
-static const lw__family discrete_family = {"discrete",   draw_by_quantile, discrete_quantile,
-                                           discrete_cdf, no_density,       discrete_moment,
+static const lw__family discrete_family = {"discrete",       draw_by_quantile, discrete_quantile,
+                                           discrete_cdf,     no_density,       discrete_moment,
                                            discrete_describe};
 
 typedef struct weighted {
@@ -281,9 +281,8 @@ static void replay_describe(const lw_timing *t, char *text, int size)
              t->lo, t->hi, t->every ? "a start drawn once a run" : "the first on");
 }
 
-static const lw__family replay_family = {"replay",     replay_draw, NULL,
-                                         replay_share, no_density,  replay_moment,
-                                         replay_describe};
+static const lw__family replay_family = {"replay",   replay_draw,   NULL,           replay_share,
+                                         no_density, replay_moment, replay_describe};
 
 lw_status lw_timing_replay(int n, const double *value, int random_start, lw_timing **out,
                            lw_error *err)

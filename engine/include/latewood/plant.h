@@ -21,12 +21,12 @@ typedef struct lw_plant lw_plant;
 // Sizes and borrowed views of a plant's parts; valid as long as the plant.
 typedef struct lw_plant_view {
     int n_x, n_u, n_y;
-    const double *a;      // n_x x n_x
-    const double *b;      // n_x x n_u
-    const double *c;      // n_y x n_x
-    const double *d;      // n_y x n_u
-    const double *start;  // n_x, state at time zero
-    const double *delay;  // n_u, input delays [s], >= 0
+    const double *a;     // n_x x n_x
+    const double *b;     // n_x x n_u
+    const double *c;     // n_y x n_x
+    const double *d;     // n_y x n_u
+    const double *start; // n_x, state at time zero
+    const double *delay; // n_u, input delays [s], >= 0
     const char *const *state_names;
     const char *const *input_names;
     const char *const *output_names;
@@ -109,8 +109,7 @@ LW_API lw_status lw_plant_second_order(double gain, double natural_frequency, do
 LW_API lw_status lw_plant_winding(double resistance, double inductance, lw_plant **out,
                                   lw_error *err);
 LW_API lw_status lw_plant_dc_machine(const lw_dc_machine *p, lw_plant **out, lw_error *err);
-LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **out,
-                                         lw_error *err);
+LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **out, lw_error *err);
 
 // A copy of `plant` with an input delay of `seconds` >= 0 added to input `input`, with the state
 // at time zero replaced (n values), or with inputs, outputs, states renamed (NULL list: keep).
@@ -118,8 +117,8 @@ LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **
 //           or beyond the range of time; LW_ERR_SHAPE n is not the number of states
 LW_API lw_status lw_plant_delayed(const lw_plant *plant, const char *input, double seconds,
                                   lw_plant **out, lw_error *err);
-LW_API lw_status lw_plant_started(const lw_plant *plant, int n, const double *start,
-                                  lw_plant **out, lw_error *err);
+LW_API lw_status lw_plant_started(const lw_plant *plant, int n, const double *start, lw_plant **out,
+                                  lw_error *err);
 LW_API lw_status lw_plant_renamed(const lw_plant *plant, const char *const *state_names,
                                   const char *const *input_names, const char *const *output_names,
                                   lw_plant **out, lw_error *err);

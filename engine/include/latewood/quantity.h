@@ -1,10 +1,10 @@
 // Quantities: SI numbers or text with a unit ("50 us", "20 kHz", "2 mH", "0.05 N m/A", "37 %").
 //
 // Text is: a decimal number, an optional space, a unit. A unit is a product of unit names, each
-// with an optional SI prefix and an optional ^integer, joined by a space, `*` or a middle dot, with at most
-// one `/` followed by the divisor (a product). Names: s min h m g A K Hz N Pa J W V ohm (and the
-// Greek letter) H F C T Wb S rad deg rpm degC is not one; 1 stands for no unit.
-// Timing units of their own: "cycles" (of a core's clock), "%" (of a period, or a share),
+// with an optional SI prefix and an optional ^integer, joined by a space, `*` or a middle dot, with
+// at most one `/` followed by the divisor (a product). Names: s min h m g A K Hz N Pa J W V ohm
+// (and the Greek letter) H F C T Wb S rad deg rpm degC is not one; 1 stands for no unit. Timing
+// units of their own: "cycles" (of a core's clock), "%" (of a period, or a share),
 // "sample"/"samples" (of an adc's period). These take no prefix and stand alone.
 // Angles count as dimensionless radians; deg and rpm scale.
 #ifndef LATEWOOD_QUANTITY_H
@@ -18,10 +18,10 @@ extern "C" {
 #endif
 
 typedef enum lw_unit_kind {
-    LW_UNIT_SI,       // value is in SI base units, dimension says which
-    LW_UNIT_CYCLES,   // value counts cycles
-    LW_UNIT_PERCENT,  // value is the fraction: "37 %" gives 0.37
-    LW_UNIT_SAMPLES   // value counts samples
+    LW_UNIT_SI,      // value is in SI base units, dimension says which
+    LW_UNIT_CYCLES,  // value counts cycles
+    LW_UNIT_PERCENT, // value is the fraction: "37 %" gives 0.37
+    LW_UNIT_SAMPLES  // value counts samples
 } lw_unit_kind;
 
 // Exponents of m, kg, s, A, K.
@@ -30,10 +30,11 @@ typedef struct lw_dimension {
 } lw_dimension;
 
 typedef struct lw_quantity {
-    double value;  // nearest double to the exact decimal in SI
+    double value; // nearest double to the exact decimal in SI
     lw_unit_kind kind;
     lw_dimension dimension;
-    // The same value as an exact fraction num/den when it fits 63 bits each (den > 0), else den = 0.
+    // The same value as an exact fraction num/den when it fits 63 bits each (den > 0), else den =
+    // 0.
     int64_t num, den;
 } lw_quantity;
 

@@ -27,8 +27,8 @@ LW_API lw_tick lw_frozen_lasts(const lw_frozen *frozen);
 // The rig in words, one line at a time (no newline), in order: what it is made of, defaults taken,
 // roundings of more than a thousandth of a tick, write/read pairs at one tick and who sees what,
 // how each group is propagated. Stops early if `line` returns nonzero.
-LW_API void lw_frozen_describe(const lw_frozen *frozen, int (*line)(void *context, const char *text),
-                               void *context);
+LW_API void lw_frozen_describe(const lw_frozen *frozen,
+                               int (*line)(void *context, const char *text), void *context);
 
 // ---- the state block
 
@@ -43,9 +43,9 @@ typedef enum lw_slice_kind {
 
 // Element e of lane w stands at cell (offset + e) * width + w of the block's integers or doubles.
 typedef struct lw_slice {
-    const char *owner;  // name of the thing it belongs to
-    const char *name;   // what it holds
-    const char *unit;   // "" where none is known
+    const char *owner; // name of the thing it belongs to
+    const char *name;  // what it holds
+    const char *unit;  // "" where none is known
     lw_slice_kind kind;
     int is_integer;
     int64_t offset, count;

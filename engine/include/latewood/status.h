@@ -26,7 +26,7 @@ extern "C" {
 #endif
 
 // X(name, value, text): code, its value, and what it means.
-#define LW_STATUS_LIST(X)                                                                         \
+#define LW_STATUS_LIST(X)                                                                          \
     X(LW_STOPPED, 1, "a stop condition held")                                                      \
     X(LW_OK, 0, "done")                                                                            \
     X(LW_ERR_MEMORY, -1, "memory could not be had")                                                \
@@ -54,8 +54,8 @@ typedef enum lw_status {
 #define LW_ERROR_TEXT 480
 
 typedef struct lw_error {
-    lw_status status;          // LW_OK until something failed
-    char text[LW_ERROR_TEXT];  // NUL-terminated UTF-8, truncated at a character boundary
+    lw_status status;         // LW_OK until something failed
+    char text[LW_ERROR_TEXT]; // NUL-terminated UTF-8, truncated at a character boundary
 } lw_error;
 
 // Name of a status as written in the header ("LW_ERR_UNIT"), and its meaning. Never NULL.

@@ -12,7 +12,7 @@ extern "C" {
 typedef int64_t lw_tick;
 
 #define LW_TICKS_PER_SECOND INT64_C(1000000000000)
-#define LW_TICK_MAX INT64_C(9000000000000000000)  // 104 days; the rest is headroom for sums
+#define LW_TICK_MAX INT64_C(9000000000000000000) // 104 days; the rest is headroom for sums
 #define LW_NEVER INT64_MAX
 
 // A period in ticks as the fraction num/den, num > 0, den > 0, in lowest terms.

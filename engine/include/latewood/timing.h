@@ -15,8 +15,8 @@ extern "C" {
 
 typedef struct lw_timing lw_timing;
 
-LW_API lw_timing *lw_timing_hold(const lw_timing *timing);  // one more reference
-LW_API void lw_timing_free(lw_timing *timing);              // one less; NULL is allowed
+LW_API lw_timing *lw_timing_hold(const lw_timing *timing); // one more reference
+LW_API void lw_timing_free(lw_timing *timing);             // one less; NULL is allowed
 
 // Families. Errors name parameter, value and range. All in seconds; values may be negative unless
 // the user of the timing forbids it (lw_timing_support tells).
@@ -83,7 +83,7 @@ LW_API double lw_timing_quantile(const lw_timing *t, const double *u);
 // weights 1, exact expectation for polynomials of degree 2 n - 1 where the family allows it.
 LW_API void lw_timing_support(const lw_timing *t, double *lo, double *hi);
 LW_API double lw_timing_cdf(const lw_timing *t, double x);
-LW_API double lw_timing_density(const lw_timing *t, double x);  // 0 at atoms
+LW_API double lw_timing_density(const lw_timing *t, double x); // 0 at atoms
 LW_API double lw_timing_median(const lw_timing *t);
 LW_API double lw_timing_moment(const lw_timing *t, int order);
 LW_API lw_status lw_timing_nodes(const lw_timing *t, int n, double *x, double *weight,

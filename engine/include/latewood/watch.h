@@ -24,7 +24,7 @@ typedef struct lw_record_def {
     const lw_tick *at;
     lw_period every;
     lw_tick from, until;
-    int64_t limit;  // rows; reaching it ends the run with LW_ERR_CAPACITY. 0: 1,000,000
+    int64_t limit; // rows; reaching it ends the run with LW_ERR_CAPACITY. 0: 1,000,000
 } lw_record_def;
 LW_API lw_status lw_watch_record(lw_watch *watch, const lw_record_def *def, lw_error *err);
 
@@ -40,26 +40,26 @@ LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char
 
 // X(name, in words)
 #define LW_METRIC_LIST(X)                                                                          \
-    X(MAXIMUM, "maximum")                  /* largest value of the signal */                       \
+    X(MAXIMUM, "maximum") /* largest value of the signal */                                        \
     X(MINIMUM, "minimum")                                                                          \
-    X(PEAK, "peak")                        /* extreme farthest beyond the level, as a value */     \
-    X(PEAK_TIME, "peak time")              /* its instant since `from` */                          \
-    X(OVERSHOOT, "overshoot")              /* (peak - level) / |level - base|, at least 0 */       \
-    X(SETTLING, "settling time")           /* since `from`; NAN: outside the band at the end */    \
-    X(RISE, "rise time")                   /* low to high share of base..level; NAN: not reached */\
+    X(PEAK, "peak")              /* extreme farthest beyond the level, as a value */               \
+    X(PEAK_TIME, "peak time")    /* its instant since `from` */                                    \
+    X(OVERSHOOT, "overshoot")    /* (peak - level) / |level - base|, at least 0 */                 \
+    X(SETTLING, "settling time") /* since `from`; NAN: outside the band at the end */              \
+    X(RISE, "rise time")         /* low to high share of base..level; NAN: not reached */          \
     X(MEAN, "mean")                                                                                \
     X(RMS, "rms")                                                                                  \
-    X(FINAL, "final")                      /* value at the end of the window */                    \
-    X(IAE, "iae")                          /* integrals of the error against `against` */          \
+    X(FINAL, "final") /* value at the end of the window */                                         \
+    X(IAE, "iae")     /* integrals of the error against `against` */                               \
     X(ISE, "ise")                                                                                  \
-    X(ITAE, "itae")                        /* time counts since `from` */                          \
+    X(ITAE, "itae") /* time counts since `from` */                                                 \
     X(ERROR_RMS, "error rms")                                                                      \
-    X(ERROR_PEAK, "error peak")            /* largest |error| */                                   \
-    X(SATURATION_TIME, "saturation time")  /* of a dac [s] */                                      \
+    X(ERROR_PEAK, "error peak")                 /* largest |error| */                              \
+    X(SATURATION_TIME, "saturation time")       /* of a dac [s] */                                 \
     X(LATENCY_PERCENTILE, "latency percentile") /* of a loop [s]; histogram of 1000 cells */       \
     X(LATENCY_MEAN, "latency mean")                                                                \
     X(LATENCY_MAXIMUM, "latency maximum")                                                          \
-    X(LOST, "lost")                        /* writes of a loop lost, samples missed: counts */     \
+    X(LOST, "lost") /* writes of a loop lost, samples missed: counts */                            \
     X(MISSED, "missed")
 
 typedef enum lw_metric_kind {
@@ -76,15 +76,15 @@ LW_API int lw_metric_count(void);
 typedef struct lw_metric_def {
     const char *origin, *name;
     lw_metric_kind kind;
-    const char *of;       // a signal; for saturation time a dac; for latency.. a loop
-    const char *against;  // signal the error is taken against (a source or a value), or NULL
-    double level;         // level where against is NULL; NAN: none given
-    double base;  // level at the start; NAN: `against` at `from`, or the signal's value at `from`
-                  // where that equals the level
-    double band;  // share of |level - base| for settling (default 0.02)
-    double low, high;      // shares for rise (default 0.1, 0.9)
-    double share;          // of a percentile, in (0, 1)
-    lw_tick from, until;   // window; LW_NEVER: the end of the run
+    const char *of;      // a signal; for saturation time a dac; for latency.. a loop
+    const char *against; // signal the error is taken against (a source or a value), or NULL
+    double level;        // level where against is NULL; NAN: none given
+    double base; // level at the start; NAN: `against` at `from`, or the signal's value at `from`
+                 // where that equals the level
+    double band; // share of |level - base| for settling (default 0.02)
+    double low, high;    // shares for rise (default 0.1, 0.9)
+    double share;        // of a percentile, in (0, 1)
+    lw_tick from, until; // window; LW_NEVER: the end of the run
 } lw_metric_def;
 LW_API lw_metric_def lw_metric_default(lw_metric_kind kind);
 LW_API lw_status lw_watch_metric(lw_watch *watch, const lw_metric_def *def, lw_error *err);
