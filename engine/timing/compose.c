@@ -5,6 +5,8 @@
 
 #include "timing/family.h"
 
+#include "timing/quadrature.h"
+
 #include <math.h>
 #include <stdio.h>
 
@@ -250,29 +252,6 @@ static double maximum_density(const lw_timing *t, double x)
            lw_timing_cdf(t->b, x) * lw_timing_density(t->a, x);
 }
 
-typedef struct survival {
-    const lw_timing *t;
-    int order;
-} survival;
-
-static double survival_term(const void *context, double x)
-{
-    const survival *c = context;
-    double y = c->order * (1 - lw_timing_cdf(c->t, x));
-    for (int k = 1; k < c->order; k++)
-        y *= x;
-    return y;
-}
-
-static double maximum_moment(const lw_timing *t, int order)
-{
-    survival c = {t, order};
-    double first = 1;
-    for (int k = 0; k < order; k++)
-        first *= t->lo;
-    return first + lw__timing_integral(survival_term, &c, t->lo, t->hi, 256);
-}
-
 static void maximum_describe(const lw_timing *t, char *text, int size)
 {
     char a[120], b[120];
@@ -282,10 +261,11 @@ static void maximum_describe(const lw_timing *t, char *text, int size)
 }
 
 static const lw__family maximum_family = {"maximum",       maximum_draw,    maximum_quantile,
-                                          maximum_cdf,     maximum_density, maximum_moment,
+                                          maximum_cdf,     maximum_density, lw__quadrature_moment,
                                           maximum_describe};
 static const lw__family maximum_drawn_family = {
-    "maximum", maximum_draw, NULL, maximum_cdf, maximum_density, maximum_moment, maximum_describe};
+    "maximum",       maximum_draw, NULL, maximum_cdf, maximum_density, lw__quadrature_moment,
+    maximum_describe};
 
 static int both_have_quantiles(const lw_timing *a, const lw_timing *b)
 {
@@ -334,21 +314,9 @@ static double stall_draw(const lw_timing *t, lw__draw_at *at)
     return stalls ? usual + stall : usual;
 }
 
-typedef struct stalled {
-    const lw_timing *t;
-    double x;
-} stalled;
-
-static double stalled_term(const void *context, double u)
-{
-    const stalled *c = context;
-    return lw_timing_cdf(c->t->b, c->x - lw__timing_invert(c->t->a, u));
-}
-
 static double stall_cdf(const lw_timing *t, double x)
 {
-    stalled c = {t, x};
-    return mixed(t->p[2], lw_timing_cdf(t->a, x), lw__timing_integral(stalled_term, &c, 0, 1, 64));
+    return mixed(t->p[2], lw_timing_cdf(t->a, x), sum_cdf(t, x));
 }
 
 static double stall_moment(const lw_timing *t, int order)

@@ -80,8 +80,10 @@ typedef struct points {
 static int discretise(const lw_timing *t, points *out)
 {
     double node[NODES], weight[NODES], lo = t->lo, span = t->hi - t->lo;
-    int lists = t->value != NULL && t->weight != NULL && t->flag == 0 && t->a == NULL;
-    out->n = lists ? t->n : PIECES * 4 * NODES;
+    int has_list = t->value != NULL && t->weight != NULL && t->a == NULL;
+    int lists = has_list && t->flag == 0, cells = has_list && t->flag == 1;
+    int pieces = cells ? t->n : PIECES * 4; // the cells of a histogram are its pieces
+    out->n = lists ? t->n : pieces * NODES;
     out->x = lw__alloc(sizeof(double) * 2 * (size_t)out->n);
     if (out->x == NULL)
         return 0;
@@ -93,8 +95,9 @@ static int discretise(const lw_timing *t, points *out)
     if (lists)
         return 1;
     lw__gauss_legendre(NODES, node, weight);
-    for (int p = 0; p < PIECES * 4; p++) {
-        double h = span / (PIECES * 4), from = lo + p * h;
+    for (int p = 0; p < pieces; p++) {
+        double from = cells ? t->value[p] : lo + p * (span / pieces);
+        double h = cells ? t->value[p + 1] - from : span / pieces;
         double mass = lw_timing_cdf(t, from + h) - (p > 0 ? lw_timing_cdf(t, from) : 0), total = 0;
         for (int i = 0; i < NODES; i++) {
             double x = from + h * (0.5 + 0.5 * node[i]);

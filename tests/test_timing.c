@@ -1,0 +1,412 @@
+// Timings: each family's quantile, cdf, density and moments against one another, closed forms and
+// GSL; draws by address; lists, files and compositions.
+
+#include "suite.h"
+
+#include "base/alloc.h"
+
+#include <gsl/gsl_cdf.h>
+#include <gsl/gsl_integration.h>
+#include <latewood/timing.h>
+#include <stdio.h>
+#include <string.h>
+
+#define OK(call)                                                                                   \
+    do {                                                                                           \
+        lw_error err_ = {0}, *e = &err_;                                                           \
+        lw_status status_ = (call);                                                                \
+        ck_assert_msg(status_ == LW_OK, "%s: %s", #call, err_.text);                               \
+        (void)e;                                                                                   \
+    } while (0)
+
+enum { N_FAMILIES = 8 };
+
+// One of each family with a single uniform a draw.
+static lw_timing *family(int i)
+{
+    static const double edges[] = {4, 8, 20, 90}, weights[] = {5, 2, 1};
+    lw_timing *t = NULL;
+    const double none = (double)NAN;
+    switch (i) {
+    case 0:
+        OK(lw_timing_uniform(3, 11, &t, e));
+        break;
+    case 1:
+        OK(lw_timing_triangular(2, 3, 9, &t, e));
+        break;
+    case 2:
+        OK(lw_timing_normal(30, 6, none, none, &t, e));
+        break;
+    case 3:
+        OK(lw_timing_log_normal(12, 0.4, 4, 200, &t, e));
+        break;
+    case 4:
+        OK(lw_timing_exponential(5, 11, none, &t, e));
+        break;
+    case 5:
+        OK(lw_timing_gumbel(25, 3, none, none, &t, e));
+        break;
+    case 6:
+        OK(lw_timing_histogram(3, edges, weights, &t, e));
+        break;
+    default:
+        OK(lw_timing_normal(1, 2, 0, 1.5, &t, e)); // cut hard on both sides
+    }
+    return t;
+}
+
+// ---- every family
+
+START_TEST(quantile_is_the_inverse_of_the_cdf)
+{
+    lw_timing *t = family(_i);
+    double lo, hi, before = -1e300;
+    lw_timing_support(t, &lo, &hi);
+    for (int k = 1; k < 200; k++) {
+        double u = k / 200.0, x = lw_timing_quantile(t, &u);
+        ck_assert(x >= lo && x <= hi && x > before);
+        ck_near(lw_timing_cdf(t, x), u, 1e-12, 1);
+        before = x;
+    }
+    const double half = 0.5;
+    ck_assert(lw_timing_median(t) == lw_timing_quantile(t, &half));
+    ck_assert(lw_timing_cdf(t, lo - 1) == 0 && lw_timing_cdf(t, hi) == 1);
+    lw_timing_free(t);
+}
+END_TEST
+
+static double density(double x, void *t)
+{
+    return lw_timing_density(t, x);
+}
+
+typedef struct power {
+    const lw_timing *t;
+    int n;
+} power;
+
+static double weighted_power(double x, void *context)
+{
+    const power *p = context;
+    return pow(x, p->n) * lw_timing_density(p->t, x);
+}
+
+static double integral(gsl_function f, double lo, double hi)
+{
+    gsl_integration_workspace *w = gsl_integration_workspace_alloc(2000);
+    double value, error;
+    gsl_integration_qag(&f, lo, hi, 0, 1e-11, 2000, GSL_INTEG_GAUSS61, w, &value, &error);
+    gsl_integration_workspace_free(w);
+    return value;
+}
+
+// GSL's adaptive integration as reference library.
+START_TEST(density_integrates_to_the_cdf_and_moments_agree)
+{
+    lw_timing *t = family(_i);
+    double lo, hi;
+    lw_timing_support(t, &lo, &hi);
+    for (double part = 0.1; part < 1; part += 0.2) {
+        double x = lo + part * (hi - lo);
+        ck_near(integral((gsl_function){density, t}, lo, x), lw_timing_cdf(t, x), 1e-7, 1);
+    }
+    for (int n = 1; n <= 4; n++) {
+        power p = {t, n};
+        ck_near(lw_timing_moment(t, n), integral((gsl_function){weighted_power, &p}, lo, hi), 1e-7,
+                0);
+    }
+    lw_timing_free(t);
+}
+END_TEST
+
+START_TEST(nodes_are_exact_for_polynomials)
+{
+    lw_timing *t = family(_i);
+    double x[3], w[3], sum = 0;
+    OK(lw_timing_nodes(t, 3, x, w, e));
+    for (int i = 0; i < 3; i++)
+        sum += w[i];
+    ck_near(sum, 1, 1e-12, 0);
+    for (int n = 1; n <= 4; n++) {
+        double mean = 0;
+        for (int i = 0; i < 3; i++)
+            mean += w[i] * pow(x[i], n);
+        ck_near(mean, lw_timing_moment(t, n), 1e-7, 0); // the discrete version the nodes come from
+    }
+    lw_timing_free(t);
+}
+END_TEST
+
+static double largest_distance(const lw_timing *of, const lw_timing *against, int n)
+{
+    const uint32_t stream = lw_stream("test.takes");
+    static double x[4000];
+    double worst = 0;
+    for (int k = 0; k < n; k++)
+        x[k] = lw_timing_draw(of, 7, 1, (uint32_t)k, &stream, NULL);
+    for (int k = 0; k < n; k++) {
+        int below = 0;
+        for (int j = 0; j < n; j++)
+            below += x[j] <= x[k];
+        worst = fmax(worst, fabs((double)below / n - lw_timing_cdf(against, x[k])));
+    }
+    return worst;
+}
+
+START_TEST(draws_follow_the_cdf)
+{
+    enum { N = 4000 };
+    lw_timing *t = family(_i), *other = NULL;
+    // Kolmogorov-Smirnov: 1.95 / sqrt(n) is passed by chance once in a thousand (from memory)
+    ck_assert(largest_distance(t, t, N) < 1.95 / sqrt(N));
+    OK(lw_timing_affine(t, 1.1, 0, &other, e)); // ten percent off is seen
+    ck_assert(largest_distance(t, other, N) > 1.95 / sqrt(N));
+    lw_timing_free(t);
+    lw_timing_free(other);
+}
+END_TEST
+
+// ---- against GSL's untruncated families
+
+START_TEST(wide_cuts_give_the_whole_family)
+{
+    lw_timing *t = NULL;
+    OK(lw_timing_normal(2, 3, 2 - 3 * 8, 2 + 3 * 8, &t, e));
+    for (double x = -10; x < 14; x += 0.5)
+        ck_near(lw_timing_cdf(t, x), gsl_cdf_gaussian_P(x - 2, 3), 1e-13, 1);
+    lw_timing_free(t);
+    OK(lw_timing_exponential(1, 4, 200, &t, e));
+    for (double x = 1; x < 50; x += 0.7)
+        ck_near(lw_timing_cdf(t, x), gsl_cdf_exponential_P(x - 1, 4), 1e-13, 1);
+    lw_timing_free(t);
+    OK(lw_timing_log_normal(exp(0.5), 0.7, 0, 1e6, &t, e));
+    for (double x = 0.05; x < 30; x *= 1.3)
+        ck_near(lw_timing_cdf(t, x), gsl_cdf_lognormal_P(x, 0.5, 0.7), 1e-13, 1);
+    lw_timing_free(t);
+    OK(lw_timing_gumbel(2, 3, -20, 200, &t, e));
+    for (double x = -8; x < 40; x += 0.9)
+        ck_near(lw_timing_cdf(t, x), gsl_cdf_gumbel1_P(x, 1 / 3.0, exp(2 / 3.0)), 1e-13, 1);
+    lw_timing_free(t);
+}
+END_TEST
+
+// ---- addresses
+
+START_TEST(a_draw_depends_on_its_address_alone)
+{
+    lw_timing *t = family(2);
+    const uint32_t here = lw_stream("a.takes"), there = lw_stream("b.takes");
+    double first = lw_timing_draw(t, 1, 2, 3, &here, NULL);
+    for (uint32_t job = 0; job < 50; job++)
+        lw_timing_draw(t, 1, 2, job, &there, NULL);
+    ck_assert(lw_timing_draw(t, 1, 2, 3, &here, NULL) == first);
+    ck_assert(lw_timing_draw(t, 1, 2, 4, &here, NULL) != first);
+    ck_assert(lw_timing_draw(t, 1, 3, 3, &here, NULL) != first);
+    ck_assert(lw_timing_draw(t, 2, 2, 3, &here, NULL) != first);
+    ck_assert(lw_timing_draw(t, 1, 2, 3, &there, NULL) != first);
+    lw_timing_free(t);
+}
+END_TEST
+
+// ---- lists
+
+START_TEST(replay_gives_its_list_in_order)
+{
+    const double list[] = {5, 1, 4};
+    const uint32_t stream = 9;
+    lw_timing *t = NULL;
+    int seen = 0;
+    OK(lw_timing_replay(3, list, 0, &t, e));
+    for (uint32_t job = 0; job < 10; job++)
+        ck_assert(lw_timing_draw(t, 1, 1, job, NULL, NULL) == list[job % 3]);
+    ck_assert_int_eq(lw_timing_n_streams(t), 0);
+    ck_near(lw_timing_moment(t, 2), (25 + 1 + 16) / 3.0, 1e-15, 0);
+    lw_timing_free(t);
+    OK(lw_timing_replay(3, list, 1, &t, e));
+    for (uint64_t run = 0; run < 40; run++) {
+        int start = 0;
+        while (lw_timing_draw(t, 1, run, 0, &stream, NULL) != list[start])
+            start++;
+        seen |= 1 << start;
+        for (uint32_t job = 0; job < 7; job++)
+            ck_assert(lw_timing_draw(t, 1, run, job, &stream, NULL) ==
+                      list[(start + (int)job) % 3]);
+    }
+    ck_assert_int_eq(seen, 7); // every start comes up in forty runs
+    lw_timing_free(t);
+}
+END_TEST
+
+static lw_status from_file(const char *text, lw_timing **t, lw_error *err, char *path, size_t size)
+{
+    snprintf(path, size, "%s/timing_%d.txt", getenv("TMPDIR") != NULL ? getenv("TMPDIR") : "/tmp",
+             (int)strlen(text));
+    FILE *file = fopen(path, "wb");
+    ck_assert_ptr_nonnull(file);
+    fputs(text, file);
+    fclose(file);
+    lw_status status = lw_timing_replay_file(path, 1e-6, 0, t, err);
+    remove(path);
+    return status;
+}
+
+START_TEST(recordings_are_read_with_their_quirks)
+{
+    char path[300], want[400];
+    lw_timing *t = NULL;
+    lw_error err;
+    ck_assert_int_eq(from_file("# us\r\n\r\n 12.5\r\n; note\n3e1\n\t7 \n8", &t, &err, path, 300),
+                     LW_OK);
+    ck_assert(lw_timing_draw(t, 1, 1, 1, NULL, NULL) == 3e1 * 1e-6);
+    ck_assert(lw_timing_draw(t, 1, 1, 3, NULL, NULL) == 8 * 1e-6);
+    lw_timing_free(t);
+    ck_assert_int_eq(from_file("1\n2\nthree\n", &t, &err, path, 300), LW_ERR_INPUT);
+    snprintf(want, sizeof want, "%s:3: \"three\" is no duration; one number a line is wanted", path);
+    ck_assert_str_eq(err.text, want);
+    ck_assert_int_eq(from_file("# nothing\n", &t, &err, path, 300), LW_ERR_INPUT);
+    ck_assert_int_eq(from_file("1 2\n", &t, &err, path, 300), LW_ERR_INPUT);
+    ck_assert_int_eq(from_file("inf\n", &t, &err, path, 300), LW_ERR_INPUT);
+    ck_assert_int_eq(lw_timing_replay_file("/nonexistent", 1, 0, &t, &err), LW_ERR_INPUT);
+    ck_assert_int_eq(lw_timing_replay_file("/", 1, 0, &t, &err), LW_ERR_INPUT);
+}
+END_TEST
+
+// ---- compositions
+
+START_TEST(modes_switch_as_often_as_stated)
+{
+    enum { N = 200000 };
+    lw_timing *quiet = NULL, *burst = NULL, *t = NULL;
+    const uint32_t stream = 5;
+    double state = 0;
+    int bursts = 0, entered = 0, before = 0;
+    OK(lw_timing_constant(1, &quiet, e));
+    OK(lw_timing_constant(9, &burst, e));
+    OK(lw_timing_modes(quiet, burst, 0.02, 0.1, &t, e));
+    for (uint32_t job = 0; job < N; job++) {
+        int in_burst = lw_timing_draw(t, 3, 0, job, &stream, &state) == 9;
+        bursts += in_burst;
+        entered += in_burst && !before;
+        before = in_burst;
+    }
+    // long-run share enter / (enter + leave) = 1/6, length of a burst 1 / leave = 10
+    ck_assert(fabs((double)bursts / N - 1 / 6.0) < 0.01);
+    ck_assert(fabs((double)bursts / entered - 10) < 0.5);
+    ck_near(lw_timing_moment(t, 1), 1 + 8 / 6.0, 1e-15, 0);
+    lw_timing_free(t);
+    lw_timing_free(quiet);
+    lw_timing_free(burst);
+}
+END_TEST
+
+START_TEST(stalls_come_when_stated)
+{
+    lw_timing *usual = NULL, *stall = NULL, *t = NULL;
+    const uint32_t stream = 5;
+    OK(lw_timing_constant(1, &usual, e));
+    OK(lw_timing_constant(50, &stall, e));
+    OK(lw_timing_stall(usual, stall, 0, 7, 3, &t, e));
+    for (uint32_t job = 0; job < 40; job++)
+        ck_assert(lw_timing_draw(t, 1, 1, job, &stream, NULL) == (job % 7 == 3 ? 51 : 1));
+    lw_timing_free(t);
+    OK(lw_timing_stall(usual, stall, 0.01, 0, 0, &t, e));
+    int stalls = 0;
+    for (uint32_t job = 0; job < 100000; job++)
+        stalls += lw_timing_draw(t, 1, 1, job, &stream, NULL) == 51;
+    ck_assert(abs(stalls - 1000) < 130); // 4 standard deviations
+    lw_timing_free(t);
+    lw_timing_free(usual);
+    lw_timing_free(stall);
+}
+END_TEST
+
+START_TEST(sums_maxima_and_scales_have_the_moments_they_must)
+{
+    lw_timing *a = family(0), *b = NULL, *t = NULL;
+    double lo, hi;
+    OK(lw_timing_uniform(1, 2, &b, e));
+    OK(lw_timing_sum(a, b, &t, e));
+    ck_near(lw_timing_moment(t, 1), 7 + 1.5, 1e-14, 0);
+    double variance = lw_timing_moment(t, 2) - pow(lw_timing_moment(t, 1), 2);
+    ck_near(variance, 64 / 12.0 + 1 / 12.0, 1e-11, 0);
+    // a trapezoid: F(4.5) = (half a unit beyond the slope) / 8
+    ck_near(lw_timing_cdf(t, 5.5), (5.5 - 4.5) / 8, 1e-9, 1);
+    lw_timing_support(t, &lo, &hi);
+    ck_assert(lo == 4 && hi == 13 && lw_timing_n_streams(t) == 2);
+    lw_timing_free(t);
+    OK(lw_timing_maximum(b, b, &t, e));
+    ck_near(lw_timing_moment(t, 1), 1 + 2 / 3.0, 1e-12, 0); // the larger of two uniforms
+    lw_timing_free(t);
+    OK(lw_timing_affine(b, -2, 10, &t, e));
+    lw_timing_support(t, &lo, &hi);
+    ck_assert(lo == 6 && hi == 8);
+    ck_near(lw_timing_cdf(t, 6.5), 0.25, 1e-15, 1);
+    lw_timing_free(t);
+    lw_timing_free(a);
+    lw_timing_free(b);
+}
+END_TEST
+
+// ---- refusals
+
+START_TEST(wrong_parameters_are_named)
+{
+    lw_timing *t = NULL;
+    lw_error err;
+    ck_assert_int_eq(lw_timing_uniform(3, 2, &t, &err), LW_ERR_ARGUMENT);
+    ck_assert_str_eq(err.text, "hi is 2; a finite number, not below lo, is wanted");
+    ck_assert_int_eq(lw_timing_normal(0, -1, (double)NAN, (double)NAN, &t, &err), LW_ERR_ARGUMENT);
+    ck_assert_str_eq(err.text, "deviation is -1; permitted from 0 on");
+    ck_assert_int_eq(lw_timing_triangular(0, 5, 2, &t, &err), LW_ERR_ARGUMENT);
+    ck_assert_str_eq(err.text, "mode is 5; permitted from lo to hi");
+    const double weights[] = {1, -1};
+    ck_assert_int_eq(lw_timing_discrete(2, weights, weights, &t, &err), LW_ERR_ARGUMENT);
+    ck_assert_str_eq(err.text, "weight 2 is -1; permitted from 0 on");
+    ck_assert_int_eq(lw_timing_constant((double)INFINITY, &t, &err), LW_ERR_ARGUMENT);
+}
+END_TEST
+
+START_TEST(failed_allocations_are_told)
+{
+    const double list[] = {3, 1, 2};
+    int failures = 0;
+    for (long n = 1;; n++) {
+        lw_timing *t = NULL;
+        lw_error err;
+        lw__alloc_fail_after(n);
+        lw_status status = lw_timing_discrete(3, list, NULL, &t, &err);
+        lw__alloc_fail_after(-1);
+        lw_timing_free(t);
+        if (status == LW_OK)
+            break;
+        ck_assert_int_eq(status, LW_ERR_MEMORY);
+        failures++;
+    }
+    ck_assert_int_ge(failures, 3);
+}
+END_TEST
+
+int main(void)
+{
+    Suite *suite = suite_create("timing");
+    TCase *families = tcase_create("families");
+    tcase_set_timeout(families, 60);
+    tcase_add_loop_test(families, quantile_is_the_inverse_of_the_cdf, 0, N_FAMILIES);
+    tcase_add_loop_test(families, density_integrates_to_the_cdf_and_moments_agree, 0, N_FAMILIES);
+    tcase_add_loop_test(families, nodes_are_exact_for_polynomials, 0, N_FAMILIES);
+    tcase_add_loop_test(families, draws_follow_the_cdf, 0, N_FAMILIES);
+    tcase_add_test(families, wide_cuts_give_the_whole_family);
+    suite_add_tcase(suite, families);
+    TCase *rest = tcase_create("lists and compositions");
+    tcase_set_timeout(rest, 60);
+    tcase_add_test(rest, a_draw_depends_on_its_address_alone);
+    tcase_add_test(rest, replay_gives_its_list_in_order);
+    tcase_add_test(rest, recordings_are_read_with_their_quirks);
+    tcase_add_test(rest, modes_switch_as_often_as_stated);
+    tcase_add_test(rest, stalls_come_when_stated);
+    tcase_add_test(rest, sums_maxima_and_scales_have_the_moments_they_must);
+    tcase_add_test(rest, wrong_parameters_are_named);
+    tcase_add_test(rest, failed_allocations_are_told);
+    suite_add_tcase(suite, rest);
+    return run_suite(suite);
+}
