@@ -88,10 +88,13 @@ static int host_err(lua_State *L)
     return put(L, stderr);
 }
 
-static const luaL_Reg host[] = {{"load", host_load},     {"write", host_write},
+static const luaL_Reg host[] = {{"load", host_load},
+                                {"write", host_write},
                                 {"make_folder", host_make_folder},
-                                {"exists", host_exists}, {"out", host_out},
-                                {"err", host_err},       {NULL, NULL}};
+                                {"exists", host_exists},
+                                {"out", host_out},
+                                {"err", host_err},
+                                {NULL, NULL}};
 
 // ---- main
 

@@ -51,8 +51,8 @@ char *lw__program_read(const char *path, size_t *n_bytes, int *missing, char *wh
         return NULL;
     }
     if (!S_ISREG(about.st_mode)) {
-        reason(why, size, path, S_ISDIR(about.st_mode) ? "is a folder; a file is wanted"
-                                                       : "is no regular file");
+        reason(why, size, path,
+               S_ISDIR(about.st_mode) ? "is a folder; a file is wanted" : "is no regular file");
         return NULL;
     }
     FILE *file = fopen(path, "rb");

@@ -28,7 +28,7 @@ lw_status lw__fail_at(const char *origin, lw_error *err, lw_status status, const
 
 lw_status lw__blame(const char *origin, lw_error *err, lw_status status)
 {
-    if (origin != NULL && status < 0)
+    if (origin != NULL && origin[0] != 0 && status < 0)
         lw_error_prefix(err, "%s: ", origin);
     return status;
 }

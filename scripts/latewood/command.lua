@@ -62,17 +62,19 @@ what was rounded, and who sees what at one instant. Runs nothing.
   --json         print the lines as JSON (schema latewood-describe-1)
 ]],
   new = [[
-usage: latewood new DIR
+usage: latewood new DIR [--json]
 
 Writes study.lua, README.md and .luarc.json into DIR, which is made if it is not there. Files that
 exist are left alone, and nothing is written then.
+
+  --json         print what was written as JSON (schema latewood-new-1)
 ]],
 }
 
 local takes = { run = { ["--out"] = true, ["--runs"] = true, ["--seed"] = true },
   describe = {}, new = {} }
 local flags = { run = { ["--json"] = true, ["--quiet"] = true }, describe = { ["--json"] = true },
-  new = {} }
+  new = { ["--json"] = true } }
 
 local function options_of(name)
   local list = { "--help" }
@@ -238,7 +240,7 @@ local function describe_variant(s, pairs_, variant)
   local parameters, message = s:parameters(pairs_, variant.own)
   if not parameters then return nil, message end
   local rig = s:rig(parameters)
-  rig:freeze { lasts = s.lasts, metrics = s.metrics, record = s:records() }
+  s:checked(rig.freeze, rig, { lasts = s.lasts, metrics = s.metrics, record = s:records() })
   return rig:describe { lasts = s.lasts, metrics = s.metrics }
 end
 
@@ -280,6 +282,13 @@ local function new(host, p)
   for _, f in ipairs(starter) do
     local done, why = host.write(p.file, f.file, f.text)
     if not done then return complain(host, p.options, CANNOT_CREATE, why) end
+  end
+  if p.options["--json"] then
+    local names = {}
+    for i, f in ipairs(starter) do names[i] = f.file end
+    host.out(json.encode(json.ordered({ "schema", "folder", "files" },
+      { schema = "latewood-new-1", folder = p.file, files = json.list(names) })))
+    return OK
   end
   host.out(("wrote study.lua, README.md and .luarc.json to %s\nnext: latewood run %s/study.lua\n")
     :format(p.file, p.file))

@@ -74,7 +74,7 @@ local function new(_, t)
     runs = whole("study", "runs", t.runs, 1, 1000000) or 1,
     seed = whole("study", "seed", t.seed, 0, math.maxinteger) or 1,
     given = t.given or {}, before = t.before, after = t.after,
-    metrics = {}, requirements = {}, figures = {},
+    metrics = {}, requirements = {}, figures = {}, origins = {},
   }, study)
 end
 
@@ -83,6 +83,12 @@ local function limit_of(value)
   if value == nil then return nil end
   if type(value) == "string" and value:find("%%%s*$") then return lw.quantity(value, "1") end
   return lw.quantity(value)
+end
+
+-- File and line of the study's own code that is at work, "" where there is none.
+local function origin()
+  local _, message = pcall(lw.fail, "")
+  return message:gsub(":%s*$", "")
 end
 
 -- Two positional entries: a name and a kind in words; one serves as both.
@@ -104,6 +110,7 @@ local function add_metric(self, what, t, skip)
     if m[1] == def[1] then fail("%s \"%s\": the name is taken", what, t[1]) end
   end
   self.metrics[#self.metrics + 1] = def
+  self.origins[def[1]] = origin()
   return def
 end
 
@@ -199,7 +206,10 @@ end
 
 function study:rig(p)
   local rig = self.build(guarded(p), guarded(p))
-  if rig == nil then fail("the function that builds the rig returned nothing; a rig is wanted") end
+  if type(rig) ~= "userdata" then
+    fail("the function that builds the rig returned %s; a rig is wanted",
+      rig == nil and "nothing" or "a " .. type(rig))
+  end
   return rig
 end
 
@@ -257,6 +267,15 @@ local function traces_of(self, run)
   return traces
 end
 
+-- Call a method of a rig; what it says of a metric gets the line that asked for the metric.
+function study:checked(f, ...)
+  local results = table.pack(pcall(f, ...))
+  if results[1] then return table.unpack(results, 2, results.n) end
+  local message = tostring(results[2])
+  local where = self.origins[message:match('^metric "(.-)":') or ""]
+  error((where and where ~= "" and where .. ": " or "") .. message, 0)
+end
+
 local function run_variant(self, variant, arguments, options)
   local p, message = self:parameters(arguments, variant.own)
   if not p then return nil, message end
@@ -264,9 +283,10 @@ local function run_variant(self, variant, arguments, options)
   local result = { name = variant.name, parameters = p, values = {}, ended = {} }
   for _, m in ipairs(self.metrics) do result.values[m[1]] = {} end
   for i = 0, options.runs - 1 do
-    local run = rig:run { lasts = self.lasts, seed = options.seed, run = i, metrics = self.metrics,
-      record = i == 0 and self:records() or nil }
+    local run = self:checked(rig.run, rig, { lasts = self.lasts, seed = options.seed, run = i,
+      metrics = self.metrics, record = i == 0 and self:records() or nil })
     local status, why = run:status()
+    if status == "LW_ERR_LAW" then error(why, 0) end -- the study is wrong, not the loop
     if status ~= "done" then
       result.ended[#result.ended + 1] = { run = i, status = status, message = why }
     end
