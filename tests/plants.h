@@ -120,18 +120,24 @@ static inline void solve(int n, wide *m, wide *b)
         b[i] = wide_div(b[i], m[i * n + i]);
 }
 
-// c (s I - a)^-1 b + d for a row c and a column b.
-static inline number resolvent(int n, const double *a, number s, const double *b, const double *c,
-                               double d)
+// x = (s I - a)^-1 b for a column b.
+static inline void resolve(int n, const double *a, number s, const double *b, wide *x)
 {
-    static wide m[N_MAX * N_MAX], x[N_MAX];
-    wide minus_y = wide_of(-d);
+    static wide m[N_MAX * N_MAX];
     for (int i = 0; i < n; i++) {
         for (int j = 0; j < n; j++)
             m[i * n + j] = wide_sub(wide_of(i == j ? s : 0), wide_of(a[i * n + j]));
         x[i] = wide_of(b[i]);
     }
     solve(n, m, x);
+}
+
+// c (s I - a)^-1 b + d for a row c and a column b.
+static inline number resolvent(int n, const double *a, number s, const double *b, const double *c,
+                               double d)
+{
+    wide x[N_MAX], minus_y = wide_of(-d);
+    resolve(n, a, s, b, x);
     for (int i = 0; i < n; i++)
         minus_y = wide_sub(minus_y, wide_mul(wide_of(c[i]), x[i]));
     return -narrow(minus_y);
@@ -141,7 +147,7 @@ static inline number resolvent(int n, const double *a, number s, const double *b
 static inline number response(const lw_plant *plant, int i, int j, number s)
 {
     lw_plant_view v = lw_plant_look(plant);
-    double b[N_MAX];
+    double b[N_MAX] = {0};
     for (int k = 0; k < v.n_x; k++)
         b[k] = v.b[k * v.n_u + j];
     return resolvent(v.n_x, v.a, s, b, v.c + i * v.n_x, v.d[i * v.n_u + j]);

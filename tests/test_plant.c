@@ -478,12 +478,14 @@ static double rounding_of(const lw_plant *plant, number s)
     int n = v.n_x;
     number inverse[MOST_POLES][MOST_POLES];
     double sum = fabs(v.d[0]), x[MOST_POLES] = {0};
-    for (int k = 0; k < n; k++)
-        for (int i = 0; i < n; i++) {
-            double from[MOST_POLES] = {0}, to[MOST_POLES] = {0};
-            from[k] = to[i] = 1;
-            inverse[i][k] = resolvent(n, v.a, s, from, to, 0);
-        }
+    for (int k = 0; k < n; k++) {
+        double unit[MOST_POLES] = {0};
+        wide column[MOST_POLES];
+        unit[k] = 1;
+        resolve(n, v.a, s, unit, column);
+        for (int i = 0; i < n; i++)
+            inverse[i][k] = narrow(column[i]);
+    }
     for (int i = 0; i < n; i++) {
         number own = 0;
         for (int k = 0; k < n; k++)
