@@ -117,11 +117,27 @@ static void taylor(int n, const lw__dd *m, lw__dd *e, lw__dd *term, lw__dd *next
     }
 }
 
+// Element (i, j) of 2 E + E^2 in plain double arithmetic, where infinity stays infinity.
+static double squared_element(int n, const lw__dd *e, int i, int j)
+{
+    double sum = 2 * e[i * n + j].hi;
+    for (int k = 0; k < n; k++)
+        if (e[i * n + k].hi != 0 && e[k * n + j].hi != 0)
+            sum += e[i * n + k].hi * e[k * n + j].hi;
+    return sum;
+}
+
+// The error terms of a product are no numbers once it, or a part of a factor, overflows: there a
+// double serves.
 static void square(int n, lw__dd *e, lw__dd *next)
 {
     product(n, e, e, next);
-    for (int i = 0; i < n * n; i++)
-        e[i] = lw__dd_add(lw__dd_scale(e[i], 2), next[i]);
+    for (int i = 0; i < n * n; i++) {
+        next[i] = lw__dd_add(lw__dd_scale(e[i], 2), next[i]);
+        if (!isfinite(next[i].hi))
+            next[i] = lw__dd_from_double(squared_element(n, e, i / n, i % n));
+    }
+    memcpy(e, next, sizeof(lw__dd) * (size_t)(n * n));
 }
 
 static void scaled_exponential(int n, const lw__dd *m, lw__dd h, lw__dd *e, lw__dd *work)
@@ -133,8 +149,7 @@ static void scaled_exponential(int n, const lw__dd *m, lw__dd h, lw__dd *e, lw__
     lw__dense_balance(n, plain, scale);
     for (int i = 0; i < n; i++)
         for (int j = 0; j < n; j++)
-            scaled[i * n + j] =
-                lw__dd_mul(lw__dd_scale(m[i * n + j], scale[j] / scale[i]), h);
+            scaled[i * n + j] = lw__dd_mul(lw__dd_scale(m[i * n + j], scale[j] / scale[i]), h);
     double norm = norm_dd(n, scaled);
     int squarings = 0;
     for (; norm > 0.25 && squarings < 1100; squarings++)
@@ -145,7 +160,8 @@ static void scaled_exponential(int n, const lw__dd *m, lw__dd h, lw__dd *e, lw__
     for (int k = 0; k < squarings; k++)
         square(n, e, next);
     for (int i = 0; i < n; i++)
-        e[i * n + i] = lw__dd_add(e[i * n + i], lw__dd_from_double(1));
+        if (isfinite(e[i * n + i].hi))
+            e[i * n + i] = lw__dd_add(e[i * n + i], lw__dd_from_double(1));
     for (int i = 0; i < n; i++)
         for (int j = 0; j < n; j++)
             e[i * n + j] = lw__dd_scale(e[i * n + j], scale[i] / scale[j]);
@@ -186,7 +202,7 @@ int lw__dense_solve_dd(int n, int n_rhs, lw__dd *a, lw__dd *b)
         for (int i = c + 1; i < n; i++)
             if (fabs(a[i * n + c].hi) > fabs(a[pivot * n + c].hi))
                 pivot = i;
-        if (a[pivot * n + c].hi == 0)
+        if (!(fabs(a[pivot * n + c].hi) > 0))
             return 0;
         swap_rows(n, a, c, pivot);
         swap_rows(n_rhs, b, c, pivot);
@@ -206,41 +222,53 @@ int lw__dense_solve_dd(int n, int n_rhs, lw__dd *a, lw__dd *b)
 
 // ---- eigenvalues
 
-static int gsl_eigenvalues(int n, const double *a, double *re, double *im)
+// Memory of our own for the matrix and the values; GSL takes that of its workspace itself.
+static lw_status gsl_eigenvalues(int n, const double *a, double *work, double *re, double *im)
 {
     size_t size = (size_t)n;
-    gsl_matrix *m = gsl_matrix_alloc(size, size);
-    gsl_vector_complex *values = gsl_vector_complex_alloc(size);
     gsl_eigen_nonsymm_workspace *w = gsl_eigen_nonsymm_alloc(size);
-    int done = m != NULL && values != NULL && w != NULL;
-    if (done) {
-        gsl_eigen_nonsymm_params(0, 1, w);
-        for (size_t i = 0; i < size * size; i++)
-            gsl_matrix_set(m, i / size, i % size, a[i]);
-        done = gsl_eigen_nonsymm(m, values, w) == GSL_SUCCESS;
-        for (size_t i = 0; done && i < size; i++) {
-            gsl_complex v = gsl_vector_complex_get(values, i);
-            re[i] = GSL_REAL(v);
-            im[i] = GSL_IMAG(v);
-        }
+    if (w == NULL)
+        return LW_ERR_MEMORY;
+    gsl_eigen_nonsymm_params(0, 1, w);
+    memcpy(work, a, sizeof(double) * size * size);
+    double *pairs = work + size * size;
+    gsl_matrix_view m = gsl_matrix_view_array(work, size, size);
+    gsl_vector_complex_view values = gsl_vector_complex_view_array(pairs, size);
+    int failed = gsl_eigen_nonsymm(&m.matrix, &values.vector, w);
+    gsl_eigen_nonsymm_free(w);
+    if (failed)
+        return LW_ERR_NOT_FINITE;
+    for (size_t i = 0; i < size; i++) {
+        re[i] = pairs[2 * i];
+        im[i] = pairs[2 * i + 1];
     }
-    if (w != NULL)
-        gsl_eigen_nonsymm_free(w);
-    if (values != NULL)
-        gsl_vector_complex_free(values);
-    if (m != NULL)
-        gsl_matrix_free(m);
-    return done;
+    return LW_OK;
+}
+
+static int all_finite(int n, const double *a)
+{
+    for (int i = 0; i < n * n; i++)
+        if (!isfinite(a[i]))
+            return 0;
+    return 1;
 }
 
 lw_status lw__dense_eigen(int n, const double *a, double *re, double *im, lw_error *err)
 {
     if (n == 0)
         return LW_OK;
-    gsl_error_handler_t *handler = gsl_set_error_handler_off();
-    int done = gsl_eigenvalues(n, a, re, im);
-    gsl_set_error_handler(handler);
-    return done ? LW_OK
-                : lw_error_set(err, LW_ERR_NOT_FINITE,
-                               "the eigenvalues of a %d x %d matrix could not be found", n, n);
+    lw_status status = LW_ERR_NOT_FINITE;
+    if (all_finite(n, a)) {
+        double *work = lw__alloc(sizeof(double) * (size_t)(n + 2) * (size_t)n);
+        gsl_error_handler_t *handler = gsl_set_error_handler_off();
+        status = work != NULL ? gsl_eigenvalues(n, a, work, re, im) : LW_ERR_MEMORY;
+        gsl_set_error_handler(handler);
+        lw__free(work);
+    }
+    if (status == LW_ERR_MEMORY)
+        return lw_error_set(err, status, "no memory for the eigenvalues of a matrix");
+    return status == LW_OK
+               ? LW_OK
+               : lw_error_set(err, status, "the eigenvalues of a %d x %d matrix could not be found",
+                              n, n);
 }

@@ -12,16 +12,18 @@ void lw__dense_balance(int n, const double *a, double *scale);
 
 double lw__dense_norm_inf(int n, const double *a);
 
-// out = exp(M h) in double-double, n x n. Elements may be infinite where they overflow.
+// out = exp(M h) in double-double, n x n; may be `m`. Elements that overflow are infinite, or no
+// number where infinities of both signs meet.
 //   method  balanced, scaled to a norm of at most 1/4, Taylor, squared back (C. Moler, C. Van
 //           Loan, SIAM Review 45 (2003) 3-49)
 //   error   about 1e-30 n times the norm of M h, each state on its own scale
 lw_status lw__dense_exp_dd(int n, const lw__dd *m, lw__dd h, lw__dd *out);
 
-// Solve A X = B in place of B (n x n_rhs); A is destroyed. 0 if A is singular.
+// Solve A X = B in place of B (n x n_rhs); A is destroyed. 0 if A is singular or holds no numbers.
 int lw__dense_solve_dd(int n, int n_rhs, lw__dd *a, lw__dd *b);
 
-// Eigenvalues of a general real matrix through GSL's Hessenberg-QR.
+// Eigenvalues of a general real matrix through GSL's Hessenberg-QR; GSL's error handler is put back.
+// LW_ERR_NOT_FINITE if an element is not finite or the iteration does not converge.
 lw_status lw__dense_eigen(int n, const double *a, double *re, double *im, lw_error *err);
 
 #endif

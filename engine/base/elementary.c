@@ -1,5 +1,8 @@
 // Elementary functions by SLEEF's pure-C family without fused multiply-add: the same bits on every
 // processor and for every compiler. See elementary.h.
+//
+// SLEEF leaves out the ends of some ranges: sums and logarithms of the largest numbers overflow,
+// the least numbers become 0. Those arguments, and no others, take a way of their own here.
 
 #include <latewood/elementary.h>
 
@@ -17,31 +20,101 @@
         return Sleef_cinz_##name##d1_##suffix##purec(x, y);                                        \
     }
 
-BY_SLEEF_1(exp, u10)
-BY_SLEEF_1(expm1, u10)
 BY_SLEEF_1(exp2, u10)
 BY_SLEEF_1(log, u10)
-BY_SLEEF_1(log1p, u10)
 BY_SLEEF_1(log2, u10)
 BY_SLEEF_1(log10, u10)
 BY_SLEEF_1(sin, u10)
 BY_SLEEF_1(cos, u10)
-BY_SLEEF_1(tan, u10)
 BY_SLEEF_1(asin, u10)
 BY_SLEEF_1(acos, u10)
 BY_SLEEF_1(atan, u10)
-BY_SLEEF_1(sinh, u10)
-BY_SLEEF_1(cosh, u10)
 BY_SLEEF_1(tanh, u10)
-BY_SLEEF_1(asinh, u10)
-BY_SLEEF_1(acosh, u10)
 BY_SLEEF_1(atanh, u10)
 BY_SLEEF_1(cbrt, u10)
 BY_SLEEF_1(erf, u10)
 BY_SLEEF_1(erfc, u15)
-BY_SLEEF_2(pow, u10)
 BY_SLEEF_2(atan2, u10)
 BY_SLEEF_2(hypot, u05)
+
+#define LEAST 0x1p-1000         // below it, odd functions with slope 1 are their argument
+#define ROOT_OF_LARGEST 0x1p512 // where SLEEF's squares overflow
+
+// share * exp(x) where exp(x) is near the largest number or above it: e^709 in two doubles times
+// the rest, whose argument is exact.
+static double large_exp(double x, double share)
+{
+    const double high = 0x1.d422d2be5dc9bp+1022, low = -0x1.916aa7a2c8d07p+967;
+    if (x > 711)
+        return (double)INFINITY;
+    double rest = Sleef_cinz_expd1_u10purec(x - 709);
+    return share * high * rest + share * low * rest;
+}
+
+double lw_exp(double x)
+{
+    double y = Sleef_cinz_expd1_u10purec(x);
+    return isinf(y) ? large_exp(x, 1) : y;
+}
+
+double lw_expm1(double x)
+{
+    double y = Sleef_cinz_expm1d1_u10purec(x);
+    return isinf(y) ? large_exp(x, 1) : y;
+}
+
+double lw_sinh(double x)
+{
+    double y = Sleef_cinz_sinhd1_u10purec(x);
+    return isinf(y) ? copysign(large_exp(fabs(x), 0.5), x) : y;
+}
+
+double lw_cosh(double x)
+{
+    double y = Sleef_cinz_coshd1_u10purec(x);
+    return isinf(y) ? large_exp(fabs(x), 0.5) : y;
+}
+
+double lw_tan(double x)
+{
+    return fabs(x) < LEAST ? x : Sleef_cinz_tand1_u10purec(x);
+}
+
+double lw_log1p(double x)
+{
+    if (fabs(x) < LEAST)
+        return x;
+    return x > 1e300 ? lw_log(x) : Sleef_cinz_log1pd1_u10purec(x);
+}
+
+// log(2 x), also where 2 x is too large.
+static double log_of_twice(double x)
+{
+    return x < 0x1p1023 ? lw_log(2 * x) : lw_log(x) + 0.69314718055994530942;
+}
+
+double lw_asinh(double x)
+{
+    if (fabs(x) < LEAST)
+        return x;
+    return fabs(x) > ROOT_OF_LARGEST ? copysign(log_of_twice(fabs(x)), x)
+                                     : Sleef_cinz_asinhd1_u10purec(x);
+}
+
+double lw_acosh(double x)
+{
+    return x > ROOT_OF_LARGEST ? log_of_twice(x) : Sleef_cinz_acoshd1_u10purec(x);
+}
+
+// SLEEF overflows a little below the largest number; the square of the half power does not.
+double lw_pow(double x, double y)
+{
+    double power = Sleef_cinz_powd1_u10purec(x, y);
+    if (!isinf(power) || y == 1)
+        return y == 1 ? x : power;
+    double half = Sleef_cinz_powd1_u10purec(fabs(x), 0.5 * y);
+    return copysign(half * half, power);
+}
 
 double lw_normal_cdf(double x)
 {
@@ -72,9 +145,9 @@ double lw_normal_quantile(double p)
                                 3.9307895800092710610e+4,
                                 2.8729085735721942674e+4,
                                 5.2264952788528545610e+3};
-    static const double c[8] = {1.42343711074968357734e0, 4.63033784615654529590e0,
-                                5.76949722146069140550e0, 3.64784832476320460504e0,
-                                1.27045825245236838258e0, 2.41780725177450611770e-1,
+    static const double c[8] = {1.42343711074968357734e0,  4.63033784615654529590e0,
+                                5.76949722146069140550e0,  3.64784832476320460504e0,
+                                1.27045825245236838258e0,  2.41780725177450611770e-1,
                                 2.27238449892691845833e-2, 7.74545014278341407640e-4};
     static const double d[8] = {1.0,
                                 2.05319162663775882187e0,

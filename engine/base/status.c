@@ -31,7 +31,8 @@ const char *lw_status_text(lw_status status)
     return "a status this library does not know";
 }
 
-// Copy with truncation at a character boundary.
+// Copy with truncation at a character boundary. What is no UTF-8, such as a character of which a
+// precision in the format left the first byte only, becomes question marks.
 static void keep(lw_error *err, const char *text)
 {
     size_t length = strlen(text);
@@ -39,6 +40,12 @@ static void keep(lw_error *err, const char *text)
         length = lw__utf8_cut(text, LW_ERROR_TEXT - 1);
     memcpy(err->text, text, length);
     err->text[length] = 0;
+    for (size_t i = 0; i < length;) {
+        size_t size = lw__utf8_character(err->text + i, length - i);
+        if (size == 0)
+            err->text[i] = '?';
+        i += size > 0 ? size : 1;
+    }
 }
 
 lw_status lw_error_set(lw_error *err, lw_status status, const char *format, ...)

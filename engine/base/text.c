@@ -6,9 +6,9 @@
 
 #define NAME_MAX_BYTES 200
 
-// Length of the character that begins at s (n bytes left), 0 if it is not well formed.
-static size_t character(const unsigned char *s, size_t n)
+size_t lw__utf8_character(const char *text, size_t n)
 {
+    const unsigned char *s = (const unsigned char *)text;
     if (s[0] < 0x80)
         return 1;
     size_t length = s[0] >= 0xF0 ? 4 : s[0] >= 0xE0 ? 3 : 2;
@@ -26,7 +26,7 @@ static size_t character(const unsigned char *s, size_t n)
 int lw__utf8_valid(const char *s, size_t n)
 {
     for (size_t i = 0; i < n;) {
-        size_t length = character((const unsigned char *)s + i, n - i);
+        size_t length = lw__utf8_character(s + i, n - i);
         if (length == 0)
             return 0;
         i += length;

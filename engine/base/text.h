@@ -5,7 +5,9 @@
 #include <latewood/status.h>
 #include <stddef.h>
 
-// Nonzero if the n bytes are well-formed UTF-8 (RFC 3629).
+// Length of the character at the head of the n > 0 bytes; 0 if it is not well formed (RFC 3629).
+size_t lw__utf8_character(const char *s, size_t n);
+// Nonzero if the n bytes are well-formed UTF-8.
 int lw__utf8_valid(const char *s, size_t n);
 // Largest count <= n of bytes of `s` that does not cut a character.
 size_t lw__utf8_cut(const char *s, size_t n);

@@ -5,6 +5,7 @@
 #include <math.h>
 
 __extension__ typedef __int128 wide;
+__extension__ typedef unsigned __int128 unsigned_wide;
 
 lw_status lw_tick_from_seconds(double seconds, lw_tick *tick)
 {
@@ -38,16 +39,17 @@ double lw_period_seconds(lw_period period)
     return (double)period.num / (double)period.den / (double)LW_TICKS_PER_SECOND;
 }
 
+// With d = t - offset, round(k num / den) >= d if and only if 2 k num >= den (2 d - 1). The right
+// side needs 128 bits without a sign: den < 2^63 and 2 d < 2^65.
 int64_t lw_period_index(lw_period period, lw_tick offset, lw_tick t)
 {
     if (t <= offset)
         return 0;
-    int64_t k = (int64_t)(((wide)t - offset) * period.den / period.num);
-    while (k > 0 && lw_period_at(period, offset, k - 1) >= t)
-        k--;
-    while (lw_period_at(period, offset, k) < t)
-        k++;
-    return k;
+    t = t > LW_TICK_MAX ? LW_TICK_MAX + 1 : t; // from there on every instant is LW_NEVER
+    unsigned_wide distance = (unsigned_wide)((wide)t - offset);
+    unsigned_wide least = (unsigned_wide)period.den * (2 * distance - 1);
+    unsigned_wide step = 2 * (unsigned_wide)period.num;
+    return (int64_t)(least / step + (least % step != 0));
 }
 
 lw_period lw_period_of_ticks(lw_tick ticks)

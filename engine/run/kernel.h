@@ -69,4 +69,13 @@ void lw__kernel_value(const lw__kernel *k, lw_tick anchor, const double *x, cons
 void lw__kernel_advance(const lw__kernel *k, lw_tick anchor, double *x, const double *u,
                         const lw__changes *changes, lw_tick now, double *work);
 
+// The same for one state over the first length of the grid without changes: too little for a call.
+static inline double lw__kernel_scalar(const lw__kernel *k, double x, const double *u)
+{
+    double moved = k->grid[0].phi[0] * x;
+    for (int j = 0; j < k->m; j++)
+        moved += k->grid[0].gamma[j] * u[j];
+    return moved;
+}
+
 #endif

@@ -29,6 +29,7 @@ typedef struct dash {
     lw_tick sample, arrive;    // due
     lw_tick limit;             // first tick that is not ours
     lw_tick whole;             // the period where it is a whole number of ticks, else 0
+    lw_tick scalar_step;       // length that lw__kernel_scalar serves, 0: none
     int64_t k, job;            // sample and job numbers
     lw_tick stepped_at, anchor;
     int n_in, n_out;
@@ -70,6 +71,7 @@ static dash begin_dash(lw__lane *s, const lw__sprint *c, lw_tick until)
               .job = LW__I(l->jobs),
               .stepped_at = LW__I(l->stepped_at),
               .anchor = LW__I(g->anchor),
+              .scalar_step = g->n_x == 1 && g->kernel.n_grid > 0 ? g->kernel.grid[0].length : 0,
               .n_in = l->n_in,
               .n_out = l->n_out,
               .other_inputs = g->n_u > 1,
@@ -97,9 +99,13 @@ LW__INLINE void dash_anchor(lw__lane *s, dash *d)
     const lw__group *g = d->c->group;
     if (d->anchor == s->now)
         return;
-    lw__changes c = {LW__I(g->list_n), &s->i[g->list_tick], &s->i[g->list_channel],
-                     &s->f[g->list_du]};
-    lw__kernel_advance(&g->kernel, d->anchor, d->x, d->u_anchor, &c, s->now, s->work);
+    int64_t n_changes = LW__I(g->list_n);
+    if (n_changes == 0 && s->now - d->anchor == d->scalar_step) {
+        d->x[0] = lw__kernel_scalar(&g->kernel, d->x[0], d->u_anchor);
+    } else {
+        lw__changes c = {n_changes, &s->i[g->list_tick], &s->i[g->list_channel], &s->f[g->list_du]};
+        lw__kernel_advance(&g->kernel, d->anchor, d->x, d->u_anchor, &c, s->now, s->work);
+    }
     d->u_anchor[d->c->channel] = d->u_now[d->c->channel];
     for (int k = 0; d->other_inputs && k < g->n_u; k++)
         d->u_anchor[k] = d->u_now[k];
