@@ -22,8 +22,8 @@ lw_status lw__dense_exp_dd(int n, const lw__dd *m, lw__dd h, lw__dd *out);
 // Solve A X = B in place of B (n x n_rhs); A is destroyed. 0 if A is singular or holds no numbers.
 int lw__dense_solve_dd(int n, int n_rhs, lw__dd *a, lw__dd *b);
 
-// Eigenvalues of a general real matrix through GSL's Hessenberg-QR; GSL's error handler is put back.
-// LW_ERR_NOT_FINITE if an element is not finite or the iteration does not converge.
+// Eigenvalues of a general real matrix through GSL's Hessenberg-QR, whose error handler is put
+// back. LW_ERR_NOT_FINITE if an element is not finite or the iteration does not converge.
 lw_status lw__dense_eigen(int n, const double *a, double *re, double *im, lw_error *err);
 
 #endif
