@@ -201,8 +201,8 @@ static void describe_loops(writer *w, const lw_frozen *z)
     for (int i = 0; i < z->n_loops; i++) {
         const lw__loop *l = &z->loops[i];
         const lw_loop_def *d = &l->item->def;
-        say(w, "loop \"%s\": %s on each conversion of adc \"%s\", nominal period %s s", d->name,
-            l->law->kind, l->adc->item->def.name, number_words(l->nominal).text);
+        say(w, "loop \"%s\": %s on each conversion of adc \"%s\", nominal period %s", d->name,
+            l->law->kind, l->adc->item->def.name, period_words(l->adc->period).text);
         for (int k = 0; k < d->n_inputs; k++)
             if (d->inputs[k].signal != NULL)
                 say(w, "  reads %s from \"%s\"", d->inputs[k].port, d->inputs[k].signal);

@@ -32,10 +32,9 @@ local function box(lines)
 end
 
 local function limit_text(requirement)
-  if requirement.at_most then
-    return "at most " .. words.metric(requirement.kind, requirement.at_most)
-  end
-  return "at least " .. words.metric(requirement.kind, requirement.at_least)
+  local value = requirement.limit_text or -- as the study has it, with its unit
+    words.metric(requirement.kind, requirement.at_most or requirement.at_least)
+  return (requirement.at_most and "at most " or "at least ") .. value
 end
 
 -- Value of one cell: the only run's, or the worst of many.

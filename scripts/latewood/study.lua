@@ -126,6 +126,7 @@ function study:requirement(t)
   end
   self.requirements[#self.requirements + 1] = {
     name = t[1], kind = def[2],
+    limit_text = type(t.at_most or t.at_least) == "string" and (t.at_most or t.at_least) or nil,
     at_most = limit_of(t.at_most),
     at_least = limit_of(t.at_least),
   }
