@@ -51,11 +51,11 @@ study:metric      { "latency, mean", "latency mean", of = "speed loop" }
 study:metric      { "latency, 99.9 %", "latency percentile", of = "speed loop", share = "99.9 %" }
 study:metric      { "latency, largest", "latency maximum", of = "speed loop" }
 study:figure      { "speed response", of = { "axis.load_speed", "axis.motor_speed" },
-                    wanted = "speed wanted", ["until"] = "250 ms", unit = "rad/s",
+                    wanted = "speed wanted", ["until"] = "250 ms", unit = { "rad/s", "rad/s" },
                     note = "The recorded latency is that of a computer's timer thread under " ..
                       "load, not a microcontroller's. The drive's values are invented." }
 study:figure      { "current and voltage", of = { "axis.current", "bridge" },
-                    from = "4 ms", ["until"] = "24 ms" }
+                    unit = { "A", "V" }, from = "4 ms", ["until"] = "24 ms" }
 study:figure      { "latency of the speed loop", latency_of = "speed loop",
                     note = "Recorded: a computer's timer thread under load, not a " ..
                       "microcontroller's." }

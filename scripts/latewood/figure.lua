@@ -33,10 +33,16 @@ local function scaled(xs, size)
   return out
 end
 
+-- The unit of a panel: `unit` is a list, one for each signal, or that of the first.
+local function unit_of(f, index)
+  local unit = type(f.unit) == "table" and f.unit[index] or index == 1 and f.unit
+  return unit and " / " .. unit or ""
+end
+
 -- Traces of one signal in all variants, with the wanted value under the first.
 local function response_panel(f, index, signal, result, size, unit)
   local p = { x = { f.from / size, f.till / size }, y = {}, traces = {},
-    x_label = "time / " .. unit, y_label = signal .. (f.unit and " / " .. f.unit or "") }
+    x_label = "time / " .. unit, y_label = signal .. unit_of(f, index) }
   local function add(record, name, style)
     extend(p.y, record.value)
     p.traces[#p.traces + 1] = { name = name, style = style, x = scaled(record.time, size),

@@ -12,7 +12,7 @@
 -- study:metric { "name", "kind", of = , ... }       the fields of a rig's metrics
 -- study:requirement { "name", "kind", of = , at_most = | at_least = , ... }
 -- study:figure { "title", of = signal or list, wanted = signal, from = , until = , note = ,
---                unit = }
+--                unit = of the first signal, or a list }
 -- study:figure { "title", latency_of = loop, note = }
 
 local lw = require "latewood"
