@@ -7,9 +7,9 @@
 #include <stddef.h>
 
 typedef struct lw__shipped {
-    const char *name;           // as `require` is given it: "latewood.study"
-    const char *file;           // where it came from, for messages: "scripts/latewood/study.lua"
-    const unsigned char *text;  // Lua source, followed by a zero that does not count
+    const char *name;          // as `require` is given it: "latewood.study"
+    const char *file;          // where it came from, for messages: "scripts/latewood/study.lua"
+    const unsigned char *text; // Lua source, followed by a zero that does not count
     size_t n_bytes;
 } lw__shipped;
 

@@ -261,7 +261,8 @@ START_TEST(recordings_are_read_with_their_quirks)
     ck_assert(lw_timing_draw(t, 1, 1, 3, NULL, NULL) == 8 * 1e-6);
     lw_timing_free(t);
     ck_assert_int_eq(from_file("1\n2\nthree\n", &t, &err, path, 300), LW_ERR_INPUT);
-    snprintf(want, sizeof want, "%s:3: \"three\" is no duration; one number a line is wanted", path);
+    snprintf(want, sizeof want, "%s:3: \"three\" is no duration; one number a line is wanted",
+             path);
     ck_assert_str_eq(err.text, want);
     ck_assert_int_eq(from_file("# nothing\n", &t, &err, path, 300), LW_ERR_INPUT);
     ck_assert_int_eq(from_file("1 2\n", &t, &err, path, 300), LW_ERR_INPUT);

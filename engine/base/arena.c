@@ -15,7 +15,7 @@
 
 typedef struct block {
     struct block *before;
-    size_t used, room; // bytes of `data`
+    size_t used, room;   // bytes of `data`
     unsigned char *data; // aligned
 } block;
 

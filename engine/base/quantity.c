@@ -60,9 +60,8 @@ static const unit units[] = {
 static const struct {
     const char *name;
     int power;
-} prefixes[] = {{"p", -12}, {"n", -9},        {"u", -6}, {"\xC2\xB5", -6}, {"\xCE\xBC", -6},
-                {"m", -3},  {"c", -2},        {"k", 3},  {"M", 6},         {"G", 9},
-                {"T", 12},  {"f", -15}};
+} prefixes[] = {{"p", -12}, {"n", -9}, {"u", -6}, {"\xC2\xB5", -6}, {"\xCE\xBC", -6}, {"m", -3},
+                {"c", -2},  {"k", 3},  {"M", 6},  {"G", 9},         {"T", 12},        {"f", -15}};
 
 #define N_OF(list) (sizeof list / sizeof list[0])
 
@@ -328,9 +327,9 @@ lw_status lw_quantity_parse(const char *text, lw_quantity *out, lw_error *err)
     while (*t == ' ')
         t++;
     if (!parse_decimal(&t, &d))
-        return lw_error_set(err, LW_ERR_ARGUMENT,
-                            "\"%.60s\" does not begin with a number; a quantity is written \"5 ms\"",
-                            text);
+        return lw_error_set(
+            err, LW_ERR_ARGUMENT,
+            "\"%.60s\" does not begin with a number; a quantity is written \"5 ms\"", text);
     while (*t == ' ')
         t++;
     size_t length = strlen(t);
@@ -384,9 +383,8 @@ static lw_status wrong_unit(const char *text, const lw_quantity *q, const char *
 {
     for (size_t i = 0; i < N_OF(quantities); i++)
         if (same_dimension(quantities[i].d, d))
-            return lw_error_set(err, LW_ERR_UNIT,
-                                "\"%.60s\" is %s; %s is wanted, such as \"%s\"", text, words_of(q),
-                                quantities[i].words, quantities[i].example);
+            return lw_error_set(err, LW_ERR_UNIT, "\"%.60s\" is %s; %s is wanted, such as \"%s\"",
+                                text, words_of(q), quantities[i].words, quantities[i].example);
     return lw_error_set(err, LW_ERR_UNIT, "\"%.60s\" is %s; a quantity in %s is wanted", text,
                         words_of(q), wanted);
 }
@@ -431,8 +429,8 @@ lw_status lw_duration_parse(const char *text, lw_tick *tick, double *exact, lw_e
         return status;
     if (q.kind != LW_UNIT_SI || !same_dimension(q.dimension, (lw_dimension){0, 0, 1, 0, 0}))
         return wrong_unit(text, &q, "s", (lw_dimension){0, 0, 1, 0, 0}, err);
-    int done = q.den > 0 ? to_ticks(q.num, q.den, tick)
-                         : lw_tick_from_seconds(q.value, tick) == LW_OK;
+    int done =
+        q.den > 0 ? to_ticks(q.num, q.den, tick) : lw_tick_from_seconds(q.value, tick) == LW_OK;
     if (!done)
         return lw_error_set(err, LW_ERR_TIME, "\"%.60s\" is beyond the range of time, 9e6 s", text);
     if (exact != NULL)
@@ -528,11 +526,8 @@ char *lw_tick_format(lw_tick tick, char *buffer)
     static const struct {
         int64_t ticks;
         const char *name;
-    } steps[] = {{LW_TICKS_PER_SECOND, "s"},
-                 {1000000000, "ms"},
-                 {1000000, "us"},
-                 {1000, "ns"},
-                 {1, "ps"}};
+    } steps[] = {
+        {LW_TICKS_PER_SECOND, "s"}, {1000000000, "ms"}, {1000000, "us"}, {1000, "ns"}, {1, "ps"}};
     size_t k = 0;
     int64_t size = tick < 0 ? -tick : tick;
     while (k < 4 && size < steps[k].ticks)
