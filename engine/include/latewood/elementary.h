@@ -12,11 +12,11 @@ extern "C" {
 #endif
 
 // X(name): one argument.
+// clang-format off
 #define LW_ELEMENTARY_1(X)                                                                         \
-    X(exp)                                                                                         \
-    X(expm1)                                                                                       \
-    X(exp2) X(log) X(log1p) X(log2) X(log10) X(sin) X(cos) X(tan) X(asin) X(acos) X(atan) X(sinh)  \
-        X(cosh) X(tanh) X(asinh) X(acosh) X(atanh) X(cbrt) X(erf) X(erfc)
+    X(exp) X(expm1) X(exp2) X(log) X(log1p) X(log2) X(log10) X(sin) X(cos) X(tan) X(asin) X(acos)  \
+    X(atan) X(sinh) X(cosh) X(tanh) X(asinh) X(acosh) X(atanh) X(cbrt) X(erf) X(erfc)
+// clang-format on
 // X(name): two arguments.
 #define LW_ELEMENTARY_2(X) X(pow) X(atan2) X(hypot)
 
