@@ -76,8 +76,13 @@ lw_status lw__freeze_converters(lw__freezer *w); // sources, values, adcs, dacs
 lw_status lw__freeze_loops(lw__freezer *w);
 lw_status lw__freeze_streams(lw__freezer *w); // collisions refused
 void lw__freeze_anchors(lw__freezer *w);      // whose timer moves each anchor
-lw_status lw__freeze_watch(lw__freezer *w);   // records, tracks, metrics
-lw_status lw__freeze_order(lw__freezer *w);   // operations, timers, sets
+lw_status lw__freeze_records(lw__freezer *w);
+lw_status lw__freeze_watch(lw__freezer *w); // records, tracks, metrics
+lw_status lw__freeze_order(lw__freezer *w); // operations, timers, sets
+
+// Have a track's operation told of changes to what it follows.
+struct lw__track;
+lw_status lw__track_watch(lw__freezer *w, struct lw__track *t, int op);
 
 // A name of a signal that must exist; failure names origin, thing, field.
 lw_status lw__freezer_signal(lw__freezer *w, const char *origin, const char *what,

@@ -181,18 +181,6 @@ static int op_number(const lw_frozen *z, lw__op_kind kind, int index, int part)
 
 // ---- sets
 
-lw_status lw__set_put(lw__freezer *w, lw__set *set, int op)
-{
-    if (set->words == NULL)
-        set->words = lw__freezer_get(w, sizeof(uint64_t) * (size_t)w->z->n_words);
-    if (set->words == NULL)
-        return LW_ERR_MEMORY;
-    if (op >= 0)
-        set->words[op / 64] |= UINT64_C(1) << (op % 64);
-    set->first = set->words[0];
-    return LW_OK;
-}
-
 static lw_status make_due(lw__freezer *w, int timer, lw__op_kind kind, int index, int part)
 {
     if (timer < 0)

@@ -465,12 +465,6 @@ static lw_status make_rows(lw__freezer *w, lw__group *g, const system_of *s)
 
 // ---- the anchor grid
 
-void lw__grid_steps(lw_period p, lw_tick *shortest, lw_tick *longest)
-{
-    *shortest = p.num / p.den;
-    *longest = *shortest + (p.num % p.den != 0);
-}
-
 static int samples_group(const lw__freezer *w, const lw_adc_def *def, int group)
 {
     for (int c = 0; c < def->n_channels; c++) {

@@ -260,7 +260,8 @@ static int owns(const char *owner, const char *name)
     return strncmp(owner, name, length) == 0 && (name[length] == 0 || name[length] == '.');
 }
 
-lw__set *lw__signal_observers(lw_frozen *z, const char *name)
+// The observers of what changes a signal of this name; NULL where nothing does.
+static lw__set *signal_observers(lw_frozen *z, const char *name)
 {
     for (int i = 0; i < z->n_plants; i++)
         if (owns(z->plants[i].name, name))
@@ -287,7 +288,7 @@ lw_status lw__track_watch(lw__freezer *w, lw__track *t, int op)
 {
     const char *names[2] = {t->name, t->against_name};
     for (int k = 0; k < 2; k++) {
-        lw__set *set = names[k] != NULL ? lw__signal_observers(w->z, names[k]) : NULL;
+        lw__set *set = names[k] != NULL ? signal_observers(w->z, names[k]) : NULL;
         if (set != NULL)
             LW__TRY(lw__set_put(w, set, op));
     }

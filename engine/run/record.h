@@ -2,10 +2,8 @@
 #ifndef LATEWOOD_RUN_RECORD_H
 #define LATEWOOD_RUN_RECORD_H
 
-#include "run/freeze.h"
 #include "run/state.h"
 
-lw_status lw__freeze_records(lw__freezer *w);
 // The operation of a signal record: take its value at the present instant.
 void lw__record_take(lw__lane *s, int record);
 // First instant of a signal record, LW_NEVER where it has none.

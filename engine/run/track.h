@@ -2,7 +2,6 @@
 #ifndef LATEWOOD_RUN_TRACK_H
 #define LATEWOOD_RUN_TRACK_H
 
-#include "run/freeze.h"
 #include "run/state.h"
 
 // What the metrics of a track need beyond its plain sums.
@@ -67,13 +66,9 @@ typedef struct lw__metric {
 #define LW__CELLS 1000
 #define LW__N_OWN 3
 
-lw_status lw__track_watch(lw__freezer *w, lw__track *t, int op);
 void lw__track_update(lw__lane *s, int track);
 void lw__track_finish(lw__lane *s, int track);
 void lw__track_latency(lw__lane *s, int loop, lw_tick latency);
 double lw__metric_value(const lw__lane *s, int metric);
-
-// The observers of what changes a signal of this name; NULL where nothing does.
-lw__set *lw__signal_observers(lw_frozen *z, const char *name);
 
 #endif
