@@ -9,6 +9,8 @@
 
 #include "run/freeze.h"
 
+#include "run/freezer.h"
+
 #include <stdint.h>
 
 static lw_status begin_frozen(lw__freezer *w, lw_tick lasts)

@@ -1,6 +1,6 @@
 // Freezing sources, values, adcs and dacs: names resolved, constants formed, cells reserved.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include "io/source.h"
 

@@ -1,6 +1,6 @@
 // Freezing loops: inputs and outputs resolved, latency lowered to ticks, cells reserved.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include <math.h>
 #include <stdio.h>

@@ -3,7 +3,7 @@
 // An operation's number is its place in the order: phase, kind, place of declaration, part. A set
 // of operations is a row of bits, so that the next operation due is the lowest bit.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include "io/source.h"
 #include "run/sprint.h"

@@ -4,7 +4,7 @@
 // Invariants
 // 1. What is chosen for a group depends on the group and what drives or samples it only.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include "base/alloc.h"
 #include "io/source.h"

@@ -1,6 +1,6 @@
 // Freezing records: what each row holds, and whom the events come from.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include "run/record.h"
 

@@ -1,6 +1,6 @@
 // Freezing the watch: records, and metrics as readings of shared tracks.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include "io/source.h"
 #include "run/record.h"

@@ -1,7 +1,7 @@
 // What the parts of the freezer share: memory, cells and timers, sets of operations, signals by
 // name.
 
-#include "run/freeze.h"
+#include "run/freezer.h"
 
 #include "base/alloc.h"
 
