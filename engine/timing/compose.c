@@ -7,6 +7,7 @@
 
 #include "timing/quadrature.h"
 
+#include <float.h>
 #include <math.h>
 #include <stdio.h>
 
@@ -113,10 +114,12 @@ static double affine_quantile(const lw_timing *t, const double **u)
     return t->p[0] * t->a->family->quantile(t->a, u) + t->p[1];
 }
 
+// Going back to y rounds; the few last places more or less keep an atom of `a` on its own side.
 static double affine_cdf(const lw_timing *t, double x)
 {
     double y = (x - t->p[1]) / t->p[0];
-    return t->p[0] > 0 ? lw_timing_cdf(t->a, y) : 1 - lw_timing_cdf(t->a, y);
+    double slack = 2 * DBL_EPSILON * (fabs(x) + fabs(t->p[1])) / fabs(t->p[0]);
+    return t->p[0] > 0 ? lw_timing_cdf(t->a, y + slack) : 1 - lw_timing_cdf(t->a, y - slack);
 }
 
 static double affine_density(const lw_timing *t, double x)
@@ -307,7 +310,7 @@ static double stall_draw(const lw_timing *t, lw__draw_at *at)
         lw_address once = {at->seed, at->run, *own, LW__ONCE_A_RUN};
         if (phase < 0)
             phase = (int64_t)(lw_draw_uniform(once) * (double)t->every);
-        stalls = (int64_t)at->job % t->every == phase % t->every;
+        stalls = at->job >= phase && (at->job - phase) % t->every == 0;
     } else {
         stalls = lw_draw_uniform((lw_address){at->seed, at->run, *own, at->job}) < t->p[2];
     }

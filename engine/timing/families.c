@@ -12,6 +12,9 @@
 #include <stdio.h>
 
 #define TAIL 1e-6
+// The least probability a cut may leave: below it the quantiles of an upper tail, where F is next
+// to 1, come in steps that show.
+#define LEAST_SHARE 1e-9
 
 static double draw_by_quantile(const lw_timing *t, lw__draw_at *at)
 {
@@ -258,7 +261,7 @@ lw_status lw_timing_normal(double mean, double deviation, double lo, double hi, 
         return lw_timing_constant(mean < lo ? lo : mean > hi ? hi : mean, out, err);
     const double p[4] = {mean, deviation, lw_normal_cdf((lo - mean) / deviation),
                          lw_normal_cdf((hi - mean) / deviation)};
-    if (!(p[3] > p[2]))
+    if (!(p[3] - p[2] >= LEAST_SHARE))
         return lw__timing_bad(err, "lo", lo, "the range holds next to no probability");
     return give(&normal_family, lo, hi, p, out, err);
 }
@@ -312,6 +315,8 @@ lw_status lw_timing_log_normal(double median, double sigma, double shift, double
     if (!isfinite(hi) || hi <= shift)
         return lw__timing_bad(err, "hi", hi, "permitted above the shift");
     const double p[4] = {mu, sigma, 0, lw_normal_cdf((lw_log(hi - shift) - mu) / sigma)};
+    if (!(p[3] >= LEAST_SHARE))
+        return lw__timing_bad(err, "hi", hi, "the range holds next to no probability");
     lw_status status = give(&log_normal_family, shift, hi, p, out, err);
     if (status == LW_OK)
         (*out)->p[4] = shift;
@@ -406,7 +411,7 @@ lw_status lw_timing_gumbel(double location, double scale, double lo, double hi, 
         return status;
     const double p[4] = {location, scale, gumbel_f(location, scale, lo),
                          gumbel_f(location, scale, hi)};
-    if (!(p[3] > p[2]))
+    if (!(p[3] - p[2] >= LEAST_SHARE))
         return lw__timing_bad(err, "lo", lo, "the range holds next to no probability");
     return give(&gumbel_family, lo, hi, p, out, err);
 }

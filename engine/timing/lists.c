@@ -96,12 +96,24 @@ static double discrete_quantile(const lw_timing *t, const double **u)
     return t->value[index_of(t, *(*u)++)];
 }
 
+// How many of the first n values, which rise, are at most x.
+static int n_up_to(const lw_timing *t, int n, double x)
+{
+    int low = 0, high = n;
+    while (low < high) {
+        int middle = low + (high - low) / 2;
+        if (t->value[middle] <= x)
+            low = middle + 1;
+        else
+            high = middle;
+    }
+    return low;
+}
+
 static double discrete_cdf(const lw_timing *t, double x)
 {
-    double f = 0;
-    for (int i = 0; i < t->n && t->value[i] <= x; i++)
-        f = t->weight[i];
-    return f;
+    int n = n_up_to(t, t->n, x);
+    return n > 0 ? t->weight[n - 1] : 0;
 }
 
 static double discrete_moment(const lw_timing *t, int order)
@@ -133,14 +145,20 @@ static int by_value(const void *a, const void *b)
     return (x > y) - (x < y);
 }
 
-// Sort values with their weights, in place.
+// Sort values with their weights, in place. What has no weight goes, so that the support is what
+// is drawn.
 static lw_status sort_pairs(lw_timing *t, lw_error *err)
 {
     weighted *list = lw__alloc(sizeof *list * (size_t)t->n);
     if (list == NULL)
         return lw_error_set(err, LW_ERR_MEMORY, "no memory for a timing");
-    for (int i = 0; i < t->n; i++)
-        list[i] = (weighted){t->value[i], t->weight[i] - (i > 0 ? t->weight[i - 1] : 0)};
+    int n = 0;
+    for (int i = 0; i < t->n; i++) {
+        double weight = t->weight[i] - (i > 0 ? t->weight[i - 1] : 0);
+        if (weight > 0)
+            list[n++] = (weighted){t->value[i], weight};
+    }
+    t->n = n;
     qsort(list, (size_t)t->n, sizeof *list, by_value);
     double sum = 0;
     for (int i = 0; i < t->n; i++) {
@@ -165,7 +183,7 @@ lw_status lw_timing_discrete(int n, const double *value, const double *weight, l
         status = sort_pairs(t, err);
     if (status == LW_OK) {
         t->lo = t->value[0];
-        t->hi = t->value[n - 1];
+        t->hi = t->value[t->n - 1];
         t->n_streams = 1;
     }
     return give(t, status, out);
@@ -184,10 +202,8 @@ static double histogram_quantile(const lw_timing *t, const double **u)
 
 static int cell_of(const lw_timing *t, double x)
 {
-    int i = 0;
-    while (i + 1 < t->n && x >= t->value[i + 1])
-        i++;
-    return i;
+    int n = n_up_to(t, t->n, x);
+    return n > 0 ? n - 1 : 0;
 }
 
 static double histogram_cdf(const lw_timing *t, double x)
@@ -204,13 +220,20 @@ static double histogram_density(const lw_timing *t, double x)
     return (t->weight[i] - before) / (t->value[i + 1] - t->value[i]);
 }
 
+// Mean of x^order from a to b, without a difference of powers: cells may be narrow.
+static double mean_power(double a, double b, int order)
+{
+    double sum = 0;
+    for (int k = 0; k <= order; k++)
+        sum += power_of(a, k) * power_of(b, order - k);
+    return sum / (order + 1);
+}
+
 static double histogram_moment(const lw_timing *t, int order)
 {
     double sum = 0, before = 0;
     for (int i = 0; i < t->n; i++) {
-        double a = t->value[i], b = t->value[i + 1];
-        sum += (t->weight[i] - before) * (power_of(b, order + 1) - power_of(a, order + 1)) /
-               ((order + 1) * (b - a));
+        sum += (t->weight[i] - before) * mean_power(t->value[i], t->value[i + 1], order);
         before = t->weight[i];
     }
     return sum;
@@ -237,8 +260,18 @@ lw_status lw_timing_histogram(int n, const double *edge, const double *weight, l
     lw_timing *t = lw__timing_node(&histogram_family, NULL, NULL);
     if (t == NULL)
         return lw__timing_give(t, out, err);
+    // cells without weight at the ends go, so that the support is what is drawn
+    int first = 0, last = n;
+    while (weight != NULL && first + 1 < last && weight[first] == 0)
+        first++;
+    while (weight != NULL && last - 1 > first && weight[last - 1] == 0)
+        last--;
     lw_status status = set_lists(t, n, edge, n + 1, weight, err);
     if (status == LW_OK) {
+        t->n = n = last - first;
+        memmove(t->value, t->value + first, sizeof(double) * (size_t)(n + 1));
+        memmove(t->weight, t->weight + first, sizeof(double) * (size_t)n);
+        t->weight[n - 1] = 1;
         t->lo = t->value[0];
         t->hi = t->value[n];
         t->n_streams = 1;
@@ -317,10 +350,16 @@ typedef struct reading {
 static lw_status take_line(reading *r, char *line, int number)
 {
     char *text = line + strspn(line, " \t"), *end;
-    size_t length = strcspn(text, "\r\n");
+    size_t length = strcspn(text, "\n");
+    while (length > 0 && text[length - 1] == '\r')
+        length--;
     text[length] = 0;
     if (*text == 0 || *text == '#' || *text == ';')
         return LW_OK;
+    if (strchr(text, '\r') != NULL)
+        return lw_error_set(r->err, LW_ERR_INPUT,
+                            "%s:%d: a carriage return within the line; lines end with a line feed",
+                            r->path, number);
     double value = strtod(text, &end);
     end += strspn(end, " \t");
     if (end == text || *end != 0 || !isfinite(value))

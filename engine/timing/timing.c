@@ -31,6 +31,13 @@ lw_status lw__timing_give(lw_timing *t, lw_timing **out, lw_error *err)
 {
     if (t == NULL)
         return lw_error_set(err, LW_ERR_MEMORY, "no memory for a timing");
+    if (!isfinite(t->hi - t->lo)) {
+        lw_error_set(err, LW_ERR_NOT_FINITE,
+                     "the timing reaches from %.6g to %.6g s; a finite range is wanted", t->lo,
+                     t->hi);
+        lw_timing_free(t);
+        return LW_ERR_NOT_FINITE;
+    }
     *out = t;
     return LW_OK;
 }
