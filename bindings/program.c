@@ -13,6 +13,7 @@
 #include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
+#include <unistd.h>
 
 #define EXIT_INTERNAL 70
 #define EXIT_IO 74
@@ -43,7 +44,7 @@ static int outcome(lua_State *L, int status, const char *why)
     return 2;
 }
 
-// write(folder, file, text)
+// write(folder, file, text): true; or nil, message, exit code
 static int host_write(lua_State *L)
 {
     char why[700] = "";
@@ -51,7 +52,10 @@ static int host_write(lua_State *L)
     const char *text = luaL_checklstring(L, 3, &n_bytes);
     int status = lw__program_write(luaL_checkstring(L, 1), luaL_checkstring(L, 2), text, n_bytes,
                                    why, sizeof why);
-    return outcome(L, status, why);
+    lua_settop(L, 0);
+    outcome(L, status, why);
+    lua_pushinteger(L, status);
+    return status == 0 ? 1 : 3;
 }
 
 // make_folder(path)
@@ -80,7 +84,9 @@ static int put(lua_State *L, FILE *stream)
 
 static int host_out(lua_State *L)
 {
-    return put(L, stdout);
+    put(L, stdout);
+    fflush(stdout); // a fault shows when the program ends
+    return 0;
 }
 
 static int host_err(lua_State *L)
@@ -88,13 +94,17 @@ static int host_err(lua_State *L)
     return put(L, stderr);
 }
 
-static const luaL_Reg host[] = {{"load", host_load},
-                                {"write", host_write},
-                                {"make_folder", host_make_folder},
-                                {"exists", host_exists},
-                                {"out", host_out},
-                                {"err", host_err},
-                                {NULL, NULL}};
+// again(): a new allowance of instructions, for the next stretch of the study
+static int host_again(lua_State *L)
+{
+    lw__program_allow_again(L);
+    return 0;
+}
+
+static const luaL_Reg host[] = {
+    {"load", host_load},     {"write", host_write}, {"make_folder", host_make_folder},
+    {"exists", host_exists}, {"out", host_out},     {"err", host_err},
+    {"again", host_again},   {NULL, NULL}};
 
 // ---- main
 
@@ -102,6 +112,19 @@ typedef struct command_line {
     int n;
     char **arguments;
 } command_line;
+
+// Whether a stream is a terminal on which a line can be written over.
+static int is_terminal(int stream)
+{
+    const char *terminal = getenv("TERM");
+    return isatty(stream) && terminal != NULL && strcmp(terminal, "dumb") != 0;
+}
+
+static int takes_colour(int stream)
+{
+    const char *plain = getenv("NO_COLOR");
+    return is_terminal(stream) && (plain == NULL || plain[0] == 0);
+}
 
 // command.main(arguments, host): leaves the exit code.
 static int run_command(lua_State *L)
@@ -118,6 +141,10 @@ static int run_command(lua_State *L)
         lua_rawseti(L, -2, i);
     }
     luaL_newlib(L, host);
+    lua_pushboolean(L, takes_colour(STDOUT_FILENO));
+    lua_setfield(L, -2, "colour");
+    lua_pushboolean(L, is_terminal(STDERR_FILENO));
+    lua_setfield(L, -2, "progress");
     lua_call(L, 2, 1);
     return 1;
 }

@@ -7,6 +7,7 @@
 
 #include <errno.h>
 #include <fcntl.h>
+#include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -14,6 +15,8 @@
 #include <unistd.h>
 
 #define LARGEST (64 << 20)
+#define EXIT_CANNOT_CREATE 73
+#define EXIT_IO 74
 
 static void reason(char *why, size_t size, const char *path, const char *text)
 {
@@ -85,25 +88,44 @@ static int write_and_flush(int fd, const char *text, size_t n_bytes)
     return fsync(fd);
 }
 
+static int write_renamed(const char *partial, const char *final, const char *text, size_t n_bytes)
+{
+    int fd = open(partial, O_WRONLY | O_CREAT | O_TRUNC | O_CLOEXEC, 0666);
+    if (fd < 0)
+        return EXIT_CANNOT_CREATE;
+    int failed = write_and_flush(fd, text, n_bytes) != 0;
+    int why = errno;
+    if (close(fd) != 0 && !failed) {
+        failed = 1;
+        why = errno;
+    }
+    if (!failed && rename(partial, final) == 0)
+        return 0;
+    why = failed ? why : errno;
+    unlink(partial);
+    errno = why;
+    return failed ? EXIT_IO : EXIT_CANNOT_CREATE;
+}
+
 int lw__program_write(const char *folder, const char *file, const char *text, size_t n_bytes,
                       char *why, size_t size)
 {
     size_t room = strlen(folder) + strlen(file) + 40;
     char *final = malloc(room), *partial = malloc(room);
-    int status = -1;
+    int status = EXIT_IO;
     if (final != NULL && partial != NULL) {
+        sigset_t ending, before;
+        sigemptyset(&ending);
+        sigaddset(&ending, SIGINT);
+        sigaddset(&ending, SIGTERM);
+        sigaddset(&ending, SIGHUP);
+        sigprocmask(SIG_BLOCK, &ending, &before);
         snprintf(final, room, "%s/%s", folder, file);
-        snprintf(partial, room, "%s/.%s.%ld.partial", folder, file, (long)getpid());
-        int fd = open(partial, O_WRONLY | O_CREAT | O_TRUNC | O_CLOEXEC, 0666);
-        status = fd < 0 ? -1 : write_and_flush(fd, text, n_bytes);
-        if (fd >= 0)
-            status |= close(fd);
-        if (status == 0)
-            status = rename(partial, final);
-        if (status != 0) {
+        snprintf(partial, room, "%s/.%ld.partial", folder, (long)getpid());
+        status = write_renamed(partial, final, text, n_bytes);
+        if (status != 0)
             reason(why, size, final, strerror(errno));
-            unlink(partial);
-        }
+        sigprocmask(SIG_SETMASK, &before, NULL);
     } else {
         reason(why, size, file, "no memory");
     }

@@ -8,7 +8,9 @@
 // there is no such file. Free with free().
 char *lw__program_read(const char *path, size_t *n_bytes, int *missing, char *why, size_t size);
 
-// Write folder/file whole: under a temporary name, flushed to the disk, then renamed. 0 when done.
+// Write folder/file whole: under a temporary name, flushed to the disk, then renamed. Signals that
+// end the program wait until the file stands or is gone. Returns 0, or an exit code of sysexits: 73
+// where the file cannot be made, 74 where its bytes cannot be written.
 int lw__program_write(const char *folder, const char *file, const char *text, size_t n_bytes,
                       char *why, size_t size);
 

@@ -3,16 +3,22 @@
 // A study's chunk has its own table of globals: base functions that reach no file, string without
 // dump, table, utf8, coroutine, and `math` with the engine's elementary functions. It can require
 // "latewood" and files of its own folder. Instructions are counted; once they are used up every
-// further one raises again, so that no pcall can go on.
+// further one raises again, so that no pcall can go on. Time inside one call of a C function (a
+// pattern that never ends) is not counted.
 //
 // Invariants
 // 1. Nothing of os, io, package or debug can be reached from a study.
 // 2. Only text is compiled, never bytecode.
+// 3. What shipped modules call is theirs: a study has copies of the libraries and of the module's
+//    tables, and changes only those.
+// 4. pairs walks in one order, so that what a study builds does not depend on addresses.
 
 #include "program_sandbox.h"
 
+#include "captured.h"
 #include "latewood_lua.h"
 #include "program_files.h"
+#include "program_pairs.h"
 #include "shipped.h"
 
 #include <lauxlib.h>
@@ -32,6 +38,9 @@
 
 #define HOOK_EVERY 100000
 #define SHIPPED "@scripts/latewood/"
+#define USED_UP                                                                                    \
+    "the study used more than %d million instructions at one stretch; is there a loop without "    \
+    "end?"
 
 // ---- limits
 
@@ -60,6 +69,13 @@ static int64_t *instruction_count(lua_State *L)
     return count;
 }
 
+void lw__program_allow_again(lua_State *L)
+{
+    int64_t *count = instruction_count(L);
+    if (*count <= LW__PROGRAM_INSTRUCTIONS)
+        *count = 0;
+}
+
 int lw__program_exhausted(lua_State *L)
 {
     const int64_t *count = instruction_count(L);
@@ -76,11 +92,21 @@ static void on_count(lua_State *L, lua_Debug *ar)
     if (strncmp(ar->source, SHIPPED, sizeof SHIPPED - 1) == 0)
         return;
     lua_sethook(L, on_count, LUA_MASKCOUNT, 1); // raise again at once, whoever catches this
-    lua_pushfstring(L,
-                    "%s:%d: the study used more than %d million instructions; is there a loop "
-                    "without end?",
-                    ar->short_src, ar->currentline, (int)(LW__PROGRAM_INSTRUCTIONS / 1000000));
+    lua_pushfstring(L, "%s:%d: " USED_UP, ar->short_src, ar->currentline,
+                    (int)(LW__PROGRAM_INSTRUCTIONS / 1000000));
     lua_error(L);
+}
+
+// Upvalue 1: coroutine.create or wrap. Once the instructions are used up no coroutine begins: each
+// would have HOOK_EVERY instructions of its own before it is stopped.
+static int begin_coroutine(lua_State *L)
+{
+    if (lw__program_exhausted(L))
+        return luaL_error(L, USED_UP, (int)(LW__PROGRAM_INSTRUCTIONS / 1000000));
+    lua_pushvalue(L, lua_upvalueindex(1));
+    lua_insert(L, 1);
+    lua_call(L, lua_gettop(L) - 1, LUA_MULTRET);
+    return lua_gettop(L);
 }
 
 // ---- modules
@@ -243,32 +269,75 @@ static void copy_names(lua_State *L, int from, int to, const char *const *names)
     }
 }
 
-// A copy of a library without some of its names, left on the stack.
-static void copy_library(lua_State *L, const char *name, const char *without)
+// A flat copy of the table on top of the stack without one of its names, in its place.
+static void copy_table(lua_State *L, const char *without)
 {
+    luaL_checkstack(L, 6, NULL);
     lua_newtable(L);
-    lua_getglobal(L, name);
-    for (lua_pushnil(L); lua_next(L, -2) != 0; lua_pop(L, 1)) {
+    for (lua_pushnil(L); lua_next(L, -3) != 0; lua_pop(L, 1)) {
         if (without != NULL && strcmp(lua_tostring(L, -2), without) == 0)
             continue;
         lua_pushvalue(L, -2);
         lua_pushvalue(L, -2);
-        lua_rawset(L, -6);
+        lua_rawset(L, -5);
+    }
+    if (lua_getmetatable(L, -2))
+        lua_setmetatable(L, -2);
+    lua_remove(L, -2);
+}
+
+// A copy of the module and of its tables, left on the stack; they count as constant, as the
+// module's own do. Parts written in Lua are shared: they are loaded when first asked for.
+static void copy_module(lua_State *L, int module)
+{
+    lua_pushvalue(L, module);
+    copy_table(L, NULL);
+    lw__lua_keep_constant(L, -1);
+    static const char *const tables[] = {"plant", "source", "timing", "law", "math"};
+    for (size_t i = 0; i < sizeof tables / sizeof *tables; i++) {
+        lua_getfield(L, -1, tables[i]);
+        copy_table(L, NULL);
+        lw__lua_keep_constant(L, -1);
+        lua_setfield(L, -2, tables[i]);
+    }
+}
+
+// Strings find their methods in a table of which nobody has another name.
+static void protect_strings(lua_State *L)
+{
+    lua_pushliteral(L, "");
+    lua_getmetatable(L, -1);
+    lua_getglobal(L, "string");
+    copy_table(L, "dump");
+    lua_setfield(L, -2, "__index");
+    lua_pushboolean(L, 0);
+    lua_setfield(L, -2, "__metatable");
+    lua_pop(L, 2);
+}
+
+static void limit_coroutines(lua_State *L, int globals)
+{
+    static const char *const beginning[] = {"create", "wrap"};
+    lua_getfield(L, globals, "coroutine");
+    for (size_t i = 0; i < sizeof beginning / sizeof *beginning; i++) {
+        lua_getfield(L, -1, beginning[i]);
+        lua_pushcclosure(L, begin_coroutine, 1);
+        lua_setfield(L, -2, beginning[i]);
     }
     lua_pop(L, 1);
 }
 
-static void make_globals(lua_State *L, int module)
+// The globals of a study, in the registry. The study's copy of the module is on top of the stack.
+static void make_globals(lua_State *L)
 {
-    static const char *const base[] = {
-        "assert",   "error",    "getmetatable", "ipairs", "next",     "pairs",
-        "pcall",    "rawequal", "rawget",       "rawlen", "rawset",   "select",
-        "tonumber", "tostring", "type",         "xpcall", "_VERSION", NULL};
-    static const luaL_Reg own[] = {{"load", safe_load},
-                                   {"setmetatable", safe_setmetatable},
-                                   {"print", print_aside},
-                                   {"require", study_require},
-                                   {NULL, NULL}};
+    static const char *const base[] = {"assert",   "error",    "getmetatable", "ipairs", "next",
+                                       "pcall",    "rawequal", "rawget",       "rawlen", "rawset",
+                                       "select",   "tonumber", "tostring",     "type",   "xpcall",
+                                       "_VERSION", NULL};
+    static const luaL_Reg own[] = {
+        {"load", safe_load},        {"setmetatable", safe_setmetatable}, {"print", print_aside},
+        {"require", study_require}, {"pairs", lw__program_pairs},        {NULL, NULL}};
+    static const char *const libraries[] = {"table", "utf8", "coroutine", "string"};
     lua_newtable(L);
     int globals = lua_gettop(L);
     lua_pushglobaltable(L);
@@ -277,21 +346,13 @@ static void make_globals(lua_State *L, int module)
     luaL_setfuncs(L, own, 0);
     lua_pushvalue(L, globals);
     lua_setfield(L, globals, "_G");
-    static const char *const libraries[] = {"table", "utf8", "coroutine"};
     for (size_t i = 0; i < sizeof libraries / sizeof *libraries; i++) {
-        copy_library(L, libraries[i], NULL);
+        lua_getglobal(L, libraries[i]);
+        copy_table(L, "dump");
         lua_setfield(L, globals, libraries[i]);
     }
-    copy_library(L, "string", "dump");
-    lua_pushliteral(L, "");
-    lua_getmetatable(L, -1); // "x":rep(3) must find the same functions
-    lua_pushvalue(L, -3);
-    lua_setfield(L, -2, "__index");
-    lua_pushboolean(L, 0);
-    lua_setfield(L, -2, "__metatable");
-    lua_pop(L, 2);
-    lua_setfield(L, globals, "string");
-    lua_getfield(L, module, "math");
+    limit_coroutines(L, globals);
+    lua_getfield(L, globals - 1, "math");
     lua_setfield(L, globals, "math");
     lua_setfield(L, LUA_REGISTRYINDEX, GLOBALS);
 }
@@ -322,10 +383,12 @@ void lw__program_open(lua_State *L)
     lua_setfield(L, LUA_REGISTRYINDEX, LATEWOOD_SCRIPTS);
     lua_pushcfunction(L, resolve);
     lua_setfield(L, LUA_REGISTRYINDEX, LATEWOOD_RESOLVE);
+    protect_strings(L);
     luaL_requiref(L, "latewood", luaopen_latewood, 0);
-    make_globals(L, lua_gettop(L));
+    copy_module(L, lua_gettop(L));
+    make_globals(L);
     lua_newtable(L);
-    lua_pushvalue(L, -2);
+    lua_insert(L, -2);
     lua_setfield(L, -2, "latewood");
     lua_setfield(L, LUA_REGISTRYINDEX, LOADED);
     *(int64_t *)lua_newuserdatauv(L, sizeof(int64_t), 0) = 0;
@@ -371,6 +434,11 @@ int lw__program_study(lua_State *L, const char *path)
         status = lua_pcall(L, 0, 1, 0);
     if (status == LUA_OK)
         return 0;
-    luaL_tolstring(L, -1, NULL);
+    if (status == LUA_ERRMEM)
+        lua_pushfstring(L, "%s: not enough memory; a study may use %d MiB", path,
+                        (int)(LW__PROGRAM_MEMORY >> 20));
+    else if (!lua_isstring(L, -1))
+        lua_pushfstring(L, "%s: raised a value of type %s instead of a message", path,
+                        luaL_typename(L, -1));
     return EXIT_DATA;
 }

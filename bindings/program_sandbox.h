@@ -6,7 +6,7 @@
 #include <stddef.h>
 
 #define LW__PROGRAM_MEMORY ((size_t)1 << 30)         // bytes
-#define LW__PROGRAM_INSTRUCTIONS INT64_C(2000000000) // Lua instructions
+#define LW__PROGRAM_INSTRUCTIONS INT64_C(2000000000) // Lua instructions, see ..._allow_again
 
 // Memory of a state, counted against the limit: the allocator's context.
 typedef struct lw__budget {
@@ -21,6 +21,10 @@ void lw__program_open(lua_State *L);
 // Run a study file inside the sandbox. Leaves one value and returns 0, or leaves a message and
 // returns an exit code. Called inside a protected call.
 int lw__program_study(lua_State *L, const char *path);
+
+// Begin another stretch: the file of the study, the building of one rig and each run may use the
+// instructions anew. Once they were used up nothing brings them back.
+void lw__program_allow_again(lua_State *L);
 
 // Nonzero once the instructions are used up.
 int lw__program_exhausted(lua_State *L);
