@@ -1,12 +1,15 @@
 // Quantities: SI numbers or text with a unit ("50 us", "20 kHz", "2 mH", "0.05 N m/A", "37 %").
 //
 // Text is: a decimal number, an optional space, a unit. A unit is a product of unit names, each
-// with an optional SI prefix and an optional ^integer, joined by a space, `*` or a middle dot, with
-// at most one `/` followed by the divisor (a product). Names: s min h m g A K Hz N Pa J W V ohm
-// (and the Greek letter) H F C T Wb S rad deg rpm degC is not one; 1 stands for no unit. Timing
-// units of their own: "cycles" (of a core's clock), "%" (of a period, or a share),
-// "sample"/"samples" (of an adc's period). These take no prefix and stand alone.
-// Angles count as dimensionless radians; deg and rpm scale.
+// with an optional SI prefix (f p n u m c k M G T, and the two signs for micro) and an optional
+// ^integer from -6 to 6, joined by a space, `*` or a middle dot, with at most one `/` followed by
+// the divisor (a product); nothing before the `/` stands for 1 ("5 /s", "1/s"). Names: s min h m g
+// A K Hz N Pa J W V ohm (and the Greek letter) H F C T Wb S rad deg rpm; degC is not one; 1 stands
+// for no unit; min, h, deg and rpm take no prefix. Timing units of their own: "cycles" (of a core's
+// clock), "%" (of a period, or a share), "sample"/"samples" (of an adc's period). These take no
+// prefix and stand alone.
+// Angles count as dimensionless radians; deg and rpm scale. But Hz and an angle never stand for
+// each other: where Hz is wanted "40 rad/s" is refused, and "50 Hz" where rad/s is.
 #ifndef LATEWOOD_QUANTITY_H
 #define LATEWOOD_QUANTITY_H
 
@@ -51,10 +54,12 @@ LW_API lw_status lw_quantity_parse_as(const char *text, const char *unit, double
 // of seconds before rounding.
 LW_API lw_status lw_duration_parse(const char *text, lw_tick *tick, double *exact, lw_error *err);
 
-// Parse a period: a time ("50 us") or a frequency ("30 kHz"), kept as an exact fraction of ticks.
+// Parse a period: a time ("50 us") or a frequency ("30 kHz", no angular one), kept as an exact
+// fraction of ticks; the last of its continued fraction that fits where 63 bits are short.
 // Must be >= 1 tick and <= LW_TICK_MAX.
 LW_API lw_status lw_period_parse(const char *text, lw_period *out, lw_error *err);
-// The same from plain seconds: the exact fraction of the shortest decimal that gives this double.
+// The same from plain seconds: the exact fraction of the shortest decimal that gives this double,
+// or the nearest tick where that decimal is no fraction of 63-bit numbers of seconds.
 LW_API lw_status lw_period_from_seconds(double seconds, lw_period *out, lw_error *err);
 
 // Write a time with a fitting unit and no more digits than needed: "50 us", "1.000003 ms".

@@ -21,7 +21,8 @@ typedef struct lw_period {
     int64_t den;
 } lw_period;
 
-// Nearest tick to `seconds`, halves up.
+// Nearest tick to `seconds`, halves up. The product with 1e12 is rounded to a double first, so that
+// 2.5e-12 is a half, as it is written.
 //   returns LW_ERR_TIME if not finite or beyond +-LW_TICK_MAX
 LW_API lw_status lw_tick_from_seconds(double seconds, lw_tick *tick);
 LW_API double lw_tick_seconds(lw_tick tick);
