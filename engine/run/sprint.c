@@ -34,7 +34,6 @@ typedef struct dash {
     lw_tick stepped_at, anchor;
     int n_in, n_out;
     int other_inputs; // some input of the group but ours may have changed since the anchor
-    const double *in[LW_LAW_MAX_PORTS]; // where the law's inputs stand
 } dash;
 
 // The least of the timers that are not the loop's own.
@@ -47,7 +46,7 @@ static lw_tick others(const lw__lane *s, const lw__sprint *c)
     return least;
 }
 
-static dash begin_dash(lw__lane *s, const lw__sprint *c, lw_tick until)
+LW__INLINE dash begin_dash(const lw__lane *s, const lw__sprint *c, lw_tick until)
 {
     const lw__group *g = c->group;
     const lw__loop *l = c->loop;
@@ -76,13 +75,10 @@ static dash begin_dash(lw__lane *s, const lw__sprint *c, lw_tick until)
               .n_out = l->n_out,
               .other_inputs = g->n_u > 1,
               .whole = period.den == 1 && until < LW_TICK_MAX - period.num ? period.num : 0};
-    for (int k = 0; k < l->n_in; k++)
-        d.in[k] = l->inputs[k].at.kind == LW__SIGNAL_CELL ? &LW__F(l->inputs[k].at.index)
-                                                          : &l->inputs[k].constant;
     return d;
 }
 
-static void end_dash(lw__lane *s, const dash *d)
+LW__INLINE void end_dash(lw__lane *s, const dash *d)
 {
     const lw__loop *l = d->c->loop;
     LW__I(l->head) = d->head;
@@ -180,14 +176,14 @@ LW__INLINE lw_tick dash_latency(lw__lane *s, const lw__loop *l, int64_t job)
     return (lw_tick)floor(value * y->scale + 0.5);
 }
 
-LW__INLINE void dash_step(lw__lane *s, dash *d)
+LW__INLINE void dash_step(lw__lane *s, dash *d, const double *const *from)
 {
     const lw__loop *l = d->c->loop;
     double in[LW_LAW_MAX_PORTS];
     int64_t job = d->job++;
     lw_tick at = s->now + dash_latency(s, l, job);
     for (int k = 0; k < d->n_in; k++)
-        in[k] = *d->in[k];
+        in[k] = *from[k];
     lw_law_time time = {.now = lw__seconds(s->now),
                         .nominal = l->nominal,
                         .dt = d->stepped_at < 0 ? l->nominal : lw__seconds(s->now - d->stepped_at),
@@ -224,6 +220,11 @@ LW__INLINE void dash_step(lw__lane *s, dash *d)
 int64_t lw__sprint_run(lw__lane *s, const lw__sprint *sprint, lw_tick until)
 {
     dash own = begin_dash(s, sprint, until), *d = &own;
+    const double *from[LW_LAW_MAX_PORTS]; // where the law's inputs stand
+    const lw__loop *l = sprint->loop;
+    for (int k = 0; k < l->n_in; k++)
+        from[k] = l->inputs[k].at.kind == LW__SIGNAL_CELL ? &LW__F(l->inputs[k].at.index)
+                                                          : &l->inputs[k].constant;
     int64_t handled = 0;
     if (d->count > 1 || (d->count == 1 && d->arrive > d->sample))
         return 0;
@@ -242,7 +243,7 @@ int64_t lw__sprint_run(lw__lane *s, const lw__sprint *sprint, lw_tick until)
             dash_arrive(s, d);
         dash_convert(s, d);
         if (s->status == LW_OK)
-            dash_step(s, d);
+            dash_step(s, d, from);
     }
     end_dash(s, d);
     return handled;
