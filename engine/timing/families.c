@@ -4,8 +4,6 @@
 
 #include "timing/family.h"
 
-#include "timing/quadrature.h"
-
 #include <latewood/elementary.h>
 
 #include <math.h>
@@ -21,12 +19,6 @@ static double draw_by_quantile(const lw_timing *t, lw__draw_at *at)
     double u = lw__timing_uniform_of(at);
     const double *p = &u;
     return t->family->quantile(t, &p);
-}
-
-// Raw moment as the mean of the quantile's power over u: smooth for every family here.
-static double moment_by_quantile(const lw_timing *t, int order)
-{
-    return lw__quadrature_moment(t, order);
 }
 
 static double hold(const lw_timing *t, double x)
@@ -78,17 +70,30 @@ static void constant_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "constant %.6g s", t->lo);
 }
 
-static const lw__family constant_family = {"constant",       constant_draw, constant_quantile,
-                                           constant_cdf,     no_density,    constant_moment,
-                                           constant_describe};
+static void constant_cuts(const lw_timing *t, lw__points *out)
+{
+    lw__points_add(out, t->lo, 0, 1);
+}
+
+static void constant_points(const lw_timing *t, const lw__how *how, lw__points *out)
+{
+    (void)how;
+    lw__points_add(out, t->lo, 1, 1);
+}
+
+static const lw__family constant_family = {"constant",        constant_draw, constant_quantile,
+                                           constant_cdf,      no_density,    constant_moment,
+                                           constant_describe, constant_cuts, constant_points};
 
 lw_status lw_timing_constant(double value, lw_timing **out, lw_error *err)
 {
     if (!isfinite(value))
         return lw__timing_bad(err, "the constant", value, "a finite number is wanted");
     lw_timing *t = lw__timing_node(&constant_family, NULL, NULL);
-    if (t != NULL)
+    if (t != NULL) {
         t->lo = t->hi = value;
+        t->has_atoms = 1;
+    }
     return lw__timing_give(t, out, err);
 }
 
@@ -103,6 +108,7 @@ static lw_status give(const lw__family *family, double lo, double hi, const doub
         t->lo = lo;
         t->hi = hi;
         t->n_streams = 1;
+        t->has_density = 1;
         for (int i = 0; i < 4; i++)
             t->p[i] = p[i];
     }
@@ -146,9 +152,9 @@ static void uniform_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "uniform %.6g to %.6g s", t->lo, t->hi);
 }
 
-static const lw__family uniform_family = {"uniform",       uniform_draw,    uniform_quantile,
-                                          uniform_cdf,     uniform_density, moment_by_quantile,
-                                          uniform_describe};
+static const lw__family uniform_family = {"uniform",        uniform_draw,    uniform_quantile,
+                                          uniform_cdf,      uniform_density, lw__points_moment,
+                                          uniform_describe, lw__smooth_cuts, lw__smooth_points};
 
 lw_status lw_timing_uniform(double lo, double hi, lw_timing **out, lw_error *err)
 {
@@ -190,9 +196,16 @@ static void triangular_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "triangular %.6g, %.6g, %.6g s", t->lo, t->p[0], t->hi);
 }
 
+static void triangular_cuts(const lw_timing *t, lw__points *out)
+{
+    lw__smooth_cuts(t, out);
+    lw__points_add(out, t->p[0], 0, 1);
+}
+
 static const lw__family triangular_family = {
-    "triangular",       draw_by_quantile,   triangular_quantile, triangular_cdf,
-    triangular_density, moment_by_quantile, triangular_describe};
+    "triangular",        draw_by_quantile,   triangular_quantile,
+    triangular_cdf,      triangular_density, lw__points_moment,
+    triangular_describe, triangular_cuts,    lw__smooth_points};
 
 lw_status lw_timing_triangular(double lo, double mode, double hi, lw_timing **out, lw_error *err)
 {
@@ -241,9 +254,9 @@ static void normal_describe(const lw_timing *t, char *text, int size)
              t->p[0], t->p[1], t->lo, t->hi);
 }
 
-static const lw__family normal_family = {"normal",       draw_by_quantile, normal_quantile,
-                                         normal_cdf,     normal_density,   moment_by_quantile,
-                                         normal_describe};
+static const lw__family normal_family = {"normal",        draw_by_quantile, normal_quantile,
+                                         normal_cdf,      normal_density,   lw__points_moment,
+                                         normal_describe, lw__smooth_cuts,  lw__smooth_points};
 
 lw_status lw_timing_normal(double mean, double deviation, double lo, double hi, lw_timing **out,
                            lw_error *err)
@@ -297,8 +310,9 @@ static void log_normal_describe(const lw_timing *t, char *text, int size)
 }
 
 static const lw__family log_normal_family = {
-    "log-normal",       draw_by_quantile,   log_normal_quantile, log_normal_cdf,
-    log_normal_density, moment_by_quantile, log_normal_describe};
+    "log-normal",        draw_by_quantile,   log_normal_quantile,
+    log_normal_cdf,      log_normal_density, lw__points_moment,
+    log_normal_describe, lw__smooth_cuts,    lw__smooth_points};
 
 lw_status lw_timing_log_normal(double median, double sigma, double shift, double hi,
                                lw_timing **out, lw_error *err)
@@ -347,8 +361,9 @@ static void exponential_describe(const lw_timing *t, char *text, int size)
 }
 
 static const lw__family exponential_family = {
-    "exponential",       draw_by_quantile,   exponential_quantile, exponential_cdf,
-    exponential_density, moment_by_quantile, exponential_describe};
+    "exponential",        draw_by_quantile,    exponential_quantile,
+    exponential_cdf,      exponential_density, lw__points_moment,
+    exponential_describe, lw__smooth_cuts,     lw__smooth_points};
 
 lw_status lw_timing_exponential(double shift, double mean, double hi, lw_timing **out,
                                 lw_error *err)
@@ -393,9 +408,9 @@ static void gumbel_describe(const lw_timing *t, char *text, int size)
              t->p[0], t->p[1], t->lo, t->hi);
 }
 
-static const lw__family gumbel_family = {"Gumbel",       draw_by_quantile, gumbel_quantile,
-                                         gumbel_cdf,     gumbel_density,   moment_by_quantile,
-                                         gumbel_describe};
+static const lw__family gumbel_family = {"Gumbel",        draw_by_quantile, gumbel_quantile,
+                                         gumbel_cdf,      gumbel_density,   lw__points_moment,
+                                         gumbel_describe, lw__smooth_cuts,  lw__smooth_points};
 
 lw_status lw_timing_gumbel(double location, double scale, double lo, double hi, lw_timing **out,
                            lw_error *err)

@@ -2,6 +2,8 @@
 #ifndef LATEWOOD_TIMING_FAMILY_H
 #define LATEWOOD_TIMING_FAMILY_H
 
+#include "timing/points.h"
+
 #include <latewood/timing.h>
 
 // Where a draw happens: address without stream, streams and state of the node at hand. A node
@@ -23,6 +25,8 @@ typedef struct lw__family {
     double (*density)(const lw_timing *t, double x);
     double (*moment)(const lw_timing *t, int order);
     void (*describe)(const lw_timing *t, char *text, int size);
+    void (*cuts)(const lw_timing *t, lw__points *out);
+    void (*points)(const lw_timing *t, const lw__how *how, lw__points *out);
 } lw__family;
 
 struct lw_timing {
@@ -35,7 +39,7 @@ struct lw_timing {
     double lo, hi;          // support
     lw_timing *a, *b;
     int64_t every, phase; // of stalls
-    int flag;
+    int has_atoms, has_density;
 };
 
 #define LW__ONCE_A_RUN UINT32_MAX // job number of draws made once a run
@@ -48,8 +52,5 @@ double lw__timing_uniform_of(lw__draw_at *at); // takes one stream
 
 // Inverse of the cdf by bisection on the support, to the last bit.
 double lw__timing_invert(const lw_timing *t, double p);
-// Integral of f over [lo, hi] by Gauss-Legendre on `pieces` equal pieces.
-double lw__timing_integral(double (*f)(const void *context, double x), const void *context,
-                           double lo, double hi, int pieces);
 
 #endif

@@ -89,6 +89,19 @@ static lw_status give(lw_timing *t, lw_status status, lw_timing **out)
     return status;
 }
 
+static void list_cuts(const lw_timing *t, lw__points *out)
+{
+    for (int i = 0; i < t->n; i++)
+        lw__points_add(out, t->value[i], 0, 1);
+}
+
+static void list_points(const lw_timing *t, const lw__how *how, lw__points *out)
+{
+    (void)how;
+    for (int i = 0; i < t->n; i++)
+        lw__points_add(out, t->value[i], t->weight[i] - (i > 0 ? t->weight[i - 1] : 0), 1);
+}
+
 // ---- discrete: values sorted, so that the quantile rises
 
 static double discrete_quantile(const lw_timing *t, const double **u)
@@ -131,9 +144,9 @@ static void discrete_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "one of %d values, %.6g to %.6g s", t->n, t->lo, t->hi);
 }
 
-static const lw__family discrete_family = {"discrete",       draw_by_quantile, discrete_quantile,
-                                           discrete_cdf,     no_density,       discrete_moment,
-                                           discrete_describe};
+static const lw__family discrete_family = {"discrete",        draw_by_quantile, discrete_quantile,
+                                           discrete_cdf,      no_density,       discrete_moment,
+                                           discrete_describe, list_cuts,        list_points};
 
 typedef struct weighted {
     double value, weight;
@@ -184,12 +197,13 @@ lw_status lw_timing_discrete(int n, const double *value, const double *weight, l
     if (status == LW_OK) {
         t->lo = t->value[0];
         t->hi = t->value[t->n - 1];
+        t->has_atoms = 1;
         t->n_streams = 1;
     }
     return give(t, status, out);
 }
 
-// ---- histogram: value holds n + 1 edges; flag 1 tells it from points
+// ---- histogram: value holds n + 1 edges
 
 static double histogram_quantile(const lw_timing *t, const double **u)
 {
@@ -244,9 +258,15 @@ static void histogram_describe(const lw_timing *t, char *text, int size)
     snprintf(text, (size_t)size, "histogram of %d cells, %.6g to %.6g s", t->n, t->lo, t->hi);
 }
 
+static void histogram_cuts(const lw_timing *t, lw__points *out)
+{
+    for (int i = 0; i <= t->n; i++)
+        lw__points_add(out, t->value[i], 0, 1);
+}
+
 static const lw__family histogram_family = {
-    "histogram",       draw_by_quantile, histogram_quantile, histogram_cdf,
-    histogram_density, histogram_moment, histogram_describe};
+    "histogram",      draw_by_quantile,   histogram_quantile, histogram_cdf,    histogram_density,
+    histogram_moment, histogram_describe, histogram_cuts,     lw__smooth_points};
 
 lw_status lw_timing_histogram(int n, const double *edge, const double *weight, lw_timing **out,
                               lw_error *err)
@@ -275,7 +295,7 @@ lw_status lw_timing_histogram(int n, const double *edge, const double *weight, l
         t->lo = t->value[0];
         t->hi = t->value[n];
         t->n_streams = 1;
-        t->flag = 1;
+        t->has_density = 1;
     }
     return give(t, status, out);
 }
@@ -314,8 +334,9 @@ static void replay_describe(const lw_timing *t, char *text, int size)
              t->lo, t->hi, t->every ? "a start drawn once a run" : "the first on");
 }
 
-static const lw__family replay_family = {"replay",   replay_draw,   NULL,           replay_share,
-                                         no_density, replay_moment, replay_describe};
+static const lw__family replay_family = {"replay",        replay_draw, NULL,
+                                         replay_share,    no_density,  replay_moment,
+                                         replay_describe, list_cuts,   list_points};
 
 lw_status lw_timing_replay(int n, const double *value, int random_start, lw_timing **out,
                            lw_error *err)
@@ -327,6 +348,7 @@ lw_status lw_timing_replay(int n, const double *value, int random_start, lw_timi
         return lw__timing_give(t, out, err);
     lw_status status = set_lists(t, n, value, n, NULL, err);
     if (status == LW_OK) {
+        t->has_atoms = 1;
         t->lo = t->hi = value[0];
         for (int i = 1; i < n; i++) {
             t->lo = value[i] < t->lo ? value[i] : t->lo;

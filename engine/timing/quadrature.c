@@ -1,8 +1,8 @@
-// Quadrature: moments, and nodes for expectations over a timing.
+// Quadrature: nodes for expectations over a timing.
 //
 // Nodes: the recursion coefficients of the polynomials orthogonal under the timing come from a
-// fine discrete version of it (Stieltjes' procedure), the nodes are the eigenvalues of their
-// Jacobi matrix. Methods: W. Gautschi, SIAM J. Sci. Stat. Comput. 3 (1982) 289-317; G. Golub,
+// fine discrete version of it (points.c; Stieltjes' procedure), the nodes are the eigenvalues of
+// their Jacobi matrix. Methods: W. Gautschi, SIAM J. Sci. Stat. Comput. 3 (1982) 289-317; G. Golub,
 // J. Welsch, Math. Comp. 23 (1969) 221-230.
 
 #include "timing/quadrature.h"
@@ -14,10 +14,6 @@
 #include <gsl/gsl_errno.h>
 #include <gsl/gsl_integration.h>
 #include <math.h>
-#include <string.h>
-
-#define PIECES 64
-#define NODES 16
 
 void lw__gauss_legendre(int n, double *x, double *weight)
 {
@@ -33,105 +29,26 @@ void lw__gauss_legendre(int n, double *x, double *weight)
     gsl_set_error_handler(handler);
 }
 
-double lw__timing_integral(double (*f)(const void *context, double x), const void *context,
-                           double lo, double hi, int pieces)
-{
-    double x[NODES], w[NODES], sum = 0, h = (hi - lo) / pieces;
-    lw__gauss_legendre(NODES, x, w);
-    for (int p = 0; p < pieces; p++)
-        for (int i = 0; i < NODES; i++)
-            sum += w[i] * 0.5 * h * f(context, lo + h * (p + 0.5 + 0.5 * x[i]));
-    return sum;
-}
-
-typedef struct power_term {
-    const lw_timing *t;
-    int order;
-} power_term;
-
-static double survival_power(const void *context, double x)
-{
-    const power_term *p = context;
-    double y = p->order;
-    for (int k = 1; k < p->order; k++)
-        y *= x;
-    return y * (1 - lw_timing_cdf(p->t, x));
-}
-
-// E[X^n] = lo^n + integral of n x^(n-1) (1 - F(x)): no density is needed.
-double lw__quadrature_moment(const lw_timing *t, int order)
-{
-    power_term p = {t, order};
-    double lo, hi, first = 1;
-    lw_timing_support(t, &lo, &hi);
-    for (int k = 0; k < order; k++)
-        first *= lo;
-    return first + lw__timing_integral(survival_power, &p, lo, hi, PIECES);
-}
-
-// ---- nodes
-
-typedef struct points {
-    int n;
-    double *x, *w;
-} points;
-
-// A fine discrete version of the timing, in units of its support mapped to [-1, 1].
-static int discretise(const lw_timing *t, points *out)
-{
-    double node[NODES], weight[NODES], lo = t->lo, span = t->hi - t->lo;
-    int has_list = t->value != NULL && t->weight != NULL && t->a == NULL;
-    int lists = has_list && t->flag == 0, cells = has_list && t->flag == 1;
-    int pieces = cells ? t->n : PIECES * 4; // the cells of a histogram are its pieces
-    out->n = lists ? t->n : pieces * NODES;
-    out->x = lw__alloc(sizeof(double) * 2 * (size_t)out->n);
-    if (out->x == NULL)
-        return 0;
-    out->w = out->x + out->n;
-    for (int i = 0; lists && i < t->n; i++) {
-        out->x[i] = 2 * (t->value[i] - lo) / span - 1;
-        out->w[i] = t->weight[i] - (i > 0 ? t->weight[i - 1] : 0);
-    }
-    if (lists)
-        return 1;
-    lw__gauss_legendre(NODES, node, weight);
-    for (int p = 0; p < pieces; p++) {
-        double from = cells ? t->value[p] : lo + p * (span / pieces);
-        double h = cells ? t->value[p + 1] - from : span / pieces;
-        double mass = lw_timing_cdf(t, from + h) - (p > 0 ? lw_timing_cdf(t, from) : 0), total = 0;
-        for (int i = 0; i < NODES; i++) {
-            double x = from + h * (0.5 + 0.5 * node[i]);
-            out->x[p * NODES + i] = 2 * (x - lo) / span - 1;
-            out->w[p * NODES + i] = weight[i] * lw_timing_density(t, x);
-            total += out->w[p * NODES + i];
-        }
-        for (int i = 0; i < NODES; i++) // each piece keeps its mass, atoms included
-            out->w[p * NODES + i] =
-                total > 0 ? out->w[p * NODES + i] * mass / total : mass * weight[i] / 2;
-    }
-    return 1;
-}
-
 // Recursion coefficients alpha[0..n-1], beta[0..n-1]; the count that exists.
-static int stieltjes(const points *p, int n, double *alpha, double *beta, double *work)
+static int stieltjes(const lw__points *list, int n, double *alpha, double *beta, double *work)
 {
-    double *before = work, *now = work + p->n, norm_before = 1;
-    for (int i = 0; i < p->n; i++) {
+    double *before = work, *now = work + list->n, norm_before = 1;
+    for (int i = 0; i < list->n; i++) {
         before[i] = 0;
         now[i] = 1;
     }
     for (int k = 0; k < n; k++) {
         double norm = 0, first = 0;
-        for (int i = 0; i < p->n; i++) {
-            norm += p->w[i] * now[i] * now[i];
-            first += p->w[i] * p->x[i] * now[i] * now[i];
+        for (int i = 0; i < list->n; i++) {
+            norm += list->p[i].weight * now[i] * now[i];
+            first += list->p[i].weight * list->p[i].x * now[i] * now[i];
         }
         if (!(norm > 1e-26 * norm_before) && k > 0)
             return k;
         alpha[k] = first / norm;
         beta[k] = k > 0 ? norm / norm_before : norm;
-        for (int i = 0; i < p->n; i++) {
-            double next = (p->x[i] - alpha[k]) * now[i] - (k > 0 ? beta[k] : 0) * before[i];
+        for (int i = 0; i < list->n; i++) {
+            double next = (list->p[i].x - alpha[k]) * now[i] - (k > 0 ? beta[k] : 0) * before[i];
             before[i] = now[i];
             now[i] = next;
         }
@@ -173,17 +90,26 @@ static int golub_welsch(int n, const double *alpha, const double *beta, double *
     return done;
 }
 
+// Points of t in units of its support mapped to [-1, 1].
+static void in_units(const lw_timing *t, int n, lw__points *list)
+{
+    t->family->points(t, &(lw__how){NULL, 1 + n / 8, n}, list);
+    for (int i = 0; i < list->n; i++)
+        list->p[i].x = 2 * (list->p[i].x - t->lo) / (t->hi - t->lo) - 1;
+}
+
 static lw_status nodes_of(const lw_timing *t, int n, double *x, double *weight, lw_error *err)
 {
-    points p = {0};
+    lw__points list = {0};
     double alpha[64], beta[64], *work = NULL;
     int found = 0;
-    if (discretise(t, &p))
-        work = lw__alloc(sizeof(double) * 2 * (size_t)p.n);
+    in_units(t, n, &list);
+    if (!list.failed)
+        work = lw__alloc(sizeof(double) * 2 * (size_t)list.n);
     if (work != NULL)
-        found = stieltjes(&p, n, alpha, beta, work);
+        found = stieltjes(&list, n, alpha, beta, work);
     lw__free(work);
-    lw__free(p.x);
+    lw__points_free(&list);
     if (found == 0 || !golub_welsch(found, alpha, beta, x, weight))
         return lw_error_set(err, LW_ERR_MEMORY, "no memory for the nodes of a timing");
     for (int i = 0; i < n; i++) { // fewer points than asked for: the rest weighs nothing
