@@ -4,6 +4,8 @@
 
 #include "timing/family.h"
 
+#include "base/philox.h"
+
 #include <latewood/elementary.h>
 
 #include <math.h>
@@ -133,7 +135,8 @@ static double uniform_quantile(const lw_timing *t, const double **u)
 
 static double uniform_draw(const lw_timing *t, lw__draw_at *at)
 {
-    return t->lo + (t->hi - t->lo) * lw__timing_uniform_of(at);
+    double u = lw__draw_uniform(at->seed, at->run, *at->stream++, at->job);
+    return t->lo + (t->hi - t->lo) * u;
 }
 
 static double uniform_cdf(const lw_timing *t, double x)

@@ -9,6 +9,7 @@
 #include "timing/family.h"
 
 #include "base/alloc.h"
+#include "base/philox.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -67,7 +68,7 @@ void lw_timing_free(lw_timing *timing)
 
 double lw__timing_uniform_of(lw__draw_at *at)
 {
-    return lw_draw_uniform((lw_address){at->seed, at->run, *at->stream++, at->job});
+    return lw__draw_uniform(at->seed, at->run, *at->stream++, at->job);
 }
 
 int lw_timing_n_streams(const lw_timing *t)
