@@ -161,7 +161,8 @@ static void affine_describe(const lw_timing *t, char *text, int size)
 {
     char inner[160];
     name_of(t->a, inner, sizeof inner);
-    snprintf(text, (size_t)size, "%.6g times (%s), shifted by %.6g s", t->p[0], inner, t->p[1]);
+    snprintf(text, (size_t)size, "%.6g times (%s), shifted by %s", t->p[0], inner,
+             lw__timing_words(t->p[1]).text);
 }
 
 static void affine_cuts(const lw_timing *t, lw__points *out)

@@ -69,7 +69,7 @@ static double constant_moment(const lw_timing *t, int order)
 
 static void constant_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "constant %.6g s", t->lo);
+    snprintf(text, (size_t)size, "constant %s", lw__timing_words(t->lo).text);
 }
 
 static void constant_cuts(const lw_timing *t, lw__points *out)
@@ -152,7 +152,8 @@ static double uniform_density(const lw_timing *t, double x)
 
 static void uniform_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "uniform %.6g to %.6g s", t->lo, t->hi);
+    snprintf(text, (size_t)size, "uniform %s to %s", lw__timing_words(t->lo).text,
+             lw__timing_words(t->hi).text);
 }
 
 static const lw__family uniform_family = {"uniform",        uniform_draw,    uniform_quantile,
@@ -196,7 +197,8 @@ static double triangular_density(const lw_timing *t, double x)
 
 static void triangular_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "triangular %.6g, %.6g, %.6g s", t->lo, t->p[0], t->hi);
+    snprintf(text, (size_t)size, "triangular %s, %s, %s", lw__timing_words(t->lo).text,
+             lw__timing_words(t->p[0]).text, lw__timing_words(t->hi).text);
 }
 
 static void triangular_cuts(const lw_timing *t, lw__points *out)
@@ -253,8 +255,9 @@ static double normal_density(const lw_timing *t, double x)
 
 static void normal_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "normal, mean %.6g, deviation %.6g, cut to %.6g .. %.6g s",
-             t->p[0], t->p[1], t->lo, t->hi);
+    snprintf(text, (size_t)size, "normal, mean %s, deviation %s, cut to %s .. %s",
+             lw__timing_words(t->p[0]).text, lw__timing_words(t->p[1]).text,
+             lw__timing_words(t->lo).text, lw__timing_words(t->hi).text);
 }
 
 static const lw__family normal_family = {"normal",        draw_by_quantile, normal_quantile,
@@ -307,9 +310,9 @@ static double log_normal_density(const lw_timing *t, double x)
 
 static void log_normal_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size,
-             "log-normal, median %.6g, sigma %.6g, shifted by %.6g, at most %.6g s",
-             lw_exp(t->p[0]), t->p[1], t->p[4], t->hi);
+    snprintf(text, (size_t)size, "log-normal, median %s, sigma %.6g, shifted by %s, at most %s",
+             lw__timing_words(lw_exp(t->p[0])).text, t->p[1], lw__timing_words(t->p[4]).text,
+             lw__timing_words(t->hi).text);
 }
 
 static const lw__family log_normal_family = {
@@ -359,8 +362,9 @@ static double exponential_density(const lw_timing *t, double x)
 
 static void exponential_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "exponential, mean %.6g, shifted by %.6g, at most %.6g s", t->p[1],
-             t->p[0], t->hi);
+    snprintf(text, (size_t)size, "exponential, mean %s, shifted by %s, at most %s",
+             lw__timing_words(t->p[1]).text, lw__timing_words(t->p[0]).text,
+             lw__timing_words(t->hi).text);
 }
 
 static const lw__family exponential_family = {
@@ -407,8 +411,9 @@ static double gumbel_density(const lw_timing *t, double x)
 
 static void gumbel_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "Gumbel, location %.6g, scale %.6g, cut to %.6g .. %.6g s",
-             t->p[0], t->p[1], t->lo, t->hi);
+    snprintf(text, (size_t)size, "Gumbel, location %s, scale %s, cut to %s .. %s",
+             lw__timing_words(t->p[0]).text, lw__timing_words(t->p[1]).text,
+             lw__timing_words(t->lo).text, lw__timing_words(t->hi).text);
 }
 
 static const lw__family gumbel_family = {"Gumbel",        draw_by_quantile, gumbel_quantile,

@@ -46,6 +46,12 @@ struct lw_timing {
 
 // A node with its children held; NULL for lack of memory.
 lw_timing *lw__timing_node(const lw__family *family, const lw_timing *a, const lw_timing *b);
+// A time as one reads it: "50 us".
+typedef struct lw__words_of_time {
+    char text[32];
+} lw__words_of_time;
+lw__words_of_time lw__timing_words(double seconds);
+
 lw_status lw__timing_give(lw_timing *t, lw_timing **out, lw_error *err);
 lw_status lw__timing_bad(lw_error *err, const char *name, double value, const char *range);
 double lw__timing_uniform_of(lw__draw_at *at); // takes one stream

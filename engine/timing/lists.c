@@ -141,7 +141,8 @@ static double discrete_moment(const lw_timing *t, int order)
 
 static void discrete_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "one of %d values, %.6g to %.6g s", t->n, t->lo, t->hi);
+    snprintf(text, (size_t)size, "one of %d values, %s to %s", t->n, lw__timing_words(t->lo).text,
+             lw__timing_words(t->hi).text);
 }
 
 static const lw__family discrete_family = {"discrete",        draw_by_quantile, discrete_quantile,
@@ -255,7 +256,8 @@ static double histogram_moment(const lw_timing *t, int order)
 
 static void histogram_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "histogram of %d cells, %.6g to %.6g s", t->n, t->lo, t->hi);
+    snprintf(text, (size_t)size, "histogram of %d cells, %s to %s", t->n,
+             lw__timing_words(t->lo).text, lw__timing_words(t->hi).text);
 }
 
 static void histogram_cuts(const lw_timing *t, lw__points *out)
@@ -330,8 +332,9 @@ static double replay_moment(const lw_timing *t, int order)
 
 static void replay_describe(const lw_timing *t, char *text, int size)
 {
-    snprintf(text, (size_t)size, "replay of %d recorded values, %.6g to %.6g s, from %s", t->n,
-             t->lo, t->hi, t->every ? "a start drawn once a run" : "the first on");
+    snprintf(text, (size_t)size, "replay of %d recorded values, %s to %s, from %s", t->n,
+             lw__timing_words(t->lo).text, lw__timing_words(t->hi).text,
+             t->every ? "a start drawn once a run" : "the first on");
 }
 
 static const lw__family replay_family = {"replay",        replay_draw, NULL,

@@ -48,6 +48,18 @@ lw_status lw__timing_bad(lw_error *err, const char *name, double value, const ch
     return lw_error_set(err, LW_ERR_ARGUMENT, "%s is %.12g; %s", name, value, range);
 }
 
+lw__words_of_time lw__timing_words(double seconds)
+{
+    static const char *const names[] = {"s", "ms", "us", "ns", "ps"};
+    lw__words_of_time w;
+    double size = fabs(seconds), shown = seconds;
+    int k = 0;
+    for (; k < 4 && size > 0 && size < 1; k++, size *= 1000)
+        shown *= 1000;
+    snprintf(w.text, sizeof w.text, "%.6g %s", shown, names[size > 0 ? k : 0]);
+    return w;
+}
+
 lw_timing *lw_timing_hold(const lw_timing *timing)
 {
     lw_timing *t = (lw_timing *)(uintptr_t)timing; // only its count changes
