@@ -97,13 +97,13 @@ double lw_asinh(double x)
 {
     if (fabs(x) < LEAST)
         return x;
-    return fabs(x) > ROOT_OF_LARGEST ? copysign(log_of_twice(fabs(x)), x)
-                                     : Sleef_cinz_asinhd1_u10purec(x);
+    return fabs(x) >= ROOT_OF_LARGEST ? copysign(log_of_twice(fabs(x)), x)
+                                      : Sleef_cinz_asinhd1_u10purec(x);
 }
 
 double lw_acosh(double x)
 {
-    return x > ROOT_OF_LARGEST ? log_of_twice(x) : Sleef_cinz_acoshd1_u10purec(x);
+    return x >= ROOT_OF_LARGEST ? log_of_twice(x) : Sleef_cinz_acoshd1_u10purec(x);
 }
 
 // SLEEF overflows a little below the largest number; the square of the half power does not.
