@@ -2,9 +2,12 @@
 -- arguments and with the few things a script may not do itself (host).
 --
 -- host.load(path): the value a study file returns, or nil, message, exit code
--- host.write(folder, file, text): true, or nil and a message; by temporary name and rename
+-- host.write(folder, file, text): true, or nil, message, exit code; by temporary name and rename
 -- host.make_folder(path): true, or nil and a message
--- host.out(text), host.err(text), host.terminal: 1 where standard error is a terminal with colour
+-- host.exists(path)
+-- host.out(text), host.err(text)
+-- host.again(): a new allowance of instructions for the study's own code
+-- host.colour, host.progress: whether standard output, standard error is a terminal for that
 
 local lw = require "latewood"
 local figure = require "latewood.figure"
@@ -12,6 +15,8 @@ local json = require "latewood.json"
 local report = require "latewood.report"
 local starter = require "latewood.starter"
 local study = require "latewood.study"
+local trial = require "latewood.trial"
+local words = require "latewood.words"
 
 local command = {}
 
@@ -34,6 +39,8 @@ exit codes
   0 requirements met (or none stated)   1 not met   2 undecided
   64 wrong usage   65 the study is wrong   66 no such file   70 a fault of the program
   73 a file cannot be created   74 input or output failed   128 + n stopped by signal n
+
+Results go to standard output, everything else to standard error. NO_COLOR and TERM=dumb are heeded.
 ]]
 
 local helps = {
@@ -50,7 +57,8 @@ to a folder beside the study, named after it: STUDY-results.
   --json         print the result as JSON (schema latewood-run-1) and nothing else
   --quiet        print the verdict only
 
-A study may use 2e9 Lua instructions and 1 GiB of memory.
+A study's own code may use 2e9 Lua instructions at one stretch (its file, building a rig, one run)
+and 1 GiB of memory. It sees no files but those of its own folder.
 ]],
   describe = [[
 usage: latewood describe STUDY.lua [options] [name=value ...]
@@ -84,41 +92,60 @@ local function options_of(name)
   return list
 end
 
+-- One option at place i of the arguments: the place of the next argument, or nil and a message.
+local function take_option(name, arguments, i, options)
+  local a = arguments[i]
+  local option, value = a:match("^(%-%-[^=]+)=(.*)$")
+  option = option or a
+  if options[option] ~= nil then return nil, ("option %s stands there twice"):format(option) end
+  if flags[name][option] and a == option then
+    options[option] = true
+    return i + 1
+  end
+  if takes[name][option] then
+    if not value then
+      i = i + 1
+      value = arguments[i]
+    end
+    if not value or value == "" then return nil, ("option %s needs a value"):format(option) end
+    options[option] = value
+    return i + 1
+  end
+  local near = lw.nearest(option, options_of(name))
+  return nil, ("%s has no option %s%s"):format(name, option, near and "; nearest " .. near or "")
+end
+
+-- A name=value pair or the file; nil and a message where it is neither.
+local function take_other(name, a, p)
+  local key, value = a:match("^([^=/]+)=(.*)$")
+  if key and name ~= "new" and not a:find("%.lua$") then
+    for _, pair in ipairs(p.pairs) do
+      if pair.name == key then return nil, ("parameter \"%s\" is set twice"):format(key) end
+    end
+    p.pairs[#p.pairs + 1] = { name = key, text = value }
+  elseif p.file == nil and a ~= "" then
+    p.file = a
+  else
+    return nil, ("\"%s\" is one argument too many%s"):format(a,
+      name ~= "new" and "; parameters are set by name=value" or "")
+  end
+  return true
+end
+
 -- Split arguments into a file, options and name=value pairs; nil and a message if they are wrong.
 local function parse(name, arguments)
-  local p = { pairs = {}, options = {} }
-  local i = 1
+  local p, i = { pairs = {}, options = {} }, 1
   while i <= #arguments do
-    local a = arguments[i]
-    local key, value = a:match("^([^=]+)=(.*)$")
-    if a:sub(1, 2) == "--" then
-      local option, inline = a:match("^(%-%-[^=]+)=(.*)$")
-      option = option or a
-      if takes[name][option] then
-        if not inline then
-          i = i + 1
-          inline = arguments[i]
-        end
-        if not inline then return nil, ("option %s needs a value"):format(option) end
-        p.options[option] = inline
-      elseif flags[name][option] and a == option then
-        p.options[option] = true
-      else
-        local near = lw.nearest(option, options_of(name))
-        return nil, ("%s has no option %s%s"):format(name, option,
-          near and ("; nearest " .. near) or "")
-      end
-    elseif p.file == nil then
-      p.file = a
-    elseif key and name ~= "new" then
-      for _, pair in ipairs(p.pairs) do
-        if pair.name == key then return nil, ("parameter \"%s\" is set twice"):format(key) end
-      end
-      p.pairs[#p.pairs + 1] = { name = key, text = value }
+    local message
+    if arguments[i]:find("^%-.") then
+      i, message = take_option(name, arguments, i, p.options)
+      if not i then return nil, message end
     else
-      return nil, ("\"%s\" is one argument too many; parameters are set by name=value"):format(a)
+      local done
+      done, message = take_other(name, arguments[i], p)
+      if not done then return nil, message end
+      i = i + 1
     end
-    i = i + 1
   end
   if not p.file then return nil, (name == "new" and "DIR" or "STUDY.lua") .. " is missing" end
   return p
@@ -140,7 +167,7 @@ local function complain(host, options, code, message)
   if options["--json"] then
     host.out(json.encode(report.error_data(code, message)))
   end
-  host.err("latewood: " .. message .. "\n")
+  host.err("latewood: " .. words.plain(message) .. "\n")
   return code
 end
 
@@ -159,69 +186,97 @@ end
 local function guarded(f, ...)
   local results = table.pack(pcall(f, ...))
   if results[1] then return table.unpack(results, 2, results.n) end
-  return nil, tostring(results[2])
+  local message = results[2]
+  if message == "not enough memory" then return nil, message .. "; a study may use 1024 MiB" end
+  if type(message) == "string" or type(message) == "number" then return nil, tostring(message) end
+  return nil, ("the study raised a value of type %s instead of a message"):format(type(message))
 end
 
 local function base_name(path)
   return (path:gsub("^.*/", ""):gsub("%.lua$", ""))
 end
 
--- Figures and traces of a result, and the JSON that names them.
-local function write_results(host, s, result, folder, name)
-  local made, message = host.make_folder(folder)
-  if not made then return nil, message end
-  local files, pending = {}, {}
-  for _, f in ipairs(figure.all(s, result)) do
-    pending[#pending + 1] = { f.file, f.text }
-  end
-  for i, f in ipairs(s.figures) do
-    local stem = pending[i][1]:gsub("%.svg$", "")
+-- What goes to the folder: list of { file, function that gives its text }. Names first, so that
+-- the JSON, which comes last, can list them; texts when they are written, one at a time.
+local function contents(s, result, name)
+  local pending, taken, files = {}, { result = true }, {}
+  local function add(file, text) pending[#pending + 1] = { file, text } end
+  for i, f in ipairs(figure.all(s, result)) do
+    add(f.file, function() return f.text end)
     for _, variant in ipairs(result.variants) do
       local signals = {}
       for signal in pairs(variant.traces[i]) do signals[#signals + 1] = signal end
       table.sort(signals)
       for _, signal in ipairs(signals) do
-        local file = ("%s--%s--%s"):format(stem, variant.name, signal):gsub("[^%w%-%.]+", "_")
-        pending[#pending + 1] = { file .. ".csv", variant.traces[i][signal].csv }
+        local file = figure.trace_name(f.name, #result.variants > 1 and variant.name or nil,
+          signal, taken)
+        add(file .. ".csv", variant.traces[i][signal].csv)
       end
     end
-    f.index = nil
   end
-  for _, p in ipairs(pending) do files[#files + 1] = p[1] end
+  for i, entry in ipairs(pending) do files[i] = entry[1] end
   files[#files + 1] = "result.json"
-  pending[#pending + 1] = { "result.json", json.encode(report.data(s, result, name, files)) }
-  for _, p in ipairs(pending) do
-    local done, why = host.write(folder, p[1], p[2])
-    if not done then return nil, why end
+  add("result.json", function() return json.encode(report.data(s, result, name, files)) end)
+  return pending, files
+end
+
+-- Write everything; the names of the files, or nil, message, exit code.
+local function write_results(host, s, result, folder, name)
+  local pending, files = contents(s, result, name)
+  for _, entry in ipairs(pending) do
+    local done, why, code = host.write(folder, entry[1], entry[2]())
+    if not done then return nil, why, code end
   end
   return files
 end
 
+-- A line on standard error that tells how far the runs are, written over about 100 times.
+local function progress_of(host)
+  local function show(variant, run_, runs)
+    if runs > 1 and run_ % math.max(1, runs // 100) == 0 then
+      host.err(("\r\27[K%s: run %d of %d"):format(words.cut(words.plain(variant), 40), run_, runs))
+    end
+  end
+  local function clear() host.err("\r\27[K") end
+  return show, clear
+end
+
+local function execute(host, s, p, settings)
+  local options = { runs = settings.runs, seed = settings.seed, again = host.again }
+  local clear = function() end
+  if host.progress and not p.options["--quiet"] and (settings.runs or s.runs) > 1 then
+    options.progress, clear = progress_of(host)
+  end
+  local result, why = guarded(study.execute, s, p.pairs, options)
+  clear()
+  return result, why
+end
+
 local function run(host, p)
   local options = p.options
-  local runs, bad = whole(options, "--runs", 1, 1000000)
-  if bad then return complain(host, options, USAGE, bad) end
-  local seed, worse = whole(options, "--seed", 0, math.maxinteger)
-  if worse then return complain(host, options, USAGE, worse) end
+  local runs, bad_runs = whole(options, "--runs", 1, 1000000)
+  local seed, bad_seed = whole(options, "--seed", 0, math.maxinteger)
+  if bad_runs or bad_seed then return complain(host, options, USAGE, bad_runs or bad_seed) end
   local s, message, code = load_study(host, p.file)
   if not s then return complain(host, options, code, message) end
-  local result, why = guarded(s.execute, s, p.pairs, { runs = runs, seed = seed })
+  local result, why = execute(host, s, p, { runs = runs, seed = seed })
   if not result then return complain(host, options, DATA, why) end
   local folder = options["--out"] or p.file:gsub("%.lua$", "") .. "-results"
-  local files, trouble = write_results(host, s, result, folder, base_name(p.file))
-  if not files then return complain(host, options, CANNOT_CREATE, trouble) end
+  local made, fault = host.make_folder(folder)
+  if not made then return complain(host, options, CANNOT_CREATE, fault) end
+  local in_words = not options["--json"] and not options["--quiet"]
+  if in_words then -- before the files, so that nobody waits for them
+    host.out(table.concat(report.lines(s, result, host.colour), "\n") .. "\n")
+  end
+  local files, trouble, kind = write_results(host, s, result, folder, base_name(p.file))
+  if not files then return complain(host, options, kind, trouble) end
   if options["--json"] then
     host.out(json.encode(report.data(s, result, base_name(p.file), files)))
   elseif options["--quiet"] then
     host.out((result.verdict or "no requirement") .. ", of the model\n")
   else
-    local shown = {}
-    for _, f in ipairs(files) do
-      if not f:find("%.csv$") then shown[#shown + 1] = f end
-    end
-    if #files > #shown then shown[#shown + 1] = ("%d CSV files"):format(#files - #shown) end
-    local lines = report.lines(s, result, shown, folder, "latewood describe " .. p.file)
-    host.out(table.concat(lines, "\n") .. "\n")
+    host.out(table.concat(report.closing(files, words.plain(folder),
+      "latewood describe " .. words.shell(p.file)), "\n") .. "\n")
   end
   return ({ met = OK, ["not met"] = NOT_MET, undecided = UNDECIDED })[result.verdict or "met"]
 end
@@ -237,10 +292,11 @@ local function changed(first, second)
 end
 
 local function describe_variant(s, pairs_, variant)
-  local parameters, message = s:parameters(pairs_, variant.own)
+  local parameters, message = trial.parameters(s, pairs_, variant.own)
   if not parameters then return nil, message end
-  local rig = s:rig(parameters)
-  s:checked(rig.freeze, rig, { lasts = s.lasts, metrics = s.metrics, record = s:records() })
+  local rig = trial.rig(s, parameters)
+  trial.checked(s, rig.freeze, rig, { lasts = s.lasts, metrics = s.metrics,
+    record = trial.records(s) })
   return rig:describe { lasts = s.lasts, metrics = s.metrics }
 end
 
@@ -248,7 +304,7 @@ local function describe(host, p)
   local s, message, code = load_study(host, p.file)
   if not s then return complain(host, p.options, code, message) end
   local lines, data = {}, {}
-  for i, variant in ipairs(s:variants()) do
+  for i, variant in ipairs(trial.variants(s)) do
     local own, why = guarded(describe_variant, s, p.pairs, variant)
     if not own then return complain(host, p.options, DATA, why) end
     data[i] = json.ordered({ "variant", "lines" }, { variant = variant.name,
@@ -280,8 +336,8 @@ local function new(host, p)
     end
   end
   for _, f in ipairs(starter) do
-    local done, why = host.write(p.file, f.file, f.text)
-    if not done then return complain(host, p.options, CANNOT_CREATE, why) end
+    local done, why, code = host.write(p.file, f.file, f.text)
+    if not done then return complain(host, p.options, code, why) end
   end
   if p.options["--json"] then
     local names = {}
@@ -290,8 +346,8 @@ local function new(host, p)
       { schema = "latewood-new-1", folder = p.file, files = json.list(names) })))
     return OK
   end
-  host.out(("wrote study.lua, README.md and .luarc.json to %s\nnext: latewood run %s/study.lua\n")
-    :format(p.file, p.file))
+  host.out(("wrote study.lua, README.md and .luarc.json to %s\nnext: latewood run %s\n")
+    :format(words.plain(p.file), words.shell(p.file .. "/study.lua")))
   return OK
 end
 
@@ -312,25 +368,20 @@ function command.main(arguments, host)
     host.err(main_help)
     return USAGE
   end
+  local rest, asked = table.move(arguments, 2, #arguments, 1, {}), {}
+  for _, a in ipairs(rest) do asked[a] = true end
   if not commands[name] then
     local near = lw.nearest(name, { "run", "describe", "new", "--help", "--version" })
-    host.err(("latewood: there is no command \"%s\"%s; latewood --help lists them\n"):format(name,
-      near and ("; nearest \"%s\""):format(near) or ""))
-    return USAGE
+    return complain(host, asked, USAGE, ("there is no command \"%s\"%s; latewood --help lists them")
+      :format(name, near and ("; nearest \"%s\""):format(near) or ""))
   end
-  local rest = table.move(arguments, 2, #arguments, 1, {})
-  for _, a in ipairs(rest) do
-    if a == "--help" then
-      host.out(helps[name])
-      return OK
-    end
+  if asked["--help"] or asked["-h"] then
+    host.out(helps[name])
+    return OK
   end
   local p, message = parse(name, rest)
   if not p then
-    local wants_json = false
-    for _, a in ipairs(rest) do wants_json = wants_json or a == "--json" end
-    return complain(host, { ["--json"] = wants_json }, USAGE,
-      message .. ("; latewood %s --help tells more"):format(name))
+    return complain(host, asked, USAGE, message .. ("; latewood %s --help tells more"):format(name))
   end
   return commands[name](host, p)
 end

@@ -7,65 +7,122 @@ local math = require("latewood").math -- the same bits everywhere
 
 local figure = {}
 
-local MODEL = "A result of the model, not of the machine."
+local LINE = 128 -- characters of a note
+local WANTED = 3 -- style of what is wanted; 1 and 2 are before and after
 
-local function notes_of(f)
+local function style_of(result, v)
+  return #result.variants == 1 and 2 or v
+end
+
+-- Notes below a figure; the last says what every figure must say.
+local function notes_of(f, result, more)
   local notes = {}
-  if f.note then
-    for _, line in ipairs(words.wrap(f.note, 118)) do notes[#notes + 1] = line end
+  local function add(text)
+    for _, line in ipairs(words.wrap(text, LINE)) do notes[#notes + 1] = line end
   end
-  notes[#notes + 1] = MODEL
+  if f.note then add(words.plain(f.note)) end
+  for _, text in ipairs(more or {}) do add(text) end
+  for _, variant in ipairs(result.variants) do
+    if variant.cut then
+      add(("%s: more events than a record holds; drawn up to %s."):format(variant.name,
+        words.time(variant.cut)))
+    end
+    for _, e in ipairs(variant.ended) do
+      if e.run == 0 then
+        add(("%s ended early, drawn as far as the axes reach: %s"):format(variant.name,
+          words.plain(e.message)))
+      end
+    end
+  end
+  add("A result of the model, not of the machine." ..
+    (result.runs > 1 and (" Run 0 of %d."):format(result.runs) or ""))
   return notes
 end
 
+-- ---- responses
+
+local LARGEST = 1e280 -- beyond, an axis has no room for the sums made of it
+
 local function extend(range, ys)
+  local lo, hi = range[1], range[2]
   for _, y in ipairs(ys) do
-    if y == y and math.abs(y) ~= math.huge then
-      range[1] = math.min(range[1] or y, y)
-      range[2] = math.max(range[2] or y, y)
+    if y > -LARGEST and y < LARGEST then
+      if not lo or y < lo then lo = y end
+      if not hi or y > hi then hi = y end
     end
   end
-end
-
-local function scaled(xs, size)
-  local out = {}
-  for i, x in ipairs(xs) do out[i] = x / size end
-  return out
+  range[1], range[2] = lo, hi
 end
 
 -- The unit of a panel: `unit` is a list, one for each signal, or that of the first.
 local function unit_of(f, index)
   local unit = type(f.unit) == "table" and f.unit[index] or index == 1 and f.unit
-  return unit and " / " .. unit or ""
+  return unit and " / " .. tostring(unit) or ""
 end
 
--- Traces of one signal in all variants, with the wanted value under the first.
+local function marks_in(size, lo, hi)
+  local marks = {}
+  for i, t in ipairs(svg.ticks(lo / size, hi / size, 8)) do marks[i] = { t * size, t } end
+  return svg.named(marks)
+end
+
+local function wanted_trace(f, result)
+  if type(f.wanted) == "number" then
+    return { name = "wanted", style = WANTED, x = { f.from, f.till }, y = { f.wanted, f.wanted } }
+  end
+  local record = result.variants[#result.variants].traces[f.index][f.wanted]
+  return { name = f.wanted, style = WANTED, x = record.time, y = record.value }
+end
+
+local function ended_early(variant)
+  return #variant.ended > 0 and variant.ended[1].run == 0
+end
+
+-- Range of a panel: of what is wanted, the band and all variants. One that ended early reaches
+-- beyond the others by their own height at most, so that these can still be read.
+local function range_of(p, result)
+  local range, wild = {}, {}
+  extend(range, p.limits)
+  for _, trace in ipairs(p.traces) do
+    extend(trace.v and ended_early(result.variants[trace.v]) and wild or range, trace.y)
+  end
+  if not wild[1] then return range[1] and range or { 0, 1 } end
+  if not range[1] then return wild end
+  local height = range[2] - range[1]
+  return { math.min(range[1], math.max(wild[1], range[1] - height)),
+    math.max(range[2], math.min(wild[2], range[2] + height)) }
+end
+
+-- Traces of one signal in all variants, what is wanted under the first. The last variant is drawn
+-- before the others: its line is whole, and theirs, dashed, show on top of it.
 local function response_panel(f, index, signal, result, size, unit)
-  local p = { x = { f.from / size, f.till / size }, y = {}, traces = {},
-    x_label = "time / " .. unit, y_label = signal .. unit_of(f, index) }
-  local function add(record, name, style)
-    extend(p.y, record.value)
-    p.traces[#p.traces + 1] = { name = name, style = style, x = scaled(record.time, size),
-      y = record.value }
+  local p = { x = { f.from, f.till }, traces = {}, limits = f.bands[index] or {},
+    x_marks = marks_in(size, f.from, f.till), x_label = "time / " .. unit,
+    y_label = words.plain(signal) .. unit_of(f, index) }
+  if f.wanted and index == 1 then p.traces[1] = wanted_trace(f, result) end
+  for v = #result.variants, 1, -1 do
+    local record = result.variants[v].traces[f.index][signal]
+    p.traces[#p.traces + 1] = { name = signal .. ", " .. result.variants[v].name, v = v,
+      style = style_of(result, v), x = record.time, y = record.value }
   end
-  if f.wanted and index == 1 then
-    add(result.variants[#result.variants].traces[f.index][f.wanted], f.wanted, 3)
-  end
-  for v, variant in ipairs(result.variants) do
-    add(variant.traces[f.index][signal], signal .. ", " .. variant.name,
-      #result.variants == 1 and 2 or v)
-  end
-  if not p.y[1] then p.y = { 0, 1 } end
+  p.y = range_of(p, result)
   return p
 end
 
-local function legend_of(f, result)
+local function legend_of(f, result, is_bar)
   local legend = {}
   for v, variant in ipairs(result.variants) do
-    legend[v] = { name = #result.variants == 1 and f.of and f.of[1] or variant.name,
-      style = #result.variants == 1 and 2 or v }
+    local name = variant.name
+    if #result.variants == 1 then name = f.of and #f.of == 1 and f.of[1] or nil end
+    if name then
+      legend[#legend + 1] = { name = name, style = style_of(result, v), is_bar = is_bar }
+    end
   end
-  if f.wanted then legend[#legend + 1] = { name = f.wanted, style = 3 } end
+  if f.wanted then
+    legend[#legend + 1] = { name = type(f.wanted) == "string" and f.wanted or "wanted",
+      style = WANTED }
+  end
+  if f.bands and #f.bands > 0 then legend[#legend + 1] = { name = "band", style = 4 } end
   return legend
 end
 
@@ -75,99 +132,161 @@ local function response(f, result)
   for i, signal in ipairs(f.of) do
     panels[i] = response_panel(f, i, signal, result, size, unit)
   end
-  return svg.page { title = f.title, legend = legend_of(f, result), panels = panels,
-    notes = notes_of(f) }
+  return svg.page { title = words.plain(f.title), legend = legend_of(f, result), panels = panels,
+    notes = notes_of(f, result) }
 end
+
+-- ---- latencies
 
 -- Count latencies in cells that are alike in ratio, so that rare long ones show beside the rest.
 local CELLS = 60
 local OFFSET = 0.15 -- height of a single sample
 
-local function histogram(values, lo, step)
-  local counts, n = {}, 0
-  for _, v in ipairs(values) do
-    if v == v then
-      local cell = math.floor(math.log(v / lo) / step) + 1
-      cell = math.max(1, math.min(CELLS, cell))
-      counts[cell] = (counts[cell] or 0) + 1
-      n = n + 1
-    end
-  end
-  return counts, n
-end
-
-local function latency_range(f, result)
-  local lo, hi
-  for _, variant in ipairs(result.variants) do
-    for _, v in ipairs(variant.traces[f.index][f.latency_of].latency) do
-      if v == v and v > 0 then
-        lo, hi = math.min(lo or v, v), math.max(hi or v, v)
+-- What the figure shows of a variant: latencies of the samples whose output was written, in the
+-- window; and how many were not written, or written with the sample.
+local function written_latencies(f, variant)
+  local record = variant.traces[f.index][f.latency_of]
+  local kept = { n_lost = 0, n_zero = 0 }
+  for i, t in ipairs(record.time) do
+    local v = record.latency[i]
+    if t >= f.from and t <= f.till then
+      if v ~= v or record.written[i] ~= record.written[i] then
+        kept.n_lost = kept.n_lost + 1
+      elseif v <= 0 then
+        kept.n_zero = kept.n_zero + 1
+      else
+        kept[#kept + 1] = v
       end
     end
   end
-  lo, hi = (lo or 1e-6) * 0.98, (hi or 1e-5) * 1.02
-  return lo, math.max(hi, lo * 1.5)
+  return kept
 end
 
--- Marks of a logarithmic time axis at 1, 2 and 5 times powers of ten.
+local function latency_range(lists)
+  local lo, hi
+  for _, list in ipairs(lists) do
+    for _, v in ipairs(list) do lo, hi = math.min(lo or v, v), math.max(hi or v, v) end
+  end
+  lo, hi = (lo or 1e-6) / 1.02, (hi or 1e-5) * 1.02
+  local short = math.max(1, math.sqrt(1.2 * lo / hi)) -- a range of at least a fifth
+  return lo / short, hi * short
+end
+
+-- Marks of a logarithmic time axis: at 1, 2 and 5 times powers of ten, or at the powers alone
+-- where there are many; evenly where the axis is short.
 local function time_marks(lo, hi)
-  local marks, power = {}, 1e-12
-  while power < hi do
-    for _, m in ipairs { 1, 2, 5 } do
-      local t = m * power
+  local marks, span = {}, math.log(hi / lo, 10)
+  if span < 0.5 then
+    for i, t in ipairs(svg.ticks(lo, hi, 6)) do marks[i] = { math.log(t, 10), words.time(t) } end
+    return marks
+  end
+  local factors = span <= 2.5 and { 1, 2, 5 } or { 1 }
+  for exponent = -12, 7 do
+    for _, m in ipairs(factors) do
+      local t = m * svg.power_of_ten(exponent)
       if t >= lo and t <= hi then marks[#marks + 1] = { math.log(t, 10), words.time(t) } end
     end
-    power = power * 10
   end
   return marks
 end
 
 local function count_marks(top)
-  local marks, n = {}, 1
-  while math.log(n, 10) + OFFSET <= top do
-    marks[#marks + 1] = { math.log(n, 10) + OFFSET, ("%d"):format(n) }
-    n = n * 10
+  local marks = {}
+  for exponent = 0, 15 do
+    for _, m in ipairs(top < 2.2 and { 1, 2, 5 } or { 1 }) do
+      local n = m * svg.power_of_ten(exponent)
+      local height = math.log(n, 10) + OFFSET
+      if height <= top then marks[#marks + 1] = { height, ("%.0f"):format(n) } end
+    end
   end
   return marks
 end
 
-local function latencies(f, result)
-  local lo, hi = latency_range(f, result)
-  local step = math.log(hi / lo) / CELLS
-  local p = { x = { math.log(lo, 10), math.log(hi, 10) }, y = { 0, 1, flat = true }, bars = {},
-    x_marks = time_marks(lo, hi), x_label = "latency, logarithmic",
-    y_label = "samples, logarithmic" }
-  local top = 1
-  for v, variant in ipairs(result.variants) do
-    local counts, n = histogram(variant.traces[f.index][f.latency_of].latency, lo, step)
-    for cell, count in pairs(counts) do
+local function bars_of(list, name, style, lo, step)
+  local counts, bars = {}, {}
+  for _, v in ipairs(list) do
+    local cell = math.max(1, math.min(CELLS, math.floor(math.log(v / lo) / step) + 1))
+    counts[cell] = (counts[cell] or 0) + 1
+  end
+  for cell = 1, CELLS do
+    if counts[cell] then
       local from, till = lo * math.exp((cell - 1) * step), lo * math.exp(cell * step)
-      local height = math.log(count, 10) + OFFSET
-      top = math.max(top, height)
-      p.bars[#p.bars + 1] = { from = math.log(from, 10), till = math.log(till, 10),
-        height = height, style = #result.variants == 1 and 2 or v, cell = cell, v = v,
-        name = ("%s: %d of %d from %s to %s"):format(variant.name, count, n, words.time(from),
+      bars[#bars + 1] = { from = math.log(from, 10), till = math.log(till, 10),
+        height = math.log(counts[cell], 10) + OFFSET, style = style,
+        name = ("%s: %d of %d from %s to %s"):format(name, counts[cell], #list, words.time(from),
           words.time(till)) }
     end
   end
-  table.sort(p.bars, function(a, b)
-    if a.v ~= b.v then return a.v < b.v end
-    return a.cell < b.cell
-  end)
-  p.y[2] = top
-  p.y_marks = count_marks(top)
-  return svg.page { title = f.title, legend = legend_of(f, result), panels = { p },
-    notes = notes_of(f) }
+  return bars
+end
+
+local function latencies(f, result)
+  local lists, notes = {}, {}
+  for v, variant in ipairs(result.variants) do
+    lists[v] = written_latencies(f, variant)
+    local of = #result.variants > 1 and variant.name or f.latency_of
+    if lists[v].n_lost > 0 then
+      notes[#notes + 1] = ("%s: %d samples lost, not drawn."):format(of, lists[v].n_lost)
+    end
+    if lists[v].n_zero > 0 then
+      notes[#notes + 1] = ("%s: %d samples written without latency, not drawn."):format(of,
+        lists[v].n_zero)
+    end
+  end
+  local lo, hi = latency_range(lists)
+  local step, top = math.log(hi / lo) / CELLS, 1
+  local p = { x = { math.log(lo, 10), math.log(hi, 10) }, bars = {}, x_marks = time_marks(lo, hi),
+    x_label = "latency, logarithmic", y_label = "samples, logarithmic" }
+  for v, variant in ipairs(result.variants) do
+    local of = #result.variants > 1 and variant.name or f.latency_of
+    for _, bar in ipairs(bars_of(lists[v], of, style_of(result, v), lo, step)) do
+      top = math.max(top, bar.height)
+      p.bars[#p.bars + 1] = bar
+    end
+  end
+  p.y, p.y_marks = { 0, top, flat = true }, count_marks(top)
+  return svg.page { title = words.plain(f.title), legend = legend_of(f, result, true),
+    panels = { p }, notes = notes_of(f, result, notes) }
+end
+
+-- ---- all
+
+-- `name`, or with a number behind it where that is taken; names differ in more than case.
+function figure.free_name(name, taken)
+  local free, n = name, 1
+  while taken[free:lower()] do
+    n = n + 1
+    free = name .. "-" .. n
+  end
+  taken[free:lower()] = true
+  return free
+end
+
+-- A part of a file's name, of plain letters.
+local function plain_part(text, others, with)
+  return (text:gsub(others, with):sub(1, 60))
+end
+
+local function title_name(title)
+  local name = plain_part(title:lower(), "[^%w]+", "-"):gsub("^%-+", ""):gsub("%-+$", "")
+  return name ~= "" and name or "figure"
+end
+
+-- Name of the file of one trace: figure, variant where there are two, signal.
+function figure.trace_name(name, variant, signal, taken)
+  local parts = { name }
+  if variant then parts[2] = plain_part(variant, "[^%w%-%.]+", "_") end
+  parts[#parts + 1] = plain_part(signal, "[^%w%-%.]+", "_")
+  return figure.free_name(table.concat(parts, "--"), taken)
 end
 
 -- The figures of a result: list of { file, text }.
 function figure.all(study, result)
-  local out = {}
+  local out, taken = {}, {}
   for i, f in ipairs(study.figures) do
     f.index = i
-    local file = f.title:lower():gsub("[^%w]+", "-"):gsub("^%-+", ""):gsub("%-+$", "")
-    if file == "" or out[file] then file = ("%s-%d"):format(file, i) end
-    out[#out + 1] = { file = file .. ".svg", title = f.title,
+    local name = figure.free_name(title_name(f.title), taken)
+    out[i] = { name = name, file = name .. ".svg",
       text = f.latency_of and latencies(f, result) or response(f, result) }
   end
   return out

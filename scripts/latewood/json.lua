@@ -1,7 +1,8 @@
 -- JSON out (RFC 8259): keys in sorted or stated order, whole numbers without a point, never NaN or
--- Infinity (null stands for them).
+-- Infinity (null stands for them), always valid UTF-8.
 
 local lw = require "latewood"
+local words = require "latewood.words"
 
 local json = {}
 
@@ -20,11 +21,13 @@ function json.ordered(keys, t)
   return t
 end
 
+local DEEPEST = 60 -- blanks of indentation; a table may hold itself
+
 local escapes = { ['"'] = '\\"', ["\\"] = "\\\\", ["\b"] = "\\b", ["\f"] = "\\f", ["\n"] = "\\n",
   ["\r"] = "\\r", ["\t"] = "\\t" }
 
 local function text(s)
-  return '"' .. s:gsub('[%c"\\\127]', function(c)
+  return '"' .. words.valid(s):gsub('[%c"\\\127]', function(c)
     return escapes[c] or ("\\u%04x"):format(c:byte())
   end) .. '"'
 end
@@ -53,6 +56,12 @@ end
 
 local write
 
+-- What a parameter is that JSON has no word for: a timing describes itself, others name their kind.
+local function in_words(v)
+  local said = tostring(v)
+  return said:find(": 0x%x+$") and type(v) or said
+end
+
 local function write_list(t, indent)
   local simple = true
   for i = 1, #t do simple = simple and type(t[i]) ~= "table" end
@@ -77,7 +86,8 @@ function write(v, indent)
   if kind == "string" then return text(v) end
   if kind == "number" then return number(v) end
   if kind == "boolean" then return tostring(v) end
-  if kind ~= "table" then return "null" end
+  if kind == "nil" then return "null" end
+  if kind ~= "table" or #indent > DEEPEST then return text(in_words(v)) end
   if list_mark[v] or #v > 0 then return write_list(v, indent) end
   return write_object(v, indent)
 end

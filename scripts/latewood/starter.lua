@@ -35,8 +35,8 @@ study:requirement { "overshoot", of = "motor.current", against = "wanted", from 
 study:requirement { "settling time", of = "motor.current", against = "wanted", from = "1 ms",
                     band = "2 %", at_most = "2 ms" }
 study:metric      { "error rms", of = "motor.current", against = "wanted" }
-study:figure      { "current", of = "motor.current", wanted = "wanted", unit = "A",
-                    ["until"] = "4 ms" }
+study:figure      { "current", of = "motor.current", wanted = "wanted", band = { 1.96, 2.04 },
+                    unit = "A", to = "4 ms" }
 return study
 ]=] },
   { file = "README.md", text = [=[

@@ -11,18 +11,28 @@
 --
 -- study:metric { "name", "kind", of = , ... }       the fields of a rig's metrics
 -- study:requirement { "name", "kind", of = , at_most = | at_least = , ... }
--- study:figure { "title", of = signal or list, wanted = signal, from = , until = , note = ,
---                unit = of the first signal, or a list }
--- study:figure { "title", latency_of = loop, note = }
+-- study:figure { "title", of = , wanted = , band = , unit = , from = , to = , every = , note = }
+--   of      a signal, or a list of at most 8: one panel each, the variants over one another
+--   wanted  a signal or a number drawn with the first
+--   band    { lo, hi }: lines across the first panel (any number of them), or a list of such lists
+--   unit    what the first panel's numbers are in, or a list; shown, not converted
+--   from, to   window; to may be called until, as elsewhere
+--   every   time between the points, where those of the figure are too far apart
+--   note    printed on the figure
+-- study:figure { "title", latency_of = loop, from = , to = , note = }
+--   a histogram of a loop's times from sample to write
 
 local lw = require "latewood"
+local trial = require "latewood.trial"
 
 local study = {}
 study.__index = study
 study.__name = "study"
+study.__metatable = false
 
 local study_fields = { "lasts", "runs", "seed", "given", "before", "after", "called", "title" }
-local figure_fields = { "of", "wanted", "from", "until", "note", "unit", "latency_of" }
+local figure_fields = { "of", "wanted", "band", "unit", "from", "to", "until", "every", "note",
+  "latency_of" }
 
 local function fail(format, ...)
   lw.fail(format:format(...))
@@ -52,8 +62,29 @@ local function whole(what, field, value, least, most)
   return n
 end
 
--- lw.study { ... }
-local function new(_, t)
+local function text_of(what, field, value)
+  if value ~= nil and type(value) ~= "string" then
+    fail("%s: %s is a %s; text is wanted", what, field, type(value))
+  end
+  return value
+end
+
+local function names_of_variants(called)
+  if called == nil then return { "before", "after" } end
+  if type(called) ~= "table" or #called ~= 2 then
+    fail("study: called names the two variants: { \"before\", \"after\" }")
+  end
+  for i = 1, 2 do
+    if type(called[i]) ~= "string" or called[i] == "" then
+      fail("study: called: entry %d is no name", i)
+    end
+  end
+  if called[1] == called[2] then fail("study: called: both names are \"%s\"", called[1]) end
+  return called
+end
+
+-- The fields of lw.study { ... }, checked.
+local function new(t)
   if type(t) ~= "table" then fail("study: a table is wanted") end
   known("study", t, study_fields)
   if type(t[1]) ~= "function" then
@@ -69,20 +100,27 @@ local function new(_, t)
   if not (lasts > 0 and lasts <= 9e6) then
     fail("study: lasts is %g s; above 0, at most 9e6 s is wanted", lasts)
   end
-  return setmetatable({
-    build = t[1], lasts = lasts, title = t.title, called = t.called or { "before", "after" },
+  return {
+    build = t[1], lasts = lasts, title = text_of("study", "title", t.title),
+    called = names_of_variants(t.called),
     runs = whole("study", "runs", t.runs, 1, 1000000) or 1,
     seed = whole("study", "seed", t.seed, 0, math.maxinteger) or 1,
     given = t.given or {}, before = t.before, after = t.after,
     metrics = {}, requirements = {}, figures = {}, origins = {},
-  }, study)
+  }
 end
 
--- A limit: a number, a quantity in any unit, or a percentage.
-local function limit_of(value)
+-- The unit of a metric; those not named have that of their signal, which nobody stated.
+local units = { overshoot = "1", lost = "1", missed = "1", ["settling time"] = "s",
+  ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
+  ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
+
+-- A limit: a number, or a quantity in the metric's unit.
+local function limit_of(kind, value)
   if value == nil then return nil end
-  if type(value) == "string" and value:find("%%%s*$") then return lw.quantity(value, "1") end
-  return lw.quantity(value)
+  local unit = units[kind]
+  if not unit and type(value) == "string" and value:find("%%%s*$") then unit = "1" end
+  return lw.quantity(value, unit)
 end
 
 -- File and line of the study's own code that is at work, "" where there is none.
@@ -127,229 +165,127 @@ function study:requirement(t)
   self.requirements[#self.requirements + 1] = {
     name = t[1], kind = def[2],
     limit_text = type(t.at_most or t.at_least) == "string" and (t.at_most or t.at_least) or nil,
-    at_most = limit_of(t.at_most),
-    at_least = limit_of(t.at_least),
+    at_most = limit_of(def[2], t.at_most),
+    at_least = limit_of(def[2], t.at_least),
   }
   return self
+end
+
+-- ---- figures
+
+local MOST_PANELS, MOST_POINTS = 8, 100000
+
+local function signals_of(what, of)
+  if type(of) == "string" then of = { of } end
+  if type(of) ~= "table" or #of < 1 or #of > MOST_PANELS then
+    fail("%s: of is no signal and no list of 1 to %d signals", what, MOST_PANELS)
+  end
+  local seen = {}
+  for i, name in ipairs(of) do
+    if type(name) ~= "string" then fail("%s: of: entry %d is no name", what, i) end
+    if seen[name] then fail("%s: of: \"%s\" stands there twice", what, name) end
+    seen[name] = true
+  end
+  return of
+end
+
+-- Window of a figure within the run.
+local function window_of(self, what, t)
+  local from = t.from and lw.quantity(t.from, "s") or 0
+  local till = t["until"] or t.to
+  if t["until"] and t.to then fail("%s: to and until are the same; state one", what) end
+  till = till and lw.quantity(till, "s") or self.lasts
+  if from < 0 or till <= from or till > self.lasts then
+    fail("%s: from is %.6g s and to %.6g s; permitted 0 to %.6g s, from before to", what, from,
+      till, self.lasts)
+  end
+  return from, till
+end
+
+-- Lists of numbers, one a panel.
+local function bands_of(what, band)
+  if band == nil then return {} end
+  if type(band) ~= "table" then fail("%s: band is a %s; { lo, hi } is wanted", what, type(band)) end
+  if type(band[1]) ~= "table" then band = { band } end
+  local bands = {}
+  for i, lines in ipairs(band) do
+    bands[i] = {}
+    for k, value in ipairs(lines) do bands[i][k] = lw.quantity(value) end
+  end
+  return bands
+end
+
+local function every_of(what, every, from, till)
+  if every == nil then return nil end
+  local seconds = lw.quantity(every, "s")
+  if not (seconds > 0 and (till - from) / seconds <= MOST_POINTS) then
+    fail("%s: every is %.6g s; permitted %.6g s and above (%d points)", what, seconds,
+      (till - from) / MOST_POINTS, MOST_POINTS)
+  end
+  return seconds
+end
+
+local function response_of(self, what, t)
+  local f = { of = signals_of(what, t.of), wanted = t.wanted, bands = bands_of(what, t.band),
+    unit = t.unit, note = text_of(what, "note", t.note) }
+  f.from, f.till = window_of(self, what, t)
+  f.every = every_of(what, t.every, f.from, f.till)
+  if f.wanted ~= nil and type(f.wanted) ~= "string" then f.wanted = lw.quantity(f.wanted) end
+  if f.unit ~= nil and type(f.unit) ~= "table" then text_of(what, "unit", f.unit) end
+  return f
+end
+
+local function latency_of(self, what, t)
+  for _, field in ipairs { "wanted", "band", "unit", "every" } do
+    if t[field] ~= nil then fail("%s: %s has no place beside latency_of", what, field) end
+  end
+  local f = { latency_of = text_of(what, "latency_of", t.latency_of),
+    note = text_of(what, "note", t.note) }
+  f.from, f.till = window_of(self, what, t)
+  return f
 end
 
 function study:figure(t)
   if type(t) ~= "table" or type(t[1]) ~= "string" then fail("figure: its title is missing") end
-  known(("figure \"%s\""):format(t[1]), t, figure_fields)
+  local what = ("figure \"%s\""):format(t[1])
+  known(what, t, figure_fields)
   if (t.of == nil) == (t.latency_of == nil) then
-    fail("figure \"%s\": state one of of and latency_of", t[1])
+    fail("%s: state one of of and latency_of", what)
   end
-  self.figures[#self.figures + 1] = {
-    title = t[1], of = type(t.of) == "string" and { t.of } or t.of, wanted = t.wanted,
-    from = t.from and lw.quantity(t.from, "s") or 0,
-    till = t["until"] and lw.quantity(t["until"], "s") or self.lasts,
-    note = t.note, unit = t.unit, latency_of = t.latency_of,
-  }
+  local f = (t.of and response_of or latency_of)(self, what, t)
+  f.title = t[1]
+  self.figures[#self.figures + 1] = f
   return self
-end
-
--- ---- parameters
-
--- A typed value of the command line: a number, true or false, or text (which may be a quantity).
-local function typed(text)
-  local n = tonumber(text)
-  if n and not text:find("^%s*[-+]?0[xX]") and n == n and math.abs(n) ~= math.huge then return n end
-  if text == "true" then return true end
-  if text == "false" then return false end
-  return text
-end
-
-local function sorted_names(t)
-  local names = {}
-  for k in pairs(t) do names[#names + 1] = tostring(k) end
-  table.sort(names)
-  return names
-end
-
--- Parameters of a variant: given, then the command line, then before or after.
-function study:parameters(arguments, variant)
-  local p = {}
-  for k, v in pairs(self.given) do p[k] = v end
-  for _, a in ipairs(arguments) do
-    if self.given[a.name] == nil then
-      local near = lw.nearest(a.name, sorted_names(self.given))
-      return nil, ("the study has no parameter \"%s\"%s"):format(a.name,
-        near and ("; nearest \"%s\""):format(near) or "")
-    end
-    if variant and variant[a.name] ~= nil then
-      return nil, ("parameter \"%s\" is set by the study's variants; it cannot be set here too")
-        :format(a.name)
-    end
-    p[a.name] = typed(a.text)
-  end
-  for k, v in pairs(variant or {}) do p[k] = v end
-  return p
-end
-
--- A view that raises when a name is read that is no parameter.
-local function guarded(p)
-  return setmetatable({}, {
-    __index = function(_, name)
-      local v = p[name]
-      if v == nil then
-        local near = lw.nearest(tostring(name), sorted_names(p))
-        fail("the study gives no parameter \"%s\"%s", tostring(name),
-          near and ("; nearest \"%s\""):format(near) or "")
-      end
-      return v
-    end,
-    __newindex = function(_, name)
-      fail("parameter \"%s\" is assigned; a rig is built, its parameters stay", tostring(name))
-    end,
-    __pairs = function() return next, p, nil end,
-  })
-end
-
-function study:rig(p)
-  local rig = self.build(guarded(p), guarded(p))
-  if type(rig) ~= "userdata" then
-    fail("the function that builds the rig returned %s; a rig is wanted",
-      rig == nil and "nothing" or "a " .. type(rig))
-  end
-  return rig
 end
 
 -- ---- running
 
-function study:variants()
-  if self.before or self.after then
-    return { { name = self.called[1], own = self.before or {} },
-      { name = self.called[2], own = self.after or {} } }
-  end
-  return { { name = "run", own = nil } }
-end
-
-local POINTS = 2400 -- of a trace; drawn as the least and largest of each pixel column
-
--- Records the figures need, for the one run that is drawn.
-function study:records()
-  local records, seen = {}, {}
-  local function add(key, record)
-    if not seen[key] then records[#records + 1] = record end
-    seen[key] = true
-  end
-  for i, f in ipairs(self.figures) do
-    local every = math.max((f.till - f.from) / POINTS, 1e-12)
-    for _, signal in ipairs(f.of or {}) do
-      add(signal .. "\0" .. i, { signal, every = every, from = f.from, ["until"] = f.till })
-    end
-    if f.wanted then
-      add(f.wanted .. "\0" .. i, { f.wanted, every = every, from = f.from, ["until"] = f.till })
-    end
-    if f.latency_of then add(f.latency_of, f.latency_of) end
-  end
-  return records
-end
-
--- Take from a finished run what the figures show.
-local function traces_of(self, run)
-  local traces, next_record = {}, 0
-  local recorded = {}
-  for i, f in ipairs(self.figures) do
-    local of = {}
-    local function take(signal, key)
-      if not recorded[key] then
-        next_record = next_record + 1
-        recorded[key] = run:record(next_record)
-        recorded[key].csv = run:csv(next_record)
-      end
-      of[signal] = recorded[key]
-    end
-    for _, signal in ipairs(f.of or {}) do take(signal, signal .. "\0" .. i) end
-    if f.wanted then take(f.wanted, f.wanted .. "\0" .. i) end
-    if f.latency_of then take(f.latency_of, f.latency_of) end
-    traces[i] = of
-  end
-  return traces
-end
-
--- Call a method of a rig; what it says of a metric gets the line that asked for the metric.
-function study:checked(f, ...)
-  local results = table.pack(pcall(f, ...))
-  if results[1] then return table.unpack(results, 2, results.n) end
-  local message = tostring(results[2])
-  local where = self.origins[message:match('^metric "(.-)":') or ""]
-  error((where and where ~= "" and where .. ": " or "") .. message, 0)
-end
-
-local function run_variant(self, variant, arguments, options)
-  local p, message = self:parameters(arguments, variant.own)
-  if not p then return nil, message end
-  local rig = self:rig(p)
-  local result = { name = variant.name, parameters = p, values = {}, ended = {} }
-  for _, m in ipairs(self.metrics) do result.values[m[1]] = {} end
-  for i = 0, options.runs - 1 do
-    local run = self:checked(rig.run, rig, { lasts = self.lasts, seed = options.seed, run = i,
-      metrics = self.metrics, record = i == 0 and self:records() or nil })
-    local status, why = run:status()
-    if status == "LW_ERR_LAW" then error(why, 0) end -- the study is wrong, not the loop
-    if status ~= "done" then
-      result.ended[#result.ended + 1] = { run = i, status = status, message = why }
-    end
-    for _, m in ipairs(self.metrics) do
-      result.values[m[1]][i + 1] = status == "done" and run:metric(m[1]) or 0 / 0
-    end
-    if i == 0 then result.traces = traces_of(self, run) end
-  end
-  return result
-end
-
--- How one requirement stands in one variant.
-local function judge(requirement, result, runs)
-  local values, limit = result.values[requirement.name],
-    requirement.at_most or requirement.at_least
-  local ended, failed, unknown, worst, worst_run = {}, 0, 0, nil, nil
-  for _, e in ipairs(result.ended) do ended[e.run] = true end
-  for i = 1, runs do
-    local v = values[i]
-    local beyond = requirement.at_most and v > limit or requirement.at_least and v < limit
-    local never = v ~= v and requirement.kind == "settling time"
-    if ended[i - 1] or never or beyond then
-      failed = failed + 1
-    elseif v ~= v then
-      unknown = unknown + 1
-    end
-    local further = worst == nil or v ~= v or
-      (worst == worst and (requirement.at_most and v > worst or requirement.at_least and v < worst))
-    if further and (worst == nil or worst == worst) then worst, worst_run = v, i - 1 end
-  end
-  return {
-    verdict = failed > 0 and "not met" or unknown > 0 and "undecided" or "met",
-    failed = failed, unknown = unknown, worst = worst, worst_run = worst_run,
-  }
-end
-
--- Run the study. arguments: list of { name, text }; options: seed, runs.
+-- Run the study. arguments: list of { name, text }; options: see latewood.trial.
 -- Returns a table of results, or nil and a message.
 function study:execute(arguments, options)
-  local out = { variants = {}, judged = {}, runs = options.runs or self.runs,
-    seed = options.seed or self.seed, arguments = arguments }
-  for i, variant in ipairs(self:variants()) do
-    local result, message = run_variant(self, variant, arguments,
-      { runs = out.runs, seed = out.seed })
-    if not result then return nil, message end
-    out.variants[i] = result
-  end
-  local rank = { met = 0, undecided = 1, ["not met"] = 2 }
-  out.verdict = #self.requirements > 0 and "met" or nil
-  for r, requirement in ipairs(self.requirements) do
-    out.judged[r] = {}
-    for v, result in ipairs(out.variants) do
-      out.judged[r][v] = judge(requirement, result, out.runs)
-    end
-    local last = out.judged[r][#out.variants].verdict
-    if rank[last] > rank[out.verdict] then out.verdict = last end
-  end
-  return out
+  return trial.execute(self, arguments, options)
 end
 
-function study.is(value)
-  return getmetatable(value) == study
+local made = setmetatable({}, { __mode = "k" }) -- every study there is
+
+-- What the program asks for: a study's own fields and methods may have been replaced since.
+local module = {}
+
+function module.is(value)
+  return made[value] == true
 end
 
-return setmetatable(study, { __call = new })
+function module.execute(self, arguments, options)
+  return trial.execute(self, arguments, options)
+end
+
+return setmetatable({}, {
+  __index = module,
+  __newindex = function(_, name) fail("lw.study.%s is assigned; it stays", tostring(name)) end,
+  __call = function(_, t)
+    local self = setmetatable(new(t), study)
+    made[self] = true
+    return self
+  end,
+  __metatable = false,
+})

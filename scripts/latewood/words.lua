@@ -14,7 +14,7 @@ function words.time_unit(seconds)
 end
 
 function words.time(seconds)
-  if seconds ~= seconds then return "never" end
+  if seconds ~= seconds then return "undefined" end
   local size, name = words.time_unit(seconds)
   return ("%.4g %s"):format(seconds / size, name)
 end
@@ -23,15 +23,31 @@ local shares = { overshoot = true }
 local times = { ["settling time"] = true, ["rise time"] = true, ["peak time"] = true,
   ["saturation time"] = true, ["latency percentile"] = true, ["latency mean"] = true,
   ["latency maximum"] = true }
+local never = { ["settling time"] = "never", ["rise time"] = "never" }
 
 -- A metric's value as a reader expects it: shares in percent, times with a unit.
 function words.metric(kind, value)
-  if value == nil then return "-" end
-  if shares[kind] then
-    return value ~= value and "undefined" or ("%.3g %%"):format(value * 100)
-  end
+  if value ~= value then return never[kind] or "undefined" end
+  if shares[kind] then return ("%.3g %%"):format(value * 100) end
   if times[kind] then return words.time(value) end
-  return value ~= value and "undefined" or ("%.5g"):format(value)
+  return ("%.5g"):format(value)
+end
+
+-- Valid UTF-8: bytes that are none become U+FFFD.
+function words.valid(s)
+  local parts, at = {}, 1
+  while true do
+    local n, bad = utf8.len(s, at)
+    if n then break end
+    parts[#parts + 1] = s:sub(at, bad - 1) .. "\u{FFFD}"
+    at = bad + 1
+  end
+  return #parts == 0 and s or table.concat(parts) .. s:sub(at)
+end
+
+-- One line that a terminal or a page shows as it stands: no control characters.
+function words.plain(s)
+  return (words.valid(tostring(s)):gsub("%c+", " "):gsub("\xC2[\x80-\x9F]", " "))
 end
 
 -- Length in characters, not bytes.
@@ -50,10 +66,10 @@ function words.cut(s, width)
   return s:sub(1, utf8.offset(s, width) - 1) .. "~"
 end
 
--- Break text into lines of at most `width` characters.
+-- Break text into lines of at most `width` characters; a longer word is broken too.
 function words.wrap(s, width)
   local lines, line = {}, ""
-  for word in s:gmatch("%S+") do
+  local function add(word)
     if line ~= "" and words.width(line) + 1 + words.width(word) > width then
       lines[#lines + 1] = line
       line = word
@@ -61,8 +77,22 @@ function words.wrap(s, width)
       line = line == "" and word or line .. " " .. word
     end
   end
+  for word in s:gmatch("%S+") do
+    while words.width(word) > width do
+      local cut = utf8.offset(word, width + 1)
+      add(word:sub(1, cut - 1))
+      word = word:sub(cut)
+    end
+    add(word)
+  end
   lines[#lines + 1] = line
   return lines
+end
+
+-- A path as it is typed into a shell.
+function words.shell(s)
+  if s:find("^[%w%._/+,@%%:=-]+$") and s:sub(1, 1) ~= "-" then return s end
+  return "'" .. s:gsub("'", "'\\''") .. "'"
 end
 
 return words
