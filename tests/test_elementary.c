@@ -53,6 +53,28 @@ START_TEST(bits_are_what_they_always_were)
 }
 END_TEST
 
+static const struct {
+    const char *name;
+    double (*ours)(double, double);
+    double lo, hi; // of both arguments
+    uint64_t hash;
+} functions_of_two[] = {
+    {"pow", lw_pow, 0.01, 60, UINT64_C(0x7ef65f1a15aee57b)},
+    {"atan2", lw_atan2, -50, 50, UINT64_C(0xdd319c90715f986a)},
+    {"hypot", lw_hypot, -1e6, 1e6, UINT64_C(0x06794e15f1d3dd77)},
+};
+
+START_TEST(bits_of_functions_of_two_arguments)
+{
+    function f = {.lo = functions_of_two[_i].lo, .hi = functions_of_two[_i].hi};
+    uint64_t hash = UINT64_C(0xCBF29CE484222325);
+    for (int k = 0; k < N_ARGUMENTS; k++)
+        hash = mix(hash, functions_of_two[_i].ours(argument(&f, k), argument(&f, k + 7777)));
+    ck_assert_msg(hash == functions_of_two[_i].hash, "%s 0x%016llx", functions_of_two[_i].name,
+                  (unsigned long long)hash);
+}
+END_TEST
+
 // One unit of ours; the C library's own cbrt is off by three.
 START_TEST(results_are_within_four_units_of_the_last_place)
 {
@@ -100,6 +122,7 @@ int main(void)
     tcase_set_timeout(tests, 60);
     tcase_add_loop_test(tests, bits_are_what_they_always_were, 0, N_FUNCTIONS);
     tcase_add_loop_test(tests, results_are_within_four_units_of_the_last_place, 0, N_FUNCTIONS);
+    tcase_add_loop_test(tests, bits_of_functions_of_two_arguments, 0, 3);
     tcase_add_test(tests, edges_are_as_the_c_standard_has_them);
     tcase_add_test(tests, normal_quantiles_are_met);
     suite_add_tcase(suite, tests);
