@@ -40,15 +40,12 @@ BY_SLEEF_2(hypot, u05)
 #define LEAST 0x1p-1000         // below it, odd functions with slope 1 are their argument
 #define ROOT_OF_LARGEST 0x1p512 // where SLEEF's squares overflow
 
-// share * exp(x) where exp(x) is near the largest number or above it: e^709 in two doubles times
-// the rest, whose argument is exact.
+// share * exp(x) where exp(x) is near the largest number or above it: e^709 times the rest, whose
+// argument is exact.
 static double large_exp(double x, double share)
 {
-    const double high = 0x1.d422d2be5dc9bp+1022, low = -0x1.916aa7a2c8d07p+967;
-    if (x > 711)
-        return (double)INFINITY;
-    double rest = Sleef_cinz_expd1_u10purec(x - 709);
-    return share * high * rest + share * low * rest;
+    const double e709 = 0x1.d422d2be5dc9bp+1022;
+    return share * e709 * Sleef_cinz_expd1_u10purec(x - 709);
 }
 
 double lw_exp(double x)

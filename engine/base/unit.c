@@ -220,8 +220,7 @@ static int read_power(const char **t, const char *end)
     const char *p = *t + 1;
     int negative = p < end && *p == '-';
     p += negative;
-    if (p == end || *p < '1' || *p > '0' + MOST_POWER ||
-        (p + 1 < end && p[1] >= '0' && p[1] <= '9'))
+    if (p == end || *p < '1' || *p > '0' + MOST_POWER)
         return 0;
     *t = p + 1;
     return negative ? '0' - *p : *p - '0';
