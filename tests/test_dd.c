@@ -132,6 +132,20 @@ START_TEST(operations_undo_each_other)
 }
 END_TEST
 
+// a - q b, which two exact products leave to a last rounding of their own small rest.
+START_TEST(quotients_of_doubles_are_good_to_half_a_unit)
+{
+    for (uint32_t k = 0; k < 20000; k++) {
+        double a = 1 + fabs(random_whole(k, 52)) * 0x1p-52,
+               b = 1 + fabs(random_whole(k, 51)) * 0x1p-51;
+        lw__dd q = lw__dd_of_ratio(a, b);
+        lw__dd p = lw__dd_two_product(q.hi, b), r = lw__dd_two_product(q.lo, b);
+        double rest = (((a - p.hi) - p.lo) - r.hi) - r.lo;
+        ck_assert(fabs(rest) <= 0x1.02p-107 * a); // half of 2^-106
+    }
+}
+END_TEST
+
 START_TEST(results_are_normalised)
 {
     for (uint32_t k = 0; k < 20000; k++) {
@@ -166,6 +180,7 @@ int main(void)
     tcase_add_test(tests, the_four_operations_hold_thirty_one_digits);
     tcase_add_test(tests, plain_doubles_would_be_told_apart);
     tcase_add_test(tests, operations_undo_each_other);
+    tcase_add_test(tests, quotients_of_doubles_are_good_to_half_a_unit);
     tcase_add_test(tests, results_are_normalised);
     tcase_add_test(tests, signs_sizes_and_order_look_at_both_halves);
     suite_add_tcase(suite, tests);

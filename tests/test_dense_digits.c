@@ -103,7 +103,7 @@ enum { N_ROWS = sizeof rows / sizeof rows[0] };
 
 static void exponential(int n, const double *a, double h, lw__dd *e)
 {
-    lw__dd m[MOST * MOST];
+    lw__dd m[MOST * MOST] = {{0, 0}};
     for (int i = 0; i < n * n; i++)
         m[i] = lw__dd_from_double(a[i]);
     ck_assert_int_eq(lw__dense_exp_dd(n, m, lw__dd_from_double(h), e), LW_OK);
@@ -206,6 +206,22 @@ START_TEST(a_scaled_state_scales_its_row_and_column_exactly)
     for (int i = 0; i < 9; i++) {
         lw__dd want = lw__dd_scale(e[i], d[i % 3] / d[i / 3]);
         ck_near(lw__dd_sub(f[i], want).hi, 0, 1, 1e-28 * fabs(want.hi));
+    }
+}
+END_TEST
+
+// Couplings of 2^700 one way and 2^-700 the other: scaled as they stand, the small one would sink
+// below the least number long before the large one is small enough.
+START_TEST(states_of_the_most_different_scales_are_balanced)
+{
+    const double a[] = {-1, 2, -3, -1}, far[] = {-1, 0x1p701, -0x1.8p-699, -1};
+    lw__dd e[4], f[4];
+    exponential(2, a, 1, e);
+    exponential(2, far, 1, f);
+    const double scale[] = {1, 0x1p700, 0x1p-700, 1};
+    for (int i = 0; i < 4; i++) {
+        lw__dd want = lw__dd_scale(e[i], scale[i]);
+        ck_assert(fabs(lw__dd_sub(f[i], want).hi) <= 1e-29 * fabs(want.hi));
     }
 }
 END_TEST
@@ -453,6 +469,7 @@ int main(void)
     tcase_add_loop_test(exponent, an_exponential_rounded_to_doubles_is_told_apart, 0, N_ROWS);
     tcase_add_test(exponent, exponentials_of_random_matrices_obey_their_laws);
     tcase_add_test(exponent, a_scaled_state_scales_its_row_and_column_exactly);
+    tcase_add_test(exponent, states_of_the_most_different_scales_are_balanced);
     tcase_add_test(exponent, the_result_may_take_the_place_of_the_matrix);
     tcase_add_test(exponent, a_turn_is_made_of_cosine_and_sine);
     tcase_add_test(exponent, elements_beyond_the_largest_number_are_infinite_and_others_finite);

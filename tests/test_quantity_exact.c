@@ -210,6 +210,16 @@ START_TEST(digits_beyond_the_mantissa_decide_ties)
 }
 END_TEST
 
+// 2^52 / (2^53 - 1) = 1/2 + 2^-54 + 2^-107 and so on: next to a tie of which 2^-107 decides.
+START_TEST(what_a_quotient_leaves_over_decides_ties)
+{
+    const lw__fraction above = {(lw__u128)1 << 52, ((lw__u128)1 << 53) - 1};
+    const lw__fraction tie = {((lw__u128)1 << 53) + 1, (lw__u128)1 << 54};
+    ck_assert(lw__fraction_value(above) == 0.5 + 0x1p-53);
+    ck_assert(lw__fraction_value(tie) == 0.5);
+}
+END_TEST
+
 // ---- what is refused
 
 static const struct {
@@ -432,13 +442,21 @@ START_TEST(what_is_no_period_is_refused)
     static const struct {
         const char *text;
         lw_status status;
-    } rows[] = {{"0 s", LW_ERR_TIME},       {"-5 us", LW_ERR_TIME},
-                {"0 Hz", LW_ERR_TIME},      {"0.999 ps", LW_ERR_TIME},
-                {"1.001 THz", LW_ERR_TIME}, {"9000000.000000000001 s", LW_ERR_TIME},
-                {"1e-7 Hz", LW_ERR_TIME},   {"1e-300 Hz", LW_ERR_TIME},
-                {"1e300 s", LW_ERR_TIME},   {"5", LW_ERR_UNIT},
-                {"37 %", LW_ERR_UNIT},      {"1 sample", LW_ERR_UNIT},
-                {"3000 rpm", LW_ERR_UNIT},  {"100 rad/s", LW_ERR_UNIT},
+    } rows[] = {{"0 s", LW_ERR_TIME},
+                {"-5 us", LW_ERR_TIME},
+                {"0 Hz", LW_ERR_TIME},
+                {"0.999 ps", LW_ERR_TIME},
+                {"1.001 THz", LW_ERR_TIME},
+                {"9000000.000000000001 s", LW_ERR_TIME},
+                {"9000000.0000000000005 s", LW_ERR_TIME},
+                {"1e-7 Hz", LW_ERR_TIME},
+                {"1e-300 Hz", LW_ERR_TIME},
+                {"1e300 s", LW_ERR_TIME},
+                {"5", LW_ERR_UNIT},
+                {"37 %", LW_ERR_UNIT},
+                {"1 sample", LW_ERR_UNIT},
+                {"3000 rpm", LW_ERR_UNIT},
+                {"100 rad/s", LW_ERR_UNIT},
                 {"5 V", LW_ERR_UNIT}};
     for (size_t i = 0; i < sizeof rows / sizeof rows[0]; i++) {
         lw_period p = {7, 7};
@@ -678,6 +696,7 @@ int main(void)
     tcase_add_test(parse, values_are_the_nearest_doubles);
     tcase_add_test(parse, fractions_of_minutes_and_hours_are_the_nearest_doubles);
     tcase_add_test(parse, digits_beyond_the_mantissa_decide_ties);
+    tcase_add_test(parse, what_a_quotient_leaves_over_decides_ties);
     tcase_add_test(parse, ill_formed_text_is_refused_in_words_and_leaves_the_quantity_alone);
     tcase_add_test(parse, a_wrong_dimension_says_what_is_there_and_what_is_wanted);
     tcase_add_test(parse, examples_in_messages_are_accepted);
