@@ -7,7 +7,7 @@ cd "$here/.." || exit 1
 passed=0 failed=0
 build() { # compiler, options
   local folder
-  folder=build/builds/$1$(printf '%s' "$2" | tr -d ' ')
+  folder=build/builds/$1$(printf '%s' "$2" | tr -d ' =')
   command -v "$1" >/dev/null || { echo "$1 is not on this machine: left out"; return; }
   if MAKELEVEL=0 make -s CC="$1" CFLAGS="$2" B="$folder" all >"$folder.log" 2>&1 &&
     MAKELEVEL=0 make -s CC="$1" CFLAGS="$2" B="$folder" "$folder/tests/test_elementary" &&
