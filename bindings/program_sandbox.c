@@ -207,13 +207,36 @@ static int resolve(lua_State *L)
 
 // ---- what a study sees
 
+// Replace the function at index 1, which gives a chunk in pieces, by the whole text.
+static void join_pieces(lua_State *L)
+{
+    luaL_Buffer b;
+    luaL_checktype(L, 1, LUA_TFUNCTION);
+    lua_settop(L, 4);
+    luaL_buffinit(L, &b);
+    for (;;) {
+        lua_pushvalue(L, 1);
+        lua_call(L, 0, 1);
+        if (lua_isnil(L, -1) || (lua_isstring(L, -1) && lua_rawlen(L, -1) == 0))
+            break;
+        if (!lua_isstring(L, -1))
+            luaL_error(L, "load: a piece is a %s; text is wanted", luaL_typename(L, -1));
+        luaL_addvalue(&b);
+    }
+    lua_pop(L, 1);
+    luaL_pushresult(&b);
+    lua_replace(L, 1);
+}
+
 // Only text: bytecode could break the interpreter.
 static int safe_load(lua_State *L)
 {
     size_t n_bytes;
-    const char *text = luaL_checklstring(L, 1, &n_bytes);
-    const char *name = luaL_optstring(L, 2, "=(load)");
-    int has_globals = !lua_isnoneornil(L, 4);
+    int in_pieces = !lua_isstring(L, 1), has_globals = lua_gettop(L) >= 4;
+    if (in_pieces)
+        join_pieces(L);
+    const char *text = lua_tolstring(L, 1, &n_bytes);
+    const char *name = luaL_optstring(L, 2, in_pieces ? "=(load)" : text);
     if (luaL_loadbufferx(L, text, n_bytes, name, "t") != LUA_OK) {
         lua_pushnil(L);
         lua_insert(L, -2);
@@ -223,7 +246,8 @@ static int safe_load(lua_State *L)
         lua_pushvalue(L, 4);
     else
         lua_getfield(L, LUA_REGISTRYINDEX, GLOBALS);
-    lua_setupvalue(L, -2, 1);
+    if (lua_setupvalue(L, -2, 1) == NULL)
+        lua_pop(L, 1);
     return 1;
 }
 
