@@ -24,6 +24,7 @@
 
 local lw = require "latewood"
 local trial = require "latewood.trial"
+local words = require "latewood.words"
 
 local study = {}
 study.__index = study
@@ -110,15 +111,10 @@ local function new(t)
   }
 end
 
--- The unit of a metric; those not named have that of their signal, which nobody stated.
-local units = { overshoot = "1", lost = "1", missed = "1", ["settling time"] = "s",
-  ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
-  ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
-
 -- A limit: a number, or a quantity in the metric's unit.
 local function limit_of(kind, value)
   if value == nil then return nil end
-  local unit = units[kind]
+  local unit = words.units[kind]
   if not unit and type(value) == "string" and value:find("%%%s*$") then unit = "1" end
   return lw.quantity(value, unit)
 end

@@ -19,17 +19,18 @@ function words.time(seconds)
   return ("%.4g %s"):format(seconds / size, name)
 end
 
-local shares = { overshoot = true }
-local times = { ["settling time"] = true, ["rise time"] = true, ["peak time"] = true,
-  ["saturation time"] = true, ["latency percentile"] = true, ["latency mean"] = true,
-  ["latency maximum"] = true }
+-- Units of metrics; a kind that is not named has that of its signal, which nobody stated.
+words.units = { overshoot = "1", lost = "1", missed = "1", ["settling time"] = "s",
+  ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
+  ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
+
 local never = { ["settling time"] = "never", ["rise time"] = "never" }
 
 -- A metric's value as a reader expects it: shares in percent, times with a unit.
 function words.metric(kind, value)
   if value ~= value then return never[kind] or "undefined" end
-  if shares[kind] then return ("%.3g %%"):format(value * 100) end
-  if times[kind] then return words.time(value) end
+  if kind == "overshoot" then return ("%.3g %%"):format(value * 100) end
+  if words.units[kind] == "s" then return words.time(value) end
   return ("%.5g"):format(value)
 end
 
