@@ -27,7 +27,8 @@ export UBSAN_OPTIONS="print_stacktrace=1:${UBSAN_OPTIONS:-}"
 
 run_one() { # source file
   local name=${1##*/} result
-  export TMPDIR=$PWD/$logs/$name.tmp
+  TMPDIR=$(cd "$logs" && pwd)/$name.tmp
+  export TMPDIR
   rm -rf "$TMPDIR" && mkdir -p "$TMPDIR"
   case $1 in
   *.c) "$B/${1%.c}" ;;
