@@ -192,8 +192,11 @@ function report.lines(study, result, colour)
   if study.title then add(words.wrap(words.plain(study.title), WIDTH)) end
   add { ("%d run%s of %s, seed %d%s"):format(result.runs, result.runs == 1 and "" or "s",
     words.time(study.lasts), result.seed, result.runs > 1 and "; requirements show the worst run" or
-    ""), "" }
-  if #study.metrics > 0 then add(table_lines(study, result)) end
+    "") }
+  if #study.metrics > 0 then
+    add { "" }
+    add(table_lines(study, result))
+  end
   add(trouble_lines(study, result))
   add { "" }
   local verdict = box(verdict_lines(study, result))
