@@ -491,9 +491,10 @@ START_TEST(seconds_as_a_number_give_the_period_of_their_decimal)
     static const struct {
         double seconds;
         int64_t num, den;
-    } rows[] = {{50e-6, 50000000, 1},   {1.1e-6, 1100000, 1},  {2.5e-12, 5, 2},
-                {0.1, 100000000000, 1}, {9e6, LW_TICK_MAX, 1}, {1e-12, 1, 1},
-                {33.25e-6, 33250000, 1}};
+    } rows[] = {{50e-6, 50000000, 1},    {1.1e-6, 1100000, 1},
+                {2.5e-12, 5, 2},         {0.1, 100000000000, 1},
+                {9e6, LW_TICK_MAX, 1},   {1e-12, 1, 1},
+                {33.25e-6, 33250000, 1}, {1 / 30000.0, 6666666666666667, 200000000}};
     for (size_t i = 0; i < sizeof rows / sizeof rows[0]; i++) {
         lw_period p = {0, 0};
         ck_assert_int_eq(lw_period_from_seconds(rows[i].seconds, &p, NULL), LW_OK);

@@ -283,14 +283,6 @@ lw_status lw_period_parse(const char *text, lw_period *out, lw_error *err)
     return LW_OK;
 }
 
-// Nonzero if the shortest decimal of these seconds is a fraction of 63-bit numbers.
-static int few_digits(double seconds)
-{
-    char text[40];
-    lw_quantity q;
-    return lw_quantity_parse(lw_double_format(seconds, text), &q, NULL) == LW_OK && q.den > 0;
-}
-
 lw_status lw_period_from_seconds(double seconds, lw_period *out, lw_error *err)
 {
     char text[48];
@@ -298,9 +290,5 @@ lw_status lw_period_from_seconds(double seconds, lw_period *out, lw_error *err)
     if (!isfinite(seconds))
         return lw_error_set(err, LW_ERR_TIME, "%s s is no period; permitted 1 ps to 9e6 s", text);
     memcpy(text + strlen(text), " s", 3);
-    lw_status status = lw_period_parse(text, out, err);
-    lw_tick ticks;
-    if (status == LW_OK && !few_digits(seconds) && lw_tick_from_seconds(seconds, &ticks) == LW_OK)
-        *out = lw_period_of_ticks(ticks);
-    return status;
+    return lw_period_parse(text, out, err);
 }

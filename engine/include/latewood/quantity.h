@@ -58,8 +58,7 @@ LW_API lw_status lw_duration_parse(const char *text, lw_tick *tick, double *exac
 // fraction of ticks; the last of its continued fraction that fits where 63 bits are short.
 // Must be >= 1 tick and <= LW_TICK_MAX.
 LW_API lw_status lw_period_parse(const char *text, lw_period *out, lw_error *err);
-// The same from plain seconds: the exact fraction of the shortest decimal that gives this double,
-// or the nearest tick where that decimal is no fraction of 63-bit numbers of seconds.
+// The same from plain seconds: the exact fraction of the shortest decimal that gives this double.
 LW_API lw_status lw_period_from_seconds(double seconds, lw_period *out, lw_error *err);
 
 // Write a time with a fitting unit and no more digits than needed: "50 us", "1.000003 ms".
