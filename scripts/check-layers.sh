@@ -13,7 +13,7 @@ set -eu
 # shellcheck disable=SC2016
 rules='
 BEGIN {
-    rows = "base|capture tape|plant law io cpu timing|run|theory|batch"
+    rows = "base|capture tape|plant law io cpu timing ode|run|theory|batch"
     n_rows = split(rows, row, "|")
     for (i = 1; i <= n_rows; i++) {
         n = split(row[i], name, " ")

@@ -1,5 +1,6 @@
 // Freezing sources, values, adcs and dacs: names resolved, constants formed, cells reserved.
 
+#include "run/event.h"
 #include "run/freezer.h"
 
 #include "io/source.h"
@@ -141,7 +142,7 @@ static lw_status freeze_adc(lw__freezer *w, int index)
     lw__adc *a = &w->z->adcs[index];
     a->item = &w->rig->adcs[index];
     const lw_adc_def *def = &a->item->def;
-    a->log = a->timer = a->done_timer = a->parent = -1;
+    a->log = a->timer = a->done_timer = -1;
     a->n_channels = def->n_channels;
     a->index = index;
     a->takes = ticks(def->takes);
@@ -169,41 +170,22 @@ static lw_status freeze_adc(lw__freezer *w, int index)
 }
 
 // Adcs triggered by another: find it, take over its period; a ring of triggers has no clock.
-static lw_status chain_adc(lw__freezer *w, int index)
+static lw_status trigger_of_adc(lw__freezer *w, int index)
 {
     lw__adc *a = &w->z->adcs[index];
     const lw_adc_def *def = &a->item->def;
     if (a->has_clock)
         return LW_OK;
-    const char *names[256];
-    int n = 0;
-    for (int i = 0; i < w->z->n_adcs; i++) {
-        if (strcmp(w->rig->adcs[i].def.name, def->after) == 0)
-            a->parent = i;
-        if (n < 256)
-            names[n++] = w->rig->adcs[i].def.name;
-    }
-    if (a->parent < 0) {
-        const char *near = lw_nearest_name(def->after, names, n);
-        return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
-                           "adc \"%s\": after: no adc \"%s\"%s%s%s", def->name, def->after,
-                           near ? "; nearest \"" : "", near ? near : "", near ? "\"" : "");
-    }
-    return LW_OK;
+    return lw__event_find(w, def->origin, "adc", def->name, "after", def->after, &a->trigger);
 }
 
 static lw_status clock_of_adc(lw__freezer *w, int index)
 {
     lw__adc *a = &w->z->adcs[index];
-    const lw__adc *root = a;
-    for (int hops = 0; !root->has_clock; hops++) {
-        if (hops > w->z->n_adcs)
-            return lw__fail_at(a->item->def.origin, w->err, LW_ERR_LOOP,
-                               "adc \"%s\": after: adcs trigger one another in a ring",
-                               a->item->def.name);
-        root = &w->z->adcs[root->parent];
-    }
-    a->period = root->period;
+    if (!a->has_clock && lw__event_period(w, a->trigger, &a->period) != LW_OK)
+        return lw__fail_at(a->item->def.origin, w->err, LW_ERR_LOOP,
+                           "adc \"%s\": after: adcs trigger one another in a ring",
+                           a->item->def.name);
     if (lw_tick_seconds(a->takes) > lw_period_seconds(a->period))
         return lw__fail_at(a->item->def.origin, w->err, LW_ERR_ARGUMENT,
                            "adc \"%s\": takes is %.12g; at most one period of %.12g s is permitted",
@@ -294,7 +276,7 @@ lw_status lw__freeze_converters(lw__freezer *w)
     for (int i = 0; i < z->n_adcs; i++)
         LW__TRY(freeze_adc(w, i));
     for (int i = 0; i < z->n_adcs; i++)
-        LW__TRY(chain_adc(w, i));
+        LW__TRY(trigger_of_adc(w, i));
     for (int i = 0; i < z->n_adcs; i++)
         LW__TRY(clock_of_adc(w, i));
     for (int i = 0; i < z->n_dacs; i++)

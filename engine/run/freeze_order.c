@@ -3,6 +3,7 @@
 // An operation's number is its place in the order: phase, kind, place of declaration, part. A set
 // of operations is a row of bits, so that the next operation due is the lowest bit.
 
+#include "run/event.h"
 #include "run/freezer.h"
 
 #include "io/source.h"
@@ -228,7 +229,7 @@ static lw_status timers_of_parts(lw__freezer *w)
     return LW_OK;
 }
 
-// What the end of a conversion makes due: laws that step on it, adcs that it triggers.
+// Laws that step on the end of a conversion; adcs that something triggers.
 static lw_status conversions(lw__freezer *w)
 {
     lw_frozen *z = w->z;
@@ -237,10 +238,10 @@ static lw_status conversions(lw__freezer *w)
         for (int l = 0; l < z->n_loops; l++)
             if (z->loops[l].adc == a)
                 LW__TRY(lw__set_put(w, &a->after, op_number(z, LW__OP_STEP, l, 0)));
-        for (int k = 0; k < z->n_adcs; k++)
-            if (z->adcs[k].parent == i)
-                LW__TRY(lw__set_put(w, &a->after, z->adcs[k].sample_op));
     }
+    for (int i = 0; i < z->n_adcs; i++)
+        if (!z->adcs[i].has_clock)
+            LW__TRY(lw__set_put(w, lw__event_set(z, z->adcs[i].trigger), z->adcs[i].sample_op));
     return LW_OK;
 }
 

@@ -2,15 +2,9 @@
 #ifndef LATEWOOD_RUN_FREEZER_H
 #define LATEWOOD_RUN_FREEZER_H
 
+#include "run/definition.h"
 #include "run/frozen.h"
 #include "run/watch.h"
-
-#define LW__TRY(call)                                                                              \
-    do {                                                                                           \
-        lw_status try_ = (call);                                                                   \
-        if (try_ != LW_OK)                                                                         \
-            return try_;                                                                           \
-    } while (0)
 
 // Where the inputs of a plant come from.
 typedef enum lw__driver_kind {

@@ -35,6 +35,17 @@ typedef struct lw__set {
     uint64_t *words; // n_words; NULL: empty
 } lw__set;
 
+// What makes operations of other things due (event.h).
+typedef enum lw__event_kind {
+    LW__EVENT_NONE,
+    LW__EVENT_ADC // the end of a conversion
+} lw__event_kind;
+
+typedef struct lw__event {
+    lw__event_kind kind;
+    int index; // of the thing that triggers
+} lw__event;
+
 // An input of a group that a held value drives; `delay` ticks later when not 0.
 typedef struct lw__drive {
     const struct lw__group *group;
@@ -127,7 +138,8 @@ typedef struct lw__adc {
     } * steps;
     lw_period period;
     lw_tick offset, takes;
-    int has_clock, index, parent;
+    int has_clock, index;
+    lw__event trigger; // where it has no clock
     int watches_reads; // a second read or an old sample reads otherwise
     int at_once;       // one channel, one sample, at the trigger
     int plain;         // neither noise nor average
