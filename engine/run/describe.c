@@ -4,6 +4,7 @@
 #include "run/frozen.h"
 
 #include "io/source.h"
+#include "run/motion.h"
 #include "run/track.h"
 
 #include <latewood/quantity.h>
@@ -28,6 +29,11 @@ static void say(writer *w, const char *format, ...)
     va_end(arguments);
     if (!w->stopped)
         w->stopped = w->line(w->context, text);
+}
+
+static void say_plain(void *context, const char *text)
+{
+    say(context, "%s", text);
 }
 
 // A time in words: "50 us".
@@ -80,6 +86,10 @@ static void describe_groups(writer *w, const lw_frozen *z)
 {
     for (int i = 0; i < z->n_groups; i++) {
         const lw__group *g = &z->groups[i];
+        if (g->motion != NULL) {
+            g->motion->describe(g, say_plain, w);
+            continue;
+        }
         const lw__kernel *k = &g->kernel;
         double reach = k->norm * lw_tick_seconds(k->reach);
         if (k->method == LW__SUPERPOSED)

@@ -278,7 +278,8 @@ static int plain_dac(const lw__dac *d)
         return 0;
     const lw__group *g = d->drives.list[0].group;
     return d->n_phases == 0 && d->plain && d->log < 0 && !d->newest && d->observers.words == NULL &&
-           d->drives.list[0].delay == 0 && g->observers.words == NULL && g->n_generators == 0;
+           d->drives.list[0].delay == 0 && g->observers.words == NULL && g->n_generators == 0 &&
+           g->motion == NULL;
 }
 
 static int plain_adc(const lw__adc *a)

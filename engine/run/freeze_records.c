@@ -123,6 +123,12 @@ static lw_status signal_record(lw__freezer *w, lw__record *r, const lw_record_de
     if (def->n > 0)
         memcpy(at, def->at, sizeof *at * (size_t)def->n);
     r->at = at;
+    if (r->of.at.kind == LW__SIGNAL_ROW && w->z->groups[r->of.at.index].motion != NULL) {
+        r->moving = &w->z->groups[r->of.at.index];
+        r->served = lw__freezer_integer(w, r->name, "instants with a row", LW_SLICE_METRIC, 1);
+        if (r->served < 0)
+            return LW_ERR_MEMORY;
+    }
     r->timer = lw__freezer_timer(w);
     r->count = lw__freezer_integer(w, r->name, "instants recorded", LW_SLICE_METRIC, 1);
     return r->count >= 0 ? LW_OK : LW_ERR_MEMORY;

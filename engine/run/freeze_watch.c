@@ -124,7 +124,7 @@ static lw_status track_level(lw__freezer *w, lw__track *t, const lw_metric_def *
         lw_error_prefix(w->err, "metric \"%s\": against: ", def->name);
         return lw__blame(def->origin, w->err, status);
     }
-    if (t->against.at.kind == LW__SIGNAL_ROW)
+    if (t->against.at.kind == LW__SIGNAL_ROW && w->z->groups[t->against.at.index].motion == NULL)
         return metric_error(w, def,
                             "against: a plant's output; a source, a value or a number is "
                             "wanted");
@@ -160,11 +160,53 @@ static lw_status track_signal(lw__freezer *w, lw__track *t, const lw_metric_def 
     return lw__blame(def->origin, w->err, status);
 }
 
+// The group with a motion behind a reference; NULL where there is none.
+static const lw__group *motion_behind(const lw__freezer *w, const lw__reference *r)
+{
+    const lw__group *g = r->at.kind == LW__SIGNAL_ROW ? &w->z->groups[r->at.index] : NULL;
+    return g != NULL && g->motion != NULL ? g : NULL;
+}
+
+// A track takes the stretches of one such group as they come.
+static lw_status track_motion(lw__freezer *w, lw__track *t, const lw_metric_def *def)
+{
+    const lw__group *of = motion_behind(w, &t->of), *against = motion_behind(w, &t->against);
+    t->moving = of != NULL ? of : against;
+    if (of != NULL && against != NULL && of != against)
+        return metric_error(w, def,
+                            "of and against are signals of two plants that are each integrated "
+                            "step by step and not connected; one is wanted");
+    return LW_OK;
+}
+
+// Those who follow each group with a motion.
+static lw_status list_watchers(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int i = 0; i < z->n_groups; i++) {
+        lw__group *g = &z->groups[i];
+        if (g->motion == NULL)
+            continue;
+        struct lw__watcher *list =
+            lw__freezer_get(w, sizeof *list * (size_t)(z->n_tracks + z->n_records + 1));
+        if (list == NULL)
+            return LW_ERR_MEMORY;
+        for (int k = 0; k < z->n_tracks; k++)
+            if (z->tracks[k].moving == g)
+                list[g->n_watchers++] = (struct lw__watcher){0, k};
+        for (int k = 0; k < z->n_records; k++)
+            if (z->records[k].moving == g)
+                list[g->n_watchers++] = (struct lw__watcher){1, k};
+        g->watchers = list;
+    }
+    return LW_OK;
+}
+
 // Pieces short enough for the plant and for a sine that it is compared with.
 static void track_pieces(lw__freezer *w, lw__track *t)
 {
     double norm = 0;
-    if (t->of.at.kind == LW__SIGNAL_ROW) {
+    if (t->of.at.kind == LW__SIGNAL_ROW && w->z->groups[t->of.at.index].motion == NULL) {
         const lw__group *g = &w->z->groups[t->of.at.index];
         norm = g->kernel.norm;
         t->n_x = g->n_x;
@@ -200,8 +242,10 @@ static lw_status track_cells(lw__freezer *w, lw__track *t)
     t->sums = lw__freezer_double(w, t->name, "sums", LW_SLICE_METRIC, LW__N_SUMS);
     t->began = lw__freezer_integer(w, t->name, "last change", LW_SLICE_METRIC, 1);
     t->open = lw__freezer_integer(w, t->name, "window is open", LW_SLICE_METRIC, 1);
+    if (t->moving != NULL)
+        t->done = lw__freezer_integer(w, t->name, "taken up to", LW_SLICE_METRIC, 1);
     t->timer = lw__freezer_timer(w);
-    return t->open >= 0 ? LW_OK : LW_ERR_MEMORY;
+    return t->open >= 0 && t->done >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
 static int equal_number(double a, double b)
@@ -227,6 +271,7 @@ static lw_status track_metric(lw__freezer *w, lw__metric *m)
     m->loop = -1;
     LW__TRY(track_signal(w, &t, def));
     LW__TRY(track_level(w, &t, def));
+    LW__TRY(track_motion(w, &t, def));
     if (needs_level(def->kind) && isnan(def->level) && def->against == NULL)
         return metric_error(w, def, "level or against is missing; it is measured against one");
     if (level_first(def->kind) && isnan(t.level))
@@ -322,5 +367,5 @@ lw_status lw__freeze_watch(lw__freezer *w)
         LW__TRY(of_loop(m->def.kind) ? loop_metric(w, m) : track_metric(w, m));
         z->n_metrics = i + 1;
     }
-    return LW_OK;
+    return list_watchers(w);
 }

@@ -90,6 +90,13 @@ typedef struct lw__group {
     lw__generator *generators;
     lw__channel *channels;
     lw__set observers; // operations of phase 8 that want to know of a change
+    // not one linear system: how it moves (motion.h), what that keeps, who follows its stretches
+    const struct lw__motion *motion; // NULL: by the kernel
+    void *moves;
+    int n_watchers;
+    const struct lw__watcher {
+        int is_record, index; // of the track or record
+    } * watchers;
     // cells
     int x, u_anchor, u_now, list_du;             // doubles
     int anchor, list_n, list_tick, list_channel; // integers
@@ -238,6 +245,8 @@ typedef struct lw__record {
     lw_period every;
     lw_tick from, until;
     int timer, count;
+    const lw__group *moving; // of a row of a group with a motion: rows come as it moves
+    int served;              // integer cell: index of the next instant without a row
 } lw__record;
 
 typedef enum lw__op_kind {

@@ -62,7 +62,10 @@ static inline double noise_and_average(lw__lane *s, const lw__adc *a, int channe
 LW__INLINE void take_sample(lw__lane *s, const lw__adc *a, int channel, int64_t number, int W,
                             int L)
 {
-    double y = read_signal(s, &a->of[channel], W, L) * a->gain + a->bias;
+    const lw__reference *of = &a->of[channel];
+    if (of->at.kind == LW__SIGNAL_ROW && s->z->groups[of->at.index].motion != NULL)
+        move_anchor(s, &s->z->groups[of->at.index], W, L); // a sample is an own event
+    double y = read_signal(s, of, W, L) * a->gain + a->bias;
     if (!a->plain)
         y = noise_and_average(s, a, channel, y, number, W, L);
     if (!(fabs(y) <= 1.79e308))

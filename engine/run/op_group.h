@@ -5,6 +5,7 @@
 #define LATEWOOD_RUN_OP_GROUP_H
 
 #include "io/source.h"
+#include "run/motion.h"
 #include "run/state.h"
 
 // State of a group at the present tick into `out`. For one run the cells themselves are the lists
@@ -51,6 +52,10 @@ LW__INLINE void reset_generators(lw__lane *s, const lw__group *g, int W, int L)
 
 LW__INLINE void move_anchor(lw__lane *s, const lw__group *g, int W, int L)
 {
+    if (g->motion != NULL) {
+        g->motion->advance(s, g);
+        return;
+    }
     if (LW__I(g->anchor) != s->now) {
         if (W == 1) {
             lw__changes c = {LW__I(g->list_n), &s->i[g->list_tick], &s->i[g->list_channel],
@@ -106,9 +111,13 @@ LW__INLINE void set_channel(LW__CONTEXT, const lw__group *g, int channel, double
     double du = value - LW__F(g->u_now + channel);
     if (du == 0)
         return;
+    if (g->motion != NULL)
+        g->motion->advance(s, g);
     LW__F(g->u_now + channel) = value;
     lw__tell(p, &g->observers, N);
-    if (LW__I(g->anchor) == s->now)
+    if (g->motion != NULL)
+        g->motion->changed(s, g);
+    else if (LW__I(g->anchor) == s->now)
         LW__F(g->u_anchor + channel) = value;
     else
         list_change(s, g, channel, du, W, L);
@@ -158,6 +167,8 @@ LW__INLINE void op_turn(LW__CONTEXT, const lw__group *g, int generator)
     const lw__generator *gen = &g->generators[generator];
     if (gen->slope >= 0)
         set_channel(LW__HERE, g, gen->slope, lw__source_slope(gen->def, s->now));
+    if (g->motion != NULL)
+        g->motion->changed(s, g);
     int64_t k = LW__I(gen->count) + 1;
     LW__I(gen->count) = k;
     LW__I(s->z->due + gen->timer) = lw__source_change(gen->def, k);

@@ -11,6 +11,8 @@ LW__INLINE double row_value(const lw__lane *s, const lw__group *g, const lw__row
     int at_anchor = LW__I(g->anchor) == s->now;
     if (at_anchor && r->state >= 0)
         return LW__F(g->x + r->state);
+    if (g->motion != NULL)
+        return g->motion->row(s, g, (int)(r - g->rows));
     double y = 0;
     if (at_anchor) {
         for (int k = 0; k < g->n_x; k++)

@@ -36,6 +36,18 @@ double lw__poly_swing(int degree, const double *c)
     return sum;
 }
 
+void lw__poly_part(int degree, double *c, double a, double b)
+{
+    if (a == 0 && b == 1)
+        return;
+    for (int k = 0; k < degree; k++)
+        for (int i = degree - 1; i >= k; i--)
+            c[i] += a * c[i + 1];
+    double factor = 1;
+    for (int k = 1; k <= degree; k++)
+        c[k] *= factor *= b - a;
+}
+
 double lw__poly_product_integral(int degree_p, const double *p, int degree_q, const double *q)
 {
     double sum = 0;

@@ -12,6 +12,8 @@ int lw__poly_roots(int degree, const double *c, double *roots);
 double lw__poly_product_integral(int degree_p, const double *p, int degree_q, const double *q);
 // Integral over [a, b] of p.
 double lw__poly_integral(int degree, const double *c, double a, double b);
+// p on [a, b] written as a polynomial on [0, 1], in its place.
+void lw__poly_part(int degree, double *c, double a, double b);
 // Bound of |p - p(0)| on [0, 1].
 double lw__poly_swing(int degree, const double *c);
 

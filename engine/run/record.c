@@ -53,11 +53,47 @@ void lw__record_take(lw__lane *s, int record)
     const lw__record *r = &s->z->records[record];
     int W = s->width, L = s->lane;
     int64_t k = LW__I(r->count);
-    double value = lw__signal_value(s, &r->of);
+    if (r->moving != NULL && LW__I(r->moving->anchor) == s->now)
+        lw__record_rest(s, record, s->now + 1);
+    double value = r->moving == NULL ? lw__signal_value(s, &r->of) : 0;
     do {
-        lw__table_add(s, record, (double[]){lw_tick_seconds(s->now), value});
+        if (r->moving == NULL)
+            lw__table_add(s, record, (double[]){lw_tick_seconds(s->now), value});
         k++;
     } while (instant_of(r, k) == s->now && s->status == LW_OK);
     LW__I(r->count) = k;
     LW__I(s->z->due + r->timer) = instant_of(r, k);
+}
+
+// ---- rows of a group with a motion
+
+void lw__record_stretch(lw__lane *s, int record, const lw__stretch *stretch, lw_tick limit)
+{
+    const lw__record *r = &s->z->records[record];
+    int W = s->width, L = s->lane, degree = -1;
+    int64_t k = LW__I(r->served);
+    double c[LW__POLY_MAX + 1], length = stretch->end - stretch->begin;
+    for (lw_tick at; s->status == LW_OK && (at = instant_of(r, k)) < limit; k++) {
+        double since = lw_tick_seconds(at - stretch->anchor);
+        if (!(since < stretch->end)) // at the end of a stretch: the next one begins with it
+            break;
+        if (degree < 0)
+            degree = stretch->row(stretch, r->of.at.part, c);
+        double in = since > stretch->begin ? (since - stretch->begin) / length : 0;
+        lw__table_add(s, record, (double[]){lw_tick_seconds(at), lw__poly_value(degree, c, in)});
+    }
+    LW__I(r->served) = k;
+}
+
+void lw__record_rest(lw__lane *s, int record, lw_tick limit)
+{
+    const lw__record *r = &s->z->records[record];
+    int W = s->width, L = s->lane;
+    int64_t k = LW__I(r->served);
+    double value = 0;
+    if (instant_of(r, k) < limit)
+        value = lw__signal_value(s, &r->of);
+    for (lw_tick at; s->status == LW_OK && (at = instant_of(r, k)) < limit; k++)
+        lw__table_add(s, record, (double[]){lw_tick_seconds(at), value});
+    LW__I(r->served) = k;
 }

@@ -6,6 +6,7 @@
 // 2. A lane that ended stays as it was at its last operation.
 
 #include "run/driver.h"
+#include "run/motion.h"
 #include "run/record.h"
 #include "run/track.h"
 
@@ -46,6 +47,8 @@ static void start_plants(lw__lane *s, int W, int L)
             LW__I(z->due + g->timer) = lw_period_at(g->grid, g->grid_offset, g->first);
         for (int k = 0; k < g->n_generators; k++)
             LW__I(z->due + g->generators[k].timer) = lw__source_change(g->generators[k].def, 0);
+        if (g->motion != NULL)
+            g->motion->start(s, g);
     }
 }
 
@@ -224,9 +227,11 @@ void lw_run_finish(lw_run *run)
     if (run->finished)
         return;
     run->finished = 1;
-    for (int k = 0; k < run->width; k++)
+    for (int k = 0; k < run->width; k++) {
+        lw__observe_end(&run->lanes[k]);
         for (int t = 0; t < run->z->n_tracks; t++)
             lw__track_finish(&run->lanes[k], t);
+    }
 }
 
 lw_tick lw_run_now(const lw_run *run, int lane)

@@ -26,7 +26,10 @@ void lw__group_state(const lw__lane *s, int group, double *x, double *u)
 {
     int W = s->width, L = s->lane;
     const lw__group *g = &s->z->groups[group];
-    group_state(s, g, W, L, x, s->work);
+    for (int k = 0; g->motion != NULL && k < g->n_x; k++)
+        x[k] = g->motion->row(s, g, g->n_rows - g->n_plant_states + k);
+    if (g->motion == NULL)
+        group_state(s, g, W, L, x, s->work);
     for (int k = 0; k < g->n_u; k++)
         u[k] = LW__F(g->u_now + k);
 }

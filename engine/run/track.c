@@ -259,11 +259,90 @@ static void take_piece(lw__lane *s, int track, const piece *p)
 
 // ---- stretches
 
+// One signal over [lo, hi] seconds after the anchor of a stretch.
+static void part_series(const lw__lane *s, const lw__track *t, const lw__reference *r, double held,
+                        const lw__stretch *st, double lo, double hi, double *c)
+{
+    int W = s->width, L = s->lane;
+    memset(c, 0, sizeof(double) * (LW__POLY_MAX + 1));
+    if (r->at.kind == LW__SIGNAL_ROW && &s->z->groups[r->at.index] == st->group) {
+        int degree = st->row(st, r->at.part, c);
+        double length = st->end - st->begin;
+        lw__poly_part(degree, c, (lo - st->begin) / length, (hi - st->begin) / length);
+        return;
+    }
+    lw_tick from = st->anchor + (lw_tick)floor(lo * 1e12); // whole ticks, not after lo
+    double first = lw_tick_seconds(from - st->anchor), length = hi - first;
+    signal_series(s, t, r, held, LW__I(t->began), from, length, c);
+    if (lo > first)
+        lw__poly_part(t->degree, c, (lo - first) / length, 1);
+}
+
+// Pieces short enough for the other signal too.
+void lw__track_stretch(lw__lane *s, int track, const lw__stretch *st)
+{
+    const lw__track *t = &s->z->tracks[track];
+    int W = s->width, L = s->lane;
+    if (LW__I(t->open) != 1)
+        return;
+    double lo = fmax(st->begin, lw_tick_seconds(LW__I(t->done) - st->anchor));
+    double most = lw_tick_seconds(t->piece), offset = lw_tick_seconds(st->anchor - t->from);
+    while (lo < st->end) {
+        double hi = st->end - lo > most ? lo + most : st->end, r[LW__POLY_MAX + 1];
+        piece p = {.begin = offset + lo, .length = hi - lo};
+        part_series(s, t, &t->of, LW__F(t->held), st, lo, hi, p.y);
+        part_series(s, t, &t->against, LW__F(t->wanted), st, lo, hi, r);
+        for (int k = 0; k <= LW__POLY_MAX; k++) {
+            p.e[k] = p.y[k] - r[k];
+            p.degree = p.y[k] != 0 || r[k] != 0 ? k : p.degree;
+        }
+        take_piece(s, track, &p);
+        lo = hi;
+    }
+}
+
+void lw__track_done(lw__lane *s, int track)
+{
+    int W = s->width, L = s->lane;
+    LW__I(s->z->tracks[track].done) = s->now;
+}
+
+typedef struct follower {
+    lw__lane *s;
+    int track;
+} follower;
+
+static void take_trial(void *context, const lw__stretch *stretch)
+{
+    const follower *f = context;
+    lw__track_stretch(f->s, f->track, stretch);
+}
+
+// The group moves later: a trial gives what is wanted up to now. Where it fails, no figure is one.
+static void follow(lw__lane *s, int track)
+{
+    const lw__track *t = &s->z->tracks[track];
+    int W = s->width, L = s->lane;
+    follower f = {s, track};
+    lw_tick at;
+    const char *text;
+    if (LW__I(t->done) == s->now)
+        return;
+    if (t->moving->motion->look(s, t->moving, take_trial, &f, &at, &text) != LW_OK)
+        for (int k = 0; k < LW__N_SUMS; k++)
+            *sum_of(s, t, (lw__sum)k) = (double)NAN;
+    LW__I(t->done) = s->now;
+}
+
 // From the last change up to the present tick.
 static void close_stretch(lw__lane *s, int track)
 {
     const lw__track *t = &s->z->tracks[track];
     int W = s->width, L = s->lane;
+    if (t->moving != NULL) {
+        follow(s, track);
+        return;
+    }
     lw_tick began = LW__I(t->began), at = began;
     double held = LW__F(t->held), wanted = LW__F(t->wanted);
     while (at < s->now) {
@@ -285,9 +364,11 @@ static void begin_stretch(lw__lane *s, const lw__track *t)
 {
     int W = s->width, L = s->lane;
     LW__I(t->began) = s->now;
+    if (t->moving != NULL)
+        LW__I(t->done) = s->now;
     LW__F(t->held) = t->of.at.kind == LW__SIGNAL_ROW ? 0 : lw__signal_value(s, &t->of);
-    LW__F(t->wanted) = lw__signal_value(s, &t->against);
-    if (t->of.at.kind != LW__SIGNAL_ROW)
+    LW__F(t->wanted) = t->against.at.kind == LW__SIGNAL_ROW ? 0 : lw__signal_value(s, &t->against);
+    if (t->of.at.kind != LW__SIGNAL_ROW || s->z->groups[t->of.at.index].motion != NULL)
         return;
     const lw__group *g = &s->z->groups[t->of.at.index];
     double *x = s->work + LW__WORK_BEHIND(s->z), *u = x + g->n_x;

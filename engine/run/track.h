@@ -2,7 +2,7 @@
 #ifndef LATEWOOD_RUN_TRACK_H
 #define LATEWOOD_RUN_TRACK_H
 
-#include "run/state.h"
+#include "run/motion.h"
 
 // What the metrics of a track need beyond its plain sums.
 typedef enum lw__need {
@@ -50,6 +50,9 @@ typedef struct lw__track {
     // cells
     int x, u, held, wanted, sums; // doubles
     int began, open;              // integers; open: 0 not yet, 1 open, 2 closed
+    // where a signal is a row of a group with a motion: its pieces come as that moves
+    const lw__group *moving;
+    int done; // integer: tick up to which they were taken
 } lw__track;
 
 // A metric: a reading of a track, or of a loop's latencies.
@@ -68,6 +71,10 @@ typedef struct lw__metric {
 
 void lw__track_update(lw__lane *s, int track);
 void lw__track_finish(lw__lane *s, int track);
+// An accepted stretch of the group that the track follows; all of them up to the present tick were
+// given.
+void lw__track_stretch(lw__lane *s, int track, const lw__stretch *stretch);
+void lw__track_done(lw__lane *s, int track);
 void lw__track_latency(lw__lane *s, int loop, lw_tick latency);
 double lw__metric_value(const lw__lane *s, int metric);
 
