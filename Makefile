@@ -105,7 +105,7 @@ libraries_cflags = $(call as_system,$(GSL_CFLAGS) $(SLEEF_CFLAGS) $(SQLITE_CFLAG
 uses_sqlite := $(shell grep -rlsE '^ *\# *include *<sqlite3\.h>' engine)
 libraries = -Wl,--as-needed $(GSL_LIBS) $(SLEEF_LIBS) $(if $(uses_sqlite),$(SQLITE_LIBS)) -lm
 
-engine_flags = $(common) -fvisibility=hidden -DLW_SHARED -Iengine/include -Iengine \
+engine_flags = $(common) -D_XOPEN_SOURCE=700 -fvisibility=hidden -DLW_SHARED -Iengine/include -Iengine \
                $(libraries_cflags)
 binding_flags = $(common) -D_POSIX_C_SOURCE=200809L -DLATEWOOD_VERSION='"$(VERSION)"' \
                 -Iengine/include $(call as_system,$(LUA_CFLAGS))

@@ -74,6 +74,7 @@ need_build() {
   need_library liblua5.4-dev "the library Lua 5.4" lua_library
   need_library libgsl-dev "the GNU Scientific Library" have_library gsl
   need_library libsleef-dev "the library SLEEF" have_library sleef
+  need_library libsqlite3-dev "the library SQLite" have_library sqlite3
 }
 
 need_tests() {
@@ -153,6 +154,7 @@ build)
   print_flags GSL gsl
   print_flags LUA "$(lua_library)"
   print_flags SLEEF sleef
+  print_flags SQLITE sqlite3
   ;;
 tests)
   print_flags CHECK check
