@@ -2,6 +2,7 @@
 // world that they may ask for. What the commands do is written in scripts/latewood/command.lua.
 
 #include "latewood_lua.h"
+#include "program_batch.h"
 #include "program_files.h"
 #include "program_sandbox.h"
 
@@ -141,6 +142,7 @@ static int run_command(lua_State *L)
         lua_rawseti(L, -2, i);
     }
     luaL_newlib(L, host);
+    lw__program_batch(L);
     lua_pushboolean(L, takes_colour(STDOUT_FILENO));
     lua_setfield(L, -2, "colour");
     lua_pushboolean(L, is_terminal(STDERR_FILENO));

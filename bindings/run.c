@@ -323,6 +323,36 @@ int lw__lua_run_restart(lua_State *L)
     return 1;
 }
 
+// row(number): the whole run of that number, without freezing again. Gives the status as a number
+// (0: reached its end), the instant and the message of an early end, then each metric.
+int lw__lua_run_row(lua_State *L)
+{
+    lw_error err = {LW_OK, ""};
+    lw__lua_run *box = lw__lua_run_self(L);
+    lw__lua_reader r = lw__lua_arguments(L, "row", 2);
+    box->number = (uint64_t)lw__lua_whole(&r, "the number", 2, 0, INT64_MAX);
+    refuse_busy(L, box, "restart");
+    lua_pushnil(L);
+    lua_setiuservalue(L, 1, RUN_MESSAGE);
+    lw_run_restart(box->run, box->seed, box->number);
+    box->finished = 0;
+    lw_status status = advance(L, 1, box->lasts);
+    if (status != LW_OK)
+        status = lw_run_status(box->run, 0, &err);
+    if (status == LW_ERR_LAW && lua_getiuservalue(L, 1, RUN_MESSAGE) == LUA_TSTRING)
+        return lua_error(L); // the study is wrong, not the loop
+    finish(L, 1);
+    lua_settop(L, 2);
+    int n = lw_frozen_n_metrics(box->frozen);
+    luaL_checkstack(L, n + 4, NULL);
+    lua_pushinteger(L, status);
+    lua_pushnumber(L, lw_tick_seconds(lw_run_now(box->run, 0)));
+    lua_pushstring(L, err.text);
+    for (int i = 0; i < n; i++)
+        lua_pushnumber(L, status == LW_OK ? lw_run_metric(box->run, 0, i) : (double)NAN);
+    return n + 3;
+}
+
 int lw__lua_run_close(lua_State *L)
 {
     lw__lua_run *box = luaL_checkudata(L, 1, LW__LUA_RUN);

@@ -120,7 +120,7 @@ void lw_ledger_close(lw_ledger *ledger)
 
 static lw_status check_def(const lw_ledger_def *def, lw_error *err)
 {
-    if (def->path == NULL || def->path[0] == 0)
+    if (def->path != NULL && def->path[0] == 0)
         return lw_error_set(err, LW_ERR_ARGUMENT, "the ledger has no path");
     if (def->n_metrics < 0 || def->n_metrics > LW_LEDGER_MOST_METRICS)
         return lw_error_set(err, LW_ERR_ARGUMENT, "a ledger of %d metrics; permitted 0 to %d",
@@ -145,6 +145,8 @@ lw_status lw_ledger_create(const lw_ledger_def *def, lw_error *err)
     lw_status status = check_def(def, err);
     if (status != LW_OK)
         return status;
+    if (def->path == NULL)
+        return LW_OK;
     if (access(def->path, F_OK) == 0)
         return lw_error_set(err, LW_ERR_DUPLICATE, "%s: the file exists", def->path);
     size_t room = strlen(def->path) + 40;

@@ -55,7 +55,7 @@ typedef struct lw_ledger_limit {
 } lw_ledger_limit;
 
 typedef struct lw_ledger_def {
-    const char *path;
+    const char *path; // NULL: in memory, gone when closed
     int n_facts;
     const lw_fact *facts;
     int n_metrics; // 0 to LW_LEDGER_MOST_METRICS

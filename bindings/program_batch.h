@@ -1,0 +1,32 @@
+// Batches for the program: crews, ledgers and their statistics as the shipped modules use them.
+#ifndef LATEWOOD_BINDINGS_PROGRAM_BATCH_H
+#define LATEWOOD_BINDINGS_PROGRAM_BATCH_H
+
+#include <lua.h>
+
+// Add to the host table on top of the stack:
+//
+// ledger(mode, def)  mode "create", "resume" or "open" (def.path); a ledger, or nil, message, name
+//   of the status. def: path (absent: in memory), facts = { { section, name, value }, ... },
+//   metrics = { { name, unit }, ... }, limits = { { name, metric, limit, at_least }, ... }, keep =
+//   "all", "failures" or "counts".
+//   methods  point(number, name, text), commit(), provenance(name, value): true, or nil, message,
+//            name; done(point, block): mask; tally(point, name); kept(); facts(), points(),
+//            metrics(): lists; ended(point, most): list of { run, instant, text };
+//            row(point, run): status, instant, text, values; column(point, metric): a sample;
+//            close()
+// crew { jobs, values, compute }  starts the processes; compute(point, run) returns status (0:
+//   reached its end), instant, text and the values. A crew, or nil, message, name.
+//   methods  work(ledger, next, finished, pause): "done" or "stopped", or nil, message, name;
+//            next() gives point, block, mask or nil; finished(point, block) and pause() stop by
+//            true; lost(); close()
+// proportion(hits, n, confidence, side), rate(count, exposure, confidence, side): lo, hi;
+//   side "both", "lower", "upper"; tolerance_runs(share, confidence, order)
+// interrupted()  number of the signal that asks to stop, from catch() on until release()
+//
+// A sample: n(), undefined(), mean(), deviation(), lowest(), highest() (value and run),
+// mean_interval(confidence, side), quantile(share), quantile_interval(share, confidence, side)
+// (-inf and inf where n is too small), minus(other): a sample of the differences run by run.
+void lw__program_batch(lua_State *L);
+
+#endif
