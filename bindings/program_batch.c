@@ -6,9 +6,12 @@
 
 #include "program_batch.h"
 
+#include "program_files.h"
 #include "program_sample.h"
+#include "program_sandbox.h"
 
 #include <latewood/crew.h>
+#include <latewood/hash.h>
 #include <lauxlib.h>
 #include <math.h>
 #include <signal.h>
@@ -620,6 +623,49 @@ static int crew_work(lua_State *L)
     return 1;
 }
 
+// ---- what a study is made of
+
+// inputs(): list of { kind, name, text or hash }. Texts of the study and its modules, hashes of
+// data.
+static int inputs(lua_State *L)
+{
+    char why[700];
+    lua_newtable(L);
+    lw__program_inputs(L);
+    int list = lua_gettop(L), n = (int)lua_rawlen(L, list);
+    for (int k = 1; k <= n; k++) {
+        lua_settop(L, list);
+        lua_rawgeti(L, list, k);
+        int entry = list + 1, missing;
+        const char *kind = text_at(L, entry, 1), *path = text_at(L, entry, 3);
+        size_t n_bytes = 0;
+        char *text = lw__program_read(path, &n_bytes, &missing, why, sizeof why);
+        if (text == NULL)
+            return luaL_error(L, "%s", why);
+        lua_createtable(L, 3, 0);
+        lua_rawgeti(L, entry, 1);
+        lua_rawseti(L, -2, 1);
+        lua_rawgeti(L, entry, 2);
+        lua_rawseti(L, -2, 2);
+        char hex[65];
+        lw_hash h = lw_hash_begin();
+        lw_hash_add(&h, text, n_bytes);
+        lw_hash_text(&h, hex);
+        int whole = strcmp(kind, "data") != 0 && strlen(text) == n_bytes;
+        if (whole)
+            lua_pushstring(L, text);
+        else
+            lua_pushfstring(L, "sha256 %s", hex);
+        free(text);
+        lua_rawseti(L, -2, 3);
+        lua_pushstring(L, hex);
+        lua_rawseti(L, -2, 4);
+        lua_rawseti(L, list - 1, k);
+    }
+    lua_settop(L, list - 1);
+    return 1;
+}
+
 // ---- intervals
 
 static int push_interval(lua_State *L, lw_status status, lw_interval r, const lw_error *err)
@@ -725,6 +771,7 @@ void lw__program_batch(lua_State *L)
         {"work", crew_work}, {"lost", crew_lost}, {"close", crew_close}, {NULL, NULL}};
     static const luaL_Reg functions[] = {{"ledger", new_ledger},
                                          {"crew", new_crew},
+                                         {"inputs", inputs},
                                          {"proportion", proportion},
                                          {"rate", rate},
                                          {"tolerance_runs", tolerance_runs},

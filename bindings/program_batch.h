@@ -22,6 +22,8 @@
 //            true; lost(); close()
 // proportion(hits, n, confidence, side), rate(count, exposure, confidence, side): lo, hi;
 //   side "both", "lower", "upper"; tolerance_runs(share, confidence, order)
+// inputs()  what the study is made of: list of { "study", "module" or "data", name, text ("sha256
+//   ..." of data), hash }
 // interrupted()  number of the signal that asks to stop, from catch() on until release()
 //
 // A sample: n(), undefined(), mean(), deviation(), lowest(), highest() (value and run),

@@ -35,6 +35,7 @@
 #define FOLDER "latewood.program.folder"   // registry: the study's folder
 #define LOADED "latewood.program.loaded"   // registry: modules of the study's folder
 #define COUNT "latewood.program.count"     // registry: userdata with the instructions used
+#define INPUTS "latewood.program.inputs"   // registry: list of { kind, name, path } of files read
 
 #define HOOK_EVERY 100000
 #define SHIPPED "@scripts/latewood/"
@@ -149,6 +150,33 @@ static int compile(lua_State *L, const char *text, size_t n_bytes, const char *p
     return status;
 }
 
+// Note that the study is made of this file too, once.
+static void note_input(lua_State *L, const char *kind, const char *name, const char *path)
+{
+    lua_getfield(L, LUA_REGISTRYINDEX, INPUTS);
+    if (lua_getfield(L, -1, name) != LUA_TNIL) {
+        lua_pop(L, 2);
+        return;
+    }
+    lua_pop(L, 1);
+    lua_createtable(L, 3, 0);
+    lua_pushstring(L, kind);
+    lua_rawseti(L, -2, 1);
+    lua_pushstring(L, name);
+    lua_rawseti(L, -2, 2);
+    lua_pushstring(L, path);
+    lua_rawseti(L, -2, 3);
+    lua_pushvalue(L, -1);
+    lua_setfield(L, -3, name);
+    lua_rawseti(L, -2, (lua_Integer)lua_rawlen(L, -2) + 1);
+    lua_pop(L, 1);
+}
+
+void lw__program_inputs(lua_State *L)
+{
+    lua_getfield(L, LUA_REGISTRYINDEX, INPUTS);
+}
+
 // require of a study: "latewood", or a Lua file of its folder ("parts.motor": parts/motor.lua).
 static int study_require(lua_State *L)
 {
@@ -170,8 +198,10 @@ static int study_require(lua_State *L)
     size_t n_bytes = 0;
     int missing, status = LUA_ERRRUN;
     char *text = path != NULL ? lw__program_read(path, &n_bytes, &missing, why, sizeof why) : NULL;
-    if (text != NULL)
+    if (text != NULL) {
+        note_input(L, "module", relative, path);
         status = compile(L, text, n_bytes, relative);
+    }
     free(text);
     free(path);
     if (text == NULL)
@@ -200,6 +230,7 @@ static int resolve(lua_State *L)
         lua_pushstring(L, why);
         return 2;
     }
+    note_input(L, "data", name, path);
     lua_pushstring(L, path);
     free(path);
     return 1;
@@ -415,6 +446,8 @@ void lw__program_open(lua_State *L)
     lua_insert(L, -2);
     lua_setfield(L, -2, "latewood");
     lua_setfield(L, LUA_REGISTRYINDEX, LOADED);
+    lua_newtable(L);
+    lua_setfield(L, LUA_REGISTRYINDEX, INPUTS);
     *(int64_t *)lua_newuserdatauv(L, sizeof(int64_t), 0) = 0;
     lua_setfield(L, LUA_REGISTRYINDEX, COUNT);
     lua_sethook(L, on_count, LUA_MASKCOUNT, HOOK_EVERY);
@@ -437,6 +470,8 @@ int lw__program_study(lua_State *L, const char *path)
     char *text = lw__program_read(path, &n_bytes, &missing, why, sizeof why);
     if (text == NULL)
         return message_with_code(L, missing ? EXIT_NO_INPUT : EXIT_DATA, why);
+    const char *slash = strrchr(path, '/');
+    note_input(L, "study", slash != NULL ? slash + 1 : path, path);
     char *folder = lw__program_folder_of(path);
     lua_pushstring(L, folder);
     lua_setfield(L, LUA_REGISTRYINDEX, FOLDER);

@@ -22,6 +22,10 @@ void lw__program_open(lua_State *L);
 // returns an exit code. Called inside a protected call.
 int lw__program_study(lua_State *L, const char *path);
 
+// Push the list of { kind, name, path } of the files that the study is made of so far: "study",
+// "module", "data".
+void lw__program_inputs(lua_State *L);
+
 // Begin another stretch: the file of the study, the building of one rig and each run may use the
 // instructions anew. Once they were used up nothing brings them back.
 void lw__program_allow_again(lua_State *L);

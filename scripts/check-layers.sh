@@ -19,7 +19,7 @@ BEGIN {
         n = split(row[i], name, " ")
         for (j = 1; j <= n; j++) rank[name[j]] = i
     }
-    n = split("status time quantity elementary draw", name, " ")
+    n = split("status time quantity elementary draw hash", name, " ")
     for (j = 1; j <= n; j++) owner[name[j]] = "base"
     owner["rig"] = "io"     # definitions of converters and loops, which io reads
     owner["watch"] = "run"
