@@ -11,6 +11,7 @@
 #include "captured.h"
 #include "file.h"
 #include "latewood_lua.h"
+#include "statistics.h"
 
 #include <string.h>
 
@@ -24,6 +25,7 @@
 #define SOURCE(name) {#name, lw__lua_source_##name},
 #define TIMING(name) {#name, lw__lua_timing_##name},
 #define LAW(name) {#name, lw__lua_law_##name},
+#define STATISTICS(name) {#name, lw__lua_statistics_##name},
 #define RIG(name) {#name, lw__lua_rig_##name},
 #define RUN(name) {#name, lw__lua_run_##name},
 #define END                                                                                        \
@@ -38,6 +40,7 @@ static const luaL_Reg timings[] = {LW__LUA_TIMINGS(TIMING) END};
 static const luaL_Reg timing_methods[] = {LW__LUA_TIMING_METHODS(TIMING) END};
 static const luaL_Reg laws[] = {LW__LUA_LAWS(LAW) END};
 static const luaL_Reg law_methods[] = {LW__LUA_LAW_METHODS(LAW) END};
+static const luaL_Reg statistics[] = {LW__LUA_STATISTICS(STATISTICS) END};
 static const luaL_Reg rig_methods[] = {LW__LUA_RIG_METHODS(RIG) END};
 static const luaL_Reg run_methods[] = {LW__LUA_RUN_METHODS(RUN) END};
 static const luaL_Reg int_methods[] = {{"value", lw__lua_int_value}, END};
@@ -45,6 +48,8 @@ static const luaL_Reg no_methods[] = {END};
 
 static const luaL_Reg module_functions[] = {{"rig", lw__lua_rig_new},
                                             {"draw", lw__lua_draw},
+                                            {"normal_quantile", lw__lua_normal_quantile},
+                                            {"normal_cdf", lw__lua_normal_cdf},
                                             {"random", lw__lua_random},
                                             {"quantise", lw__lua_quantise},
                                             {"int", lw__lua_int_new},
@@ -58,7 +63,11 @@ static const luaL_Reg module_functions[] = {{"rig", lw__lua_rig_new},
 static const struct {
     const char *name;
     const luaL_Reg *functions;
-} tables[] = {{"plant", plants}, {"source", sources}, {"timing", timings}, {"law", laws}};
+} tables[] = {{"plant", plants},
+              {"source", sources},
+              {"timing", timings},
+              {"law", laws},
+              {"statistics", statistics}};
 
 // ---- classes
 
@@ -141,7 +150,7 @@ static void make_class(lua_State *L, const char *name, const luaL_Reg *methods,
 
 // ---- the parts written in Lua
 
-static const char *const parts[] = {"study", NULL};
+static const char *const parts[] = {"study", "spread", NULL};
 
 static int is_part(const char *name)
 {
@@ -238,6 +247,7 @@ int luaopen_latewood(lua_State *L)
     for (size_t i = 0; i < sizeof classes / sizeof *classes; i++)
         make_class(L, classes[i].name, classes[i].methods, classes[i].meta);
     lw__lua_file_class(L);
+    lw__lua_sample_class(L);
     luaL_newlib(L, module_functions);
     for (size_t i = 0; i < sizeof tables / sizeof *tables; i++) {
         lua_newtable(L);

@@ -25,6 +25,8 @@
     X(p) X(pi) X(pd) X(pid) X(lead) X(biquad) X(z_transfer) X(state_feedback) X(observer) X(own)
 #define LW__LUA_LAW_METHODS(X) X(inputs) X(outputs) X(states)
 
+#define LW__LUA_STATISTICS(X) X(sample) X(proportion) X(rate) X(tolerance_runs)
+
 #define LW__LUA_RIG_METHODS(X)                                                                     \
     X(plant) X(connect) X(source) X(value) X(adc) X(dac) X(loop)                                   \
     X(freeze) X(describe) X(slices) X(start) X(run) X(close)
@@ -37,6 +39,7 @@
 #define LW__LUA_DECLARE_SOURCE(name) int lw__lua_source_##name(lua_State *L);
 #define LW__LUA_DECLARE_TIMING(name) int lw__lua_timing_##name(lua_State *L);
 #define LW__LUA_DECLARE_LAW(name) int lw__lua_law_##name(lua_State *L);
+#define LW__LUA_DECLARE_STATISTICS(name) int lw__lua_statistics_##name(lua_State *L);
 #define LW__LUA_DECLARE_RIG(name) int lw__lua_rig_##name(lua_State *L);
 #define LW__LUA_DECLARE_RUN(name) int lw__lua_run_##name(lua_State *L);
 LW__LUA_PLANTS(LW__LUA_DECLARE_PLANT)
@@ -46,6 +49,7 @@ LW__LUA_TIMINGS(LW__LUA_DECLARE_TIMING)
 LW__LUA_TIMING_METHODS(LW__LUA_DECLARE_TIMING)
 LW__LUA_LAWS(LW__LUA_DECLARE_LAW)
 LW__LUA_LAW_METHODS(LW__LUA_DECLARE_LAW)
+LW__LUA_STATISTICS(LW__LUA_DECLARE_STATISTICS)
 LW__LUA_RIG_METHODS(LW__LUA_DECLARE_RIG)
 LW__LUA_RUN_METHODS(LW__LUA_DECLARE_RUN)
 
@@ -61,6 +65,8 @@ int lw__lua_int_describe(lua_State *L);
 // Of the module itself.
 int lw__lua_rig_new(lua_State *L);
 int lw__lua_draw(lua_State *L);
+int lw__lua_normal_quantile(lua_State *L);
+int lw__lua_normal_cdf(lua_State *L);
 int lw__lua_random(lua_State *L);
 int lw__lua_random_seed(lua_State *L);
 int lw__lua_quantise(lua_State *L);

@@ -7,8 +7,8 @@
 #include "program_batch.h"
 
 #include "program_files.h"
-#include "program_sample.h"
 #include "program_sandbox.h"
+#include "statistics.h"
 
 #include <latewood/crew.h>
 #include <latewood/hash.h>
@@ -350,7 +350,7 @@ static int ledger_ended(lua_State *L)
 }
 
 typedef struct column_of {
-    lw__program_sample *sample;
+    lw__lua_sample *sample;
     int metric;
 } column_of;
 
@@ -358,7 +358,7 @@ static int take_value(void *context, const lw_ledger_row *row)
 {
     column_of *c = context;
     double v = row->status == LW_OK ? row->values[c->metric] : (double)NAN;
-    return lw__program_sample_add(c->sample, row->run, v);
+    return lw__lua_sample_add(c->sample, row->run, v);
 }
 
 static int ledger_column(lua_State *L)
@@ -367,7 +367,7 @@ static int ledger_column(lua_State *L)
     lw_ledger *ledger = ledger_at(L, 1);
     int64_t point = luaL_checkinteger(L, 2), metric = luaL_checkinteger(L, 3);
     luaL_argcheck(L, metric >= 1 && metric <= lw_ledger_n_metrics(ledger), 3, "no such metric");
-    column_of c = {lw__program_sample_new(L), (int)metric - 1};
+    column_of c = {lw__lua_sample_new(L), (int)metric - 1};
     if (lw_ledger_rows(ledger, point, take_value, &c, &err) != LW_OK)
         return failure(L, &err);
     if (c.sample->failed)
@@ -666,47 +666,6 @@ static int inputs(lua_State *L)
     return 1;
 }
 
-// ---- intervals
-
-static int push_interval(lua_State *L, lw_status status, lw_interval r, const lw_error *err)
-{
-    if (status != LW_OK)
-        return luaL_error(L, "%s", err->text);
-    lua_pushnumber(L, r.lo);
-    lua_pushnumber(L, r.hi);
-    return 2;
-}
-
-static int proportion(lua_State *L)
-{
-    lw_error err;
-    lw_interval r = {0, 1};
-    lw_status status =
-        lw_proportion_exact(luaL_checkinteger(L, 1), luaL_checkinteger(L, 2),
-                            luaL_checknumber(L, 3), lw__program_side(L, 4), &r, &err);
-    return push_interval(L, status, r, &err);
-}
-
-static int rate(lua_State *L)
-{
-    lw_error err;
-    lw_interval r = {0, 0};
-    lw_status status = lw_rate_exact(luaL_checkinteger(L, 1), luaL_checknumber(L, 2),
-                                     luaL_checknumber(L, 3), lw__program_side(L, 4), &r, &err);
-    return push_interval(L, status, r, &err);
-}
-
-static int tolerance_runs(lua_State *L)
-{
-    lw_error err;
-    int64_t n;
-    if (lw_tolerance_runs(luaL_checknumber(L, 1), luaL_checknumber(L, 2), luaL_optinteger(L, 3, 1),
-                          &n, &err) != LW_OK)
-        return luaL_error(L, "%s", err.text);
-    lua_pushinteger(L, n);
-    return 1;
-}
-
 // ---- being asked to stop
 
 static volatile sig_atomic_t asked; // signal that came; a handler can reach nothing else
@@ -772,15 +731,11 @@ void lw__program_batch(lua_State *L)
     static const luaL_Reg functions[] = {{"ledger", new_ledger},
                                          {"crew", new_crew},
                                          {"inputs", inputs},
-                                         {"proportion", proportion},
-                                         {"rate", rate},
-                                         {"tolerance_runs", tolerance_runs},
                                          {"catch", catch_signals},
                                          {"release", release_signals},
                                          {"interrupted", interrupted},
                                          {NULL, NULL}};
     make_class(L, LEDGER, ledger_methods, ledger_close);
     make_class(L, CREW, crew_methods, crew_close);
-    lw__program_sample_class(L);
     luaL_setfuncs(L, functions, 0);
 }

@@ -13,22 +13,16 @@
 //   methods  point(number, name, text), commit(), provenance(name, value): true, or nil, message,
 //            name; done(point, block): mask; tally(point, name); kept(); facts(), points(),
 //            metrics(): lists; ended(point, most): list of { run, instant, text };
-//            row(point, run): status, instant, text, values; column(point, metric): a sample;
-//            close()
+//            row(point, run): status, instant, text, values; column(point, metric): a sample
+//            (statistics.h); close()
 // crew { jobs, values, compute }  starts the processes; compute(point, run) returns status (0:
 //   reached its end), instant, text and the values. A crew, or nil, message, name.
 //   methods  work(ledger, next, finished, pause): "done" or "stopped", or nil, message, name;
 //            next() gives point, block, mask or nil; finished(point, block) and pause() stop by
 //            true; lost(); close()
-// proportion(hits, n, confidence, side), rate(count, exposure, confidence, side): lo, hi;
-//   side "both", "lower", "upper"; tolerance_runs(share, confidence, order)
 // inputs()  what the study is made of: list of { "study", "module" or "data", name, text ("sha256
 //   ..." of data), hash }
 // interrupted()  number of the signal that asks to stop, from catch() on until release()
-//
-// A sample: n(), undefined(), mean(), deviation(), lowest(), highest() (value and run),
-// mean_interval(confidence, side), quantile(share), quantile_interval(share, confidence, side)
-// (-inf and inf where n is too small), minus(other): a sample of the differences run by run.
 void lw__program_batch(lua_State *L);
 
 #endif

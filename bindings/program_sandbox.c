@@ -348,7 +348,7 @@ static void copy_module(lua_State *L, int module)
     lua_pushvalue(L, module);
     copy_table(L, NULL);
     lw__lua_keep_constant(L, -1);
-    static const char *const tables[] = {"plant", "source", "timing", "law", "math"};
+    static const char *const tables[] = {"plant", "source", "timing", "law", "math", "statistics"};
     for (size_t i = 0; i < sizeof tables / sizeof *tables; i++) {
         lua_getfield(L, -1, tables[i]);
         copy_table(L, NULL);

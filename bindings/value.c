@@ -5,6 +5,7 @@
 #include "run.h"
 
 #include <latewood/draw.h>
+#include <latewood/elementary.h>
 #include <latewood/quantity.h>
 #include <math.h>
 #include <stdint.h>
@@ -19,6 +20,24 @@ int lw__lua_draw(lua_State *L)
     at.stream = lw_stream(lw__lua_field_text(&r, "name", 3));
     at.job = (uint32_t)lw__lua_whole(&r, "job", 4, 0, UINT32_MAX);
     lua_pushnumber(L, lw_draw_uniform(at));
+    return 1;
+}
+
+// lw.normal_quantile(p), 0 < p < 1, and lw.normal_cdf(x) of the standard normal distribution.
+int lw__lua_normal_quantile(lua_State *L)
+{
+    lw__lua_reader r = lw__lua_arguments(L, "normal_quantile", 1);
+    double p = lw__lua_number(&r, "p", 1, NULL);
+    if (!(p > 0 && p < 1))
+        lw__lua_bad(&r, "p is %f; permitted between 0 and 1", p);
+    lua_pushnumber(L, lw_normal_quantile(p));
+    return 1;
+}
+
+int lw__lua_normal_cdf(lua_State *L)
+{
+    lw__lua_reader r = lw__lua_arguments(L, "normal_cdf", 1);
+    lua_pushnumber(L, lw_normal_cdf(lw__lua_number(&r, "x", 1, NULL)));
     return 1;
 }
 
