@@ -122,4 +122,7 @@ int lw__lua_push_field(const lw__lua_reader *r, const char *name);
 // period 0: shares are refused.
 double lw__lua_time_or_share(const lw__lua_reader *r, const char *field, int index, double period);
 
+// The timing at `index`; a time becomes a constant one, owned by a userdata on the stack.
+const lw_timing *lw__lua_timing_at(const lw__lua_reader *r, const char *field, int index);
+
 #endif

@@ -32,7 +32,7 @@ static const lw_timing *open_box(const lw__lua_reader *r, const char *field, lw_
     return box->it;
 }
 
-static const lw_timing *timing_at(const lw__lua_reader *r, const char *field, int index)
+const lw_timing *lw__lua_timing_at(const lw__lua_reader *r, const char *field, int index)
 {
     lua_State *L = r->L;
     lw_error err = {LW_OK, ""};
@@ -233,7 +233,7 @@ static const lw_timing *timing_field(const lw__lua_reader *r, const char *field)
 {
     if (lw__lua_push_field(r, field) == LUA_TNIL)
         lw__lua_bad(r, "%s is missing", field);
-    return timing_at(r, field, lua_gettop(r->L));
+    return lw__lua_timing_at(r, field, lua_gettop(r->L));
 }
 
 int lw__lua_timing_modes(lua_State *L)
@@ -285,8 +285,8 @@ int lw__lua_timing_maximum(lua_State *L)
 {
     lw_error err = {LW_OK, ""};
     lw__lua_reader r = lw__lua_arguments(L, "timing maximum", 2);
-    const lw_timing *a = timing_at(&r, "argument 1", 1);
-    const lw_timing *b = timing_at(&r, "argument 2", 2);
+    const lw_timing *a = lw__lua_timing_at(&r, "argument 1", 1);
+    const lw_timing *b = lw__lua_timing_at(&r, "argument 2", 2);
     lw__lua_timing *box = new_timing(L);
     return made(&r, lw_timing_maximum(a, b, &box->it, &err), &err);
 }
@@ -300,9 +300,9 @@ int lw__lua_timing_add(lua_State *L)
     lw__lua_reader r = lw__lua_arguments(L, "timing +", 2);
     int a_is = luaL_testudata(L, 1, LW__LUA_TIMING) != NULL;
     int b_is = luaL_testudata(L, 2, LW__LUA_TIMING) != NULL;
-    const lw_timing *a = timing_at(&r, "the left side", a_is ? 1 : 2);
+    const lw_timing *a = lw__lua_timing_at(&r, "the left side", a_is ? 1 : 2);
     if (a_is && b_is) {
-        const lw_timing *b = timing_at(&r, "the right side", 2);
+        const lw_timing *b = lw__lua_timing_at(&r, "the right side", 2);
         lw__lua_timing *sum = new_timing(L);
         return made(&r, lw_timing_sum(a, b, &sum->it, &err), &err);
     }
@@ -316,7 +316,7 @@ int lw__lua_timing_multiply(lua_State *L)
     lw_error err = {LW_OK, ""};
     lw__lua_reader r = lw__lua_arguments(L, "timing *", 2);
     int a_is = luaL_testudata(L, 1, LW__LUA_TIMING) != NULL;
-    const lw_timing *t = timing_at(&r, "a side", a_is ? 1 : 2);
+    const lw_timing *t = lw__lua_timing_at(&r, "a side", a_is ? 1 : 2);
     double factor = lw__lua_number(&r, "the factor", a_is ? 2 : 1, "1");
     lw__lua_timing *box = new_timing(L);
     return made(&r, lw_timing_affine(t, factor, 0, &box->it, &err), &err);

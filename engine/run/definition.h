@@ -27,6 +27,10 @@ lw_status lw__check_period(const lw__subject *s, const char *field, lw_period pe
 lw_status lw__check_new_name(const lw_rig *rig, const char *origin, const char *what,
                              const char *name, lw_error *err);
 
+// Wires of a law: its ports, each input wired once.
+lw_status lw__check_law_wires(const lw__subject *s, const lw_law *of, int n_in, const lw_wire *in,
+                              int n_out, const lw_wire *out);
+
 // ---- copies
 
 // Copies into the rig's arena; a failure is noted once and looked at at the end.

@@ -6,9 +6,9 @@
 //               before the one at work wait for the next pass (only phases 3 to 7 can)
 //   observers : phase 8, once, after the last pass
 //
-// Phases: 0 anchors and sources, 1 completions (conversions, arrivals, delayed changes, laws after
-// a conversion that took time), 2 latches, 3 samples, 4 conversions without length, 7 laws without
-// length, 8 observers.
+// Phases: 0 anchors and sources, 1 completions (conversions, points of jobs, arrivals, delayed
+// changes, laws after a conversion that took time), 2 latches, 3 samples, 4 conversions without
+// length, 5 releases, 6 dispatch, 7 laws and points of jobs without work before them, 8 observers.
 //
 // Workload: a few timers (below 20) and a few operations an instant. Timers are looked through in
 // a row: for so few that beats any tree. Operations are inlined here, once for each context.
@@ -23,6 +23,7 @@
 #include "run/driver.h"
 
 #include "run/op_adc.h"
+#include "run/op_cpu.h"
 #include "run/op_dac.h"
 #include "run/op_group.h"
 #include "run/op_loop.h"
@@ -108,6 +109,30 @@ LW__INLINE void perform(LW__CONTEXT, int op)
         return;
     case LW__OP_SAMPLE:
         op_sample(LW__HERE, o->thing);
+        return;
+    case LW__OP_LOGICAL:
+        op_logical(LW__HERE, o->thing);
+        return;
+    case LW__OP_WRITES:
+        op_writes(LW__HERE, o->thing);
+        return;
+    case LW__OP_READS:
+        op_reads(LW__HERE, o->thing);
+        return;
+    case LW__OP_RELEASES:
+        op_releases(LW__HERE, o->thing);
+        return;
+    case LW__OP_RELEASE:
+        op_release(LW__HERE, o->thing);
+        return;
+    case LW__OP_DISPATCH:
+        op_dispatch(LW__HERE, o->thing);
+        return;
+    case LW__OP_READ:
+        op_read(LW__HERE, o->thing);
+        return;
+    case LW__OP_POINTS:
+        op_points(LW__HERE, o->thing);
         return;
     case LW__OP_TRACK:
         lw__track_update(s, o->index);

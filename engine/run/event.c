@@ -2,6 +2,8 @@
 
 #include "run/event.h"
 
+#include "run/schedule.h"
+
 #include <string.h>
 
 #define MOST_NAMES 256 // among which the nearest is looked for
@@ -26,6 +28,8 @@ static void offer_all(const lw__freezer *w, search *l)
 {
     for (int i = 0; i < w->z->n_adcs; i++)
         offer(l, w->rig->adcs[i].def.name, LW__EVENT_ADC, i);
+    for (int i = 0; i < w->z->n_tasks; i++)
+        offer(l, w->rig->tasks[i].def.name, LW__EVENT_TASK, i);
 }
 
 lw_status lw__event_find(lw__freezer *w, const char *origin, const char *what, const char *owner,
@@ -37,8 +41,8 @@ lw_status lw__event_find(lw__freezer *w, const char *origin, const char *what, c
     if (l.found.kind != LW__EVENT_NONE)
         return LW_OK;
     const char *near = lw_nearest_name(name, l.names, l.n);
-    return lw__fail_at(origin, w->err, LW_ERR_NAME, "%s \"%s\": %s: no adc \"%s\"%s%s%s", what,
-                       owner, field, name, near ? "; nearest \"" : "", near ? near : "",
+    return lw__fail_at(origin, w->err, LW_ERR_NAME, "%s \"%s\": %s: no adc or task \"%s\"%s%s%s",
+                       what, owner, field, name, near ? "; nearest \"" : "", near ? near : "",
                        near ? "\"" : "");
 }
 
@@ -47,6 +51,8 @@ lw__set *lw__event_set(const lw_frozen *z, lw__event event)
     switch (event.kind) {
     case LW__EVENT_ADC:
         return &z->adcs[event.index].after;
+    case LW__EVENT_TASK:
+        return &z->tasks[event.index].after;
     case LW__EVENT_NONE:
         break;
     }
@@ -62,6 +68,10 @@ static lw__event cause_of(const lw_frozen *z, lw__event event, lw_period *period
         if (z->adcs[event.index].has_clock)
             *period = z->adcs[event.index].item->def.every;
         return z->adcs[event.index].trigger;
+    case LW__EVENT_TASK:
+        *period = z->tasks[event.index].release == LW__RELEASE_EVENT ? (lw_period){0, 1}
+                                                                     : z->tasks[event.index].period;
+        return z->tasks[event.index].trigger;
     case LW__EVENT_NONE:
         break;
     }

@@ -10,6 +10,7 @@
 #include "run/freeze.h"
 
 #include "run/freezer.h"
+#include "run/schedule.h"
 
 #include <stdint.h>
 
@@ -30,13 +31,18 @@ static lw_status begin_frozen(lw__freezer *w, lw_tick lasts)
     z->n_adcs = rig->n_adcs;
     z->n_dacs = rig->n_dacs;
     z->n_loops = rig->n_loops;
+    z->n_cores = rig->n_cores;
+    z->n_tasks = rig->n_tasks;
     z->plants = lw__freezer_get(w, sizeof *z->plants * (size_t)(z->n_plants + 1));
     z->sources = lw__freezer_get(w, sizeof *z->sources * (size_t)(z->n_sources + 1));
     z->values = lw__freezer_get(w, sizeof *z->values * (size_t)(z->n_values + 1));
     z->adcs = lw__freezer_get(w, sizeof *z->adcs * (size_t)(z->n_adcs + 1));
     z->dacs = lw__freezer_get(w, sizeof *z->dacs * (size_t)(z->n_dacs + 1));
     z->loops = lw__freezer_get(w, sizeof *z->loops * (size_t)(z->n_loops + 1));
-    if (!z->plants || !z->sources || !z->values || !z->adcs || !z->dacs || !z->loops)
+    z->cores = lw__freezer_get(w, sizeof *z->cores * (size_t)(z->n_cores + 1));
+    z->tasks = lw__freezer_get(w, sizeof *z->tasks * (size_t)(z->n_tasks + 1));
+    if (!z->plants || !z->sources || !z->values || !z->adcs || !z->dacs || !z->loops || !z->cores ||
+        !z->tasks)
         return LW_ERR_MEMORY;
     z->now = lw__freezer_integer(w, rig->name, "now", LW_SLICE_SCHEDULE, 1);
     return z->now >= 0 ? LW_OK : LW_ERR_MEMORY;
@@ -60,8 +66,10 @@ static lw_status freeze_parts(lw__freezer *w)
 {
     LW__TRY(lw__freeze_plants(w));
     LW__TRY(place_plants(w));
+    LW__TRY(lw__freeze_clocks(w));
     LW__TRY(lw__freeze_converters(w));
     LW__TRY(lw__freeze_loops(w));
+    LW__TRY(lw__freeze_cores(w));
     LW__TRY(lw__freeze_streams(w));
     lw__freeze_anchors(w);
     LW__TRY(lw__freeze_watch(w));

@@ -1,6 +1,7 @@
 // Freezing loops: inputs and outputs resolved, latency lowered to ticks, cells reserved.
 
 #include "run/freezer.h"
+#include "run/schedule.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -28,7 +29,7 @@ static lw_status loop_inputs(lw__freezer *w, lw__loop *l, const lw_loop_def *def
                 inputs[i].constant = wire->constant;
                 continue;
             }
-            LW__TRY(lw__freezer_signal(w, def->origin, "loop", def->name, wire->port, wire->signal,
+            LW__TRY(lw__freezer_signal(w, def->origin, l->what, def->name, wire->port, wire->signal,
                                        &inputs[i]));
             if (inputs[i].at.kind != LW__SIGNAL_ADC)
                 continue;
@@ -67,19 +68,27 @@ static lw_status loop_trigger(lw__freezer *w, lw__loop *l, const lw_loop_def *de
                        near ? "\"" : "");
 }
 
-static int already_written(const lw__freezer *w, int index, lw__target target)
+static int writes(const lw__loop *l, lw__target target)
 {
-    for (int i = 0; i <= index; i++)
-        for (int j = 0; j < w->z->loops[i].n_targets; j++) {
-            const lw__target *t = &w->z->loops[i].targets[j];
-            if (t->dac == target.dac && t->value == target.value)
-                return 1;
-        }
+    for (int j = 0; j < l->n_targets; j++)
+        if (l->targets[j].dac == target.dac && l->targets[j].value == target.value)
+            return 1;
     return 0;
 }
 
-static lw_status find_target(lw__freezer *w, const lw_loop_def *def, const char *name,
-                             lw__target *out)
+static int already_written(const lw_frozen *z, lw__target target)
+{
+    for (int i = 0; i < z->n_loops; i++)
+        if (writes(&z->loops[i], target))
+            return 1;
+    for (int i = 0; i < z->n_tasks; i++)
+        if (writes(&z->tasks[i].law, target))
+            return 1;
+    return 0;
+}
+
+static lw_status find_target(lw__freezer *w, const char *what, const lw_loop_def *def,
+                             const char *name, lw__target *out)
 {
     const char *names[512];
     int n = 0;
@@ -101,11 +110,11 @@ static lw_status find_target(lw__freezer *w, const lw_loop_def *def, const char 
     }
     const char *near = lw_nearest_name(name, names, n);
     return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
-                       "loop \"%s\": output: no dac or value \"%s\"%s%s%s", def->name, name,
+                       "%s \"%s\": output: no dac or value \"%s\"%s%s%s", what, def->name, name,
                        near ? "; nearest \"" : "", near ? near : "", near ? "\"" : "");
 }
 
-static lw_status loop_outputs(lw__freezer *w, int index, lw__loop *l, const lw_loop_def *def)
+static lw_status loop_outputs(lw__freezer *w, lw__loop *l, const lw_loop_def *def)
 {
     lw__target *targets = lw__freezer_get(w, sizeof *targets * (size_t)(def->n_outputs + 1));
     if (targets == NULL)
@@ -115,17 +124,17 @@ static lw_status loop_outputs(lw__freezer *w, int index, lw__loop *l, const lw_l
         const char *name = def->outputs[j].signal;
         if (name == NULL)
             return lw__fail_at(def->origin, w->err, LW_ERR_ARGUMENT,
-                               "loop \"%s\": output \"%s\" names no dac or value", def->name,
+                               "%s \"%s\": output \"%s\" names no dac or value", l->what, def->name,
                                def->outputs[j].port);
         lw__target t;
-        LW__TRY(find_target(w, def, name, &t));
+        LW__TRY(find_target(w, l->what, def, name, &t));
         for (int p = 0; p < l->law->n_out; p++)
             if (same(l->law->out_names[p], def->outputs[j].port))
                 t.output = p;
-        if (already_written(w, index, t))
+        if (already_written(w->z, t))
             return lw__fail_at(def->origin, w->err, LW_ERR_DUPLICATE,
-                               "loop \"%s\": output: \"%s\" is already written by a loop",
-                               def->name, name);
+                               "%s \"%s\": output: \"%s\" is already written by a loop or task",
+                               l->what, def->name, name);
         targets[l->n_targets++] = t;
     }
     for (int j = 0; j < l->n_targets; j++)
@@ -264,6 +273,7 @@ static lw_status loop_cells(lw__freezer *w, lw__loop *l, const char *name)
 static lw_status freeze_loop(lw__freezer *w, int index)
 {
     lw__loop *l = &w->z->loops[index];
+    l->what = "loop";
     l->item = &w->rig->loops[index];
     const lw_loop_def *def = &l->item->def;
     l->law = lw_law_look(l->item->law);
@@ -275,12 +285,18 @@ static lw_status freeze_loop(lw__freezer *w, int index)
     l->log = -1;
     LW__TRY(loop_inputs(w, l, def));
     LW__TRY(loop_trigger(w, l, def));
-    LW__TRY(loop_outputs(w, index, l, def));
+    LW__TRY(loop_outputs(w, l, def));
     l->nominal = lw_period_seconds(l->adc->period);
     l->in_phase_1 = l->adc->takes > 0;
     LW__TRY(loop_latency(w, l, def));
     l->capacity = flight_capacity(l, def);
     return loop_cells(w, l, def->name);
+}
+
+lw_status lw__freeze_wires(lw__freezer *w, lw__loop *l, const lw_loop_def *def)
+{
+    LW__TRY(loop_inputs(w, l, def));
+    return loop_outputs(w, l, def);
 }
 
 lw_status lw__freeze_loops(lw__freezer *w)

@@ -7,6 +7,7 @@
 #include "run/freezer.h"
 
 #include "io/source.h"
+#include "run/schedule.h"
 #include "run/sprint.h"
 #include "run/track.h"
 
@@ -34,6 +35,10 @@ lw_status lw__freeze_streams(lw__freezer *w)
     int n = 0, room = z->n_sources + z->n_adcs + 3;
     for (int i = 0; i < z->n_loops; i++)
         room += 2 + z->loops[i].latency.n_streams;
+    for (int i = 0; i < z->n_tasks; i++) {
+        const lw__task *t = &z->tasks[i];
+        room += 1 + t->takes.n_streams + t->arrives.n_streams + t->jitter.n_streams;
+    }
     stream_of *all = lw__freezer_get(w, sizeof *all * (size_t)room);
     if (all == NULL)
         return LW_ERR_MEMORY;
@@ -50,6 +55,14 @@ lw_status lw__freeze_streams(lw__freezer *w)
         all[n++] = (stream_of){l->latency.missed_stream, name, origin};
         for (int k = 0; k < l->latency.n_streams; k++)
             all[n++] = (stream_of){l->latency.streams[k], name, origin};
+    }
+    for (int i = 0; i < z->n_tasks; i++) {
+        const lw__task *t = &z->tasks[i];
+        const lw__use *uses[] = {&t->takes, &t->arrives, &t->jitter};
+        all[n++] = (stream_of){t->lost_stream, t->name, t->item->def.origin};
+        for (int u = 0; u < 3; u++)
+            for (int k = 0; k < uses[u]->n_streams; k++)
+                all[n++] = (stream_of){uses[u]->streams[k], t->name, t->item->def.origin};
     }
     qsort(all, (size_t)n, sizeof *all, by_stream);
     for (int i = 1; i < n; i++)
@@ -94,6 +107,28 @@ static int by_order(const void *a, const void *b)
     return 0;
 }
 
+// A core's operations stand at the place of the core, a task's at that of the task.
+static void list_cpu_ops(const lw_frozen *z, order *o)
+{
+    for (int i = 0; i < z->n_cores; i++) {
+        int place = z->cores[i].item->place;
+        add_op(o, LW__OP_WRITES, 1, place, i, 0);
+        add_op(o, LW__OP_READS, 1, place, i, 0);
+        add_op(o, LW__OP_RELEASES, 5, place, i, 0);
+        add_op(o, LW__OP_DISPATCH, 6, place, i, 0);
+        add_op(o, LW__OP_POINTS, 7, place, i, 0);
+    }
+    for (int i = 0; i < z->n_tasks; i++) {
+        int place = z->tasks[i].item->place;
+        if (z->tasks[i].release == LW__RELEASE_EVENT)
+            add_op(o, LW__OP_RELEASE, 5, place, i, 0);
+        if (z->tasks[i].has_law && z->tasks[i].reads_at_release)
+            add_op(o, LW__OP_READ, 7, place, i, 0);
+        if (z->tasks[i].logical != LW_NEVER)
+            add_op(o, LW__OP_LOGICAL, 1, place, i, 0);
+    }
+}
+
 static void list_ops(const lw_frozen *z, order *o)
 {
     for (int g = 0; g < z->n_groups; g++) {
@@ -120,6 +155,7 @@ static void list_ops(const lw_frozen *z, order *o)
         add_op(o, LW__OP_ARRIVE, 1, place, i, 0);
         add_op(o, LW__OP_STEP, z->loops[i].in_phase_1 ? 1 : 7, place, i, 0);
     }
+    list_cpu_ops(z, o);
     for (int i = 0; i < z->n_tracks; i++)
         add_op(o, LW__OP_TRACK, 8, i, i, 0);
     for (int i = 0; i < z->n_records; i++)
@@ -144,6 +180,16 @@ static const void *thing_of(const lw_frozen *z, const lw__op *op)
     case LW__OP_ARRIVE:
     case LW__OP_STEP:
         return &z->loops[op->index];
+    case LW__OP_WRITES:
+    case LW__OP_READS:
+    case LW__OP_RELEASES:
+    case LW__OP_DISPATCH:
+    case LW__OP_POINTS:
+        return &z->cores[op->index];
+    case LW__OP_RELEASE:
+    case LW__OP_READ:
+    case LW__OP_LOGICAL:
+        return &z->tasks[op->index];
     default:
         return NULL;
     }
@@ -245,6 +291,30 @@ static lw_status conversions(lw__freezer *w)
     return LW_OK;
 }
 
+// Operations of cores and tasks: their numbers, timers, and what triggers a task.
+static lw_status order_of_cpus(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int i = 0; i < z->n_cores; i++) {
+        lw__core *c = &z->cores[i];
+        c->reads_op = op_number(z, LW__OP_READS, i, 0);
+        c->points_op = op_number(z, LW__OP_POINTS, i, 0);
+        c->dispatch_op = op_number(z, LW__OP_DISPATCH, i, 0);
+        c->releases_op = op_number(z, LW__OP_RELEASES, i, 0);
+        LW__TRY(make_due(w, c->point_timer, LW__OP_WRITES, i, 0));
+        LW__TRY(make_due(w, c->release_timer, LW__OP_RELEASES, i, 0));
+    }
+    for (int i = 0; i < z->n_tasks; i++) {
+        lw__task *t = &z->tasks[i];
+        t->release_op = op_number(z, LW__OP_RELEASE, i, 0);
+        t->read_op = op_number(z, LW__OP_READ, i, 0);
+        LW__TRY(make_due(w, t->logical_timer, LW__OP_LOGICAL, i, 0));
+        if (t->release_op >= 0)
+            LW__TRY(lw__set_put(w, lw__event_set(z, t->trigger), t->release_op));
+    }
+    return LW_OK;
+}
+
 // Which metrics want to know when something changes.
 static lw_status watchers(lw__freezer *w)
 {
@@ -304,7 +374,7 @@ static int plain_loop(const lw__loop *l)
 static lw_status find_sprint(lw__freezer *w)
 {
     lw_frozen *z = w->z;
-    if (z->n_loops != 1 || z->n_adcs != 1 || z->n_words != 1 || w->general)
+    if (z->n_loops != 1 || z->n_adcs != 1 || z->n_words != 1 || z->n_cores > 0 || w->general)
         return LW_OK;
     const lw__loop *l = &z->loops[0];
     const lw__dac *d = l->targets[0].dac;
@@ -348,6 +418,7 @@ lw_status lw__freeze_order(lw__freezer *w)
     LW__TRY(timers_of_plants(w));
     LW__TRY(timers_of_parts(w));
     LW__TRY(conversions(w));
+    LW__TRY(order_of_cpus(w));
     LW__TRY(watchers(w));
     LW__TRY(find_sprint(w));
     LW__TRY(lw__set_put(w, &z->no_ops, -1));

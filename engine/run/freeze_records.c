@@ -3,6 +3,7 @@
 #include "run/freezer.h"
 
 #include "run/record.h"
+#include "run/schedule.h"
 
 #include <stdio.h>
 #include <string.h>
@@ -74,6 +75,19 @@ static lw_status loop_record(lw__freezer *w, lw__record *r, int record, lw__loop
     return LW_OK;
 }
 
+static lw_status named_record(lw__freezer *w, lw__record *r, int n, const char *const *names)
+{
+    const char **columns = columns_of(w, r, n);
+    for (int c = 0; columns != NULL && c < n; c++)
+        columns[c] = names[c];
+    return columns != NULL ? LW_OK : LW_ERR_MEMORY;
+}
+
+#define COLUMN(name, words) words,
+static const char *const job_columns[] = {LW_JOB_COLUMNS(COLUMN)};
+static const char *const stretch_columns[] = {LW_STRETCH_COLUMNS(COLUMN)};
+#undef COLUMN
+
 static lw_status recorded_twice(lw__freezer *w, const lw_record_def *def)
 {
     return lw__fail_at(def->origin, w->err, LW_ERR_DUPLICATE,
@@ -95,8 +109,23 @@ static lw_status event_record(lw__freezer *w, lw__record *r, int record, const l
         if (strcmp(z->loops[i].item->def.name, def->signal) == 0)
             return z->loops[i].log >= 0 ? recorded_twice(w, def)
                                         : loop_record(w, r, record, &z->loops[i]);
+    for (int i = 0; i < z->n_tasks; i++)
+        if (strcmp(z->tasks[i].name, def->signal) == 0) {
+            if (z->tasks[i].log >= 0)
+                return recorded_twice(w, def);
+            z->tasks[i].log = record;
+            return named_record(w, r, LW_N_JOB_COLUMNS, job_columns);
+        }
+    for (int i = 0; i < z->n_cores; i++)
+        if (strcmp(z->cores[i].name, def->signal) == 0) {
+            if (z->cores[i].log >= 0)
+                return recorded_twice(w, def);
+            z->cores[i].log = record;
+            return named_record(w, r, LW_N_STRETCH_COLUMNS, stretch_columns);
+        }
     return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
-                       "record: no adc, dac or loop \"%s\"; a signal needs every or at",
+                       "record: no adc, dac, loop, task or core \"%s\"; a signal needs every or "
+                       "at",
                        def->signal);
 }
 

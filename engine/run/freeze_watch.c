@@ -1,6 +1,7 @@
 // Freezing the watch: records, and metrics as readings of shared tracks.
 
 #include "run/freezer.h"
+#include "run/schedule.h"
 
 #include "io/source.h"
 #include "run/record.h"
@@ -326,6 +327,9 @@ static lw__set *signal_observers(lw_frozen *z, const char *name)
     for (int i = 0; i < z->n_loops; i++)
         if (owns(z->loops[i].item->def.name, name))
             return &z->loops[i].observers;
+    for (int i = 0; i < z->n_tasks; i++)
+        if (owns(z->tasks[i].name, name))
+            return &z->tasks[i].law.observers;
     return NULL;
 }
 

@@ -3,6 +3,8 @@
 
 #include "run/freezer.h"
 
+#include "run/schedule.h"
+
 #include "base/alloc.h"
 
 #include <stdio.h>
@@ -177,6 +179,9 @@ static int find_signal(const lw_frozen *z, const char *name, lw_signal *out)
     for (int i = 0; i < z->n_loops; i++)
         if (z->loops[i].law != NULL && owns(z->loops[i].item->def.name, name, &rest))
             return loop_signal(&z->loops[i], rest, out);
+    for (int i = 0; i < z->n_tasks; i++)
+        if (z->tasks[i].has_law && owns(z->tasks[i].name, name, &rest))
+            return loop_signal(&z->tasks[i].law, rest, out);
     return 0;
 }
 
@@ -220,6 +225,9 @@ static void list_names(const lw_frozen *z, name_list *list)
     for (int i = 0; i < z->n_loops && z->loops[i].law != NULL; i++)
         for (int k = 0; k < z->loops[i].law->n_out; k++)
             add_name(list, z->loops[i].item->def.name, z->loops[i].law->out_names[k]);
+    for (int i = 0; i < z->n_tasks; i++)
+        for (int k = 0; z->tasks[i].has_law && k < z->tasks[i].law.law->n_out; k++)
+            add_name(list, z->tasks[i].name, z->tasks[i].law.law->out_names[k]);
 }
 
 lw_status lw__signal_find(const lw_frozen *z, const char *name, lw_signal *out, lw_error *err)

@@ -64,11 +64,16 @@ int lw__freezer_timer(lw__freezer *w);
 lw_status lw__freeze_plants(lw__freezer *w);     // groups, rows, channels, kernels, anchors
 lw_status lw__freeze_converters(lw__freezer *w); // sources, values, adcs, dacs
 lw_status lw__freeze_loops(lw__freezer *w);
+lw_status lw__freeze_clocks(lw__freezer *w); // of cores and tasks; before the converters
+lw_status lw__freeze_cores(lw__freezer *w);
 lw_status lw__freeze_streams(lw__freezer *w); // collisions refused
 void lw__freeze_anchors(lw__freezer *w);      // whose timer moves each anchor
 lw_status lw__freeze_records(lw__freezer *w);
 lw_status lw__freeze_watch(lw__freezer *w); // records, tracks, metrics
 lw_status lw__freeze_order(lw__freezer *w); // operations, timers, sets
+
+// Inputs and outputs of a law, `l->what`, item and law known.
+lw_status lw__freeze_wires(lw__freezer *w, lw__loop *l, const lw_loop_def *def);
 
 // Have a track's operation told of changes to what it follows.
 struct lw__track;

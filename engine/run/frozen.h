@@ -38,7 +38,8 @@ typedef struct lw__set {
 // What makes operations of other things due (event.h).
 typedef enum lw__event_kind {
     LW__EVENT_NONE,
-    LW__EVENT_ADC // the end of a conversion
+    LW__EVENT_ADC, // the end of a conversion
+    LW__EVENT_TASK // the finish of a task's job
 } lw__event_kind;
 
 typedef struct lw__event {
@@ -207,6 +208,7 @@ typedef struct lw__latency {
 } lw__latency;
 
 typedef struct lw__loop {
+    const char *what; // "loop", or "task": the law of one (schedule.h)
     const lw__loop_item *item;
     const lw_law_def *law;
     lw_law_step step; // the law's, at hand
@@ -250,17 +252,25 @@ typedef struct lw__record {
 } lw__record;
 
 typedef enum lw__op_kind {
-    LW__OP_ANCHOR,  // phase 0
-    LW__OP_TURN,    // phase 0: a generator changes its slope
-    LW__OP_SOURCE,  // phase 0
-    LW__OP_CONVERT, // phase 1, conversions that took time; phase 4 the others
-    LW__OP_ARRIVE,  // phase 1: delayed writes of a loop
-    LW__OP_DELAYED, // phase 1: delayed changes of a channel
-    LW__OP_STEP,    // phase 1 after a conversion that took time, phase 7 otherwise
-    LW__OP_LATCH,   // phase 2
-    LW__OP_SAMPLE,  // phase 3
-    LW__OP_TRACK,   // phase 8: metrics
-    LW__OP_RECORD   // phase 8
+    LW__OP_ANCHOR,   // phase 0
+    LW__OP_TURN,     // phase 0: a generator changes its slope
+    LW__OP_SOURCE,   // phase 0
+    LW__OP_CONVERT,  // phase 1, conversions that took time; phase 4 the others
+    LW__OP_LOGICAL,  // phase 1: writes of a task with logical execution time
+    LW__OP_WRITES,   // phase 1: a core's job reaches points that write, unlock or end it
+    LW__OP_ARRIVE,   // phase 1: delayed writes of a loop
+    LW__OP_DELAYED,  // phase 1: delayed changes of a channel
+    LW__OP_READS,    // phase 1: a core's job reaches points that lock or read, and on from there
+    LW__OP_STEP,     // phase 1 after a conversion that took time, phase 7 otherwise
+    LW__OP_LATCH,    // phase 2
+    LW__OP_SAMPLE,   // phase 3
+    LW__OP_RELEASES, // phase 5: releases of a core's tasks by clock, arrival and slot; stalls
+    LW__OP_RELEASE,  // phase 5: release of a task by an event
+    LW__OP_DISPATCH, // phase 6
+    LW__OP_READ,     // phase 7: a task reads at its release
+    LW__OP_POINTS,   // phase 7: points of a core's job with no work before them
+    LW__OP_TRACK,    // phase 8: metrics
+    LW__OP_RECORD    // phase 8
 } lw__op_kind;
 
 typedef struct lw__op {
@@ -286,6 +296,7 @@ struct lw_frozen {
     lw_tick lasts;
 
     int n_plants, n_groups, n_sources, n_values, n_adcs, n_dacs, n_loops;
+    int n_cores, n_tasks;
     lw__plant_place *plants;
     lw__group *groups;
     lw__source *sources;
@@ -293,6 +304,8 @@ struct lw_frozen {
     lw__adc *adcs;
     lw__dac *dacs;
     lw__loop *loops;
+    struct lw__core *cores;
+    struct lw__task *tasks;
     int n_records, n_tracks, n_metrics;
     lw__record *records;
     struct lw__track *tracks;

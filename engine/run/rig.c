@@ -61,6 +61,7 @@ void lw_rig_free(lw_rig *rig)
     lw__free(rig->adcs);
     lw__free(rig->dacs);
     lw__free(rig->loops);
+    lw__rig_free_cpu(rig);
     lw__arena_free(rig->arena);
     lw__free(rig);
 }
@@ -92,6 +93,12 @@ static const char *what_has(const lw_rig *rig, const char *name)
     for (int i = 0; i < rig->n_loops; i++)
         if (same(rig->loops[i].def.name, name))
             return "loop";
+    for (int i = 0; i < rig->n_cores; i++)
+        if (same(rig->cores[i].def.name, name))
+            return rig->cores[i].is_bus ? "bus" : "core";
+    for (int i = 0; i < rig->n_tasks; i++)
+        if (same(rig->tasks[i].def.name, name))
+            return rig->tasks[i].is_frame ? "frame" : "task";
     return NULL;
 }
 
@@ -441,17 +448,35 @@ static lw_status check_wires(const lw__subject *s, const char *side, int n, cons
         if (!found) {
             const char *near = lw_nearest_name(wires[i].port, ports, n_ports);
             return lw__fail_at(s->origin, s->err, LW_ERR_NAME,
-                               "loop \"%s\": the law has no %s \"%s\"%s%s%s", s->name, side,
+                               "%s \"%s\": the law has no %s \"%s\"%s%s%s", s->what, s->name, side,
                                wires[i].port, near ? "; nearest \"" : "", near ? near : "",
                                near ? "\"" : "");
         }
         for (int j = 0; j < i; j++)
             if (same(wires[j].port, wires[i].port))
                 return lw__fail_at(s->origin, s->err, LW_ERR_DUPLICATE,
-                                   "loop \"%s\": %s \"%s\" is stated twice", s->name, side,
+                                   "%s \"%s\": %s \"%s\" is stated twice", s->what, s->name, side,
                                    wires[i].port);
         if (wires[i].signal == NULL)
             LW__TRY(lw__check_finite(s, wires[i].port, wires[i].constant));
+    }
+    return LW_OK;
+}
+
+lw_status lw__check_law_wires(const lw__subject *s, const lw_law *of, int n_in, const lw_wire *in,
+                              int n_out, const lw_wire *out)
+{
+    const lw_law_def *law = lw_law_look(of);
+    LW__TRY(check_wires(s, "input", n_in, in, law->n_in, law->in_names));
+    LW__TRY(check_wires(s, "output", n_out, out, law->n_out, law->out_names));
+    for (int i = 0; i < law->n_in; i++) {
+        int wired = 0;
+        for (int j = 0; j < n_in; j++)
+            wired |= same(in[j].port, law->in_names[i]);
+        if (!wired)
+            return lw__fail_at(s->origin, s->err, LW_ERR_ARGUMENT,
+                               "%s \"%s\": %s is missing; the law reads it", s->what, s->name,
+                               law->in_names[i]);
     }
     return LW_OK;
 }
@@ -461,18 +486,8 @@ static lw_status check_loop(const lw__subject *s, const lw_loop_def *def)
     if (def->law == NULL)
         return lw__fail_at(s->origin, s->err, LW_ERR_ARGUMENT, "loop \"%s\": law is missing",
                            s->name);
-    const lw_law_def *law = lw_law_look(def->law);
-    LW__TRY(check_wires(s, "input", def->n_inputs, def->inputs, law->n_in, law->in_names));
-    LW__TRY(check_wires(s, "output", def->n_outputs, def->outputs, law->n_out, law->out_names));
-    for (int i = 0; i < law->n_in; i++) {
-        int wired = 0;
-        for (int j = 0; j < def->n_inputs; j++)
-            wired |= same(def->inputs[j].port, law->in_names[i]);
-        if (!wired)
-            return lw__fail_at(s->origin, s->err, LW_ERR_ARGUMENT,
-                               "loop \"%s\": %s is missing; the law reads it", s->name,
-                               law->in_names[i]);
-    }
+    LW__TRY(
+        lw__check_law_wires(s, def->law, def->n_inputs, def->inputs, def->n_outputs, def->outputs));
     return check_latency(s, &def->latency);
 }
 

@@ -4,6 +4,7 @@
 
 #include "base/arena.h"
 
+#include <latewood/cpu.h>
 #include <latewood/rig.h>
 
 typedef struct lw__plant_item {
@@ -45,12 +46,29 @@ typedef struct lw__loop_item {
     int place;
 } lw__loop_item;
 
+// A core, or a bus: a core of `rate` cycles a second whose tasks are frames.
+typedef struct lw__core_item {
+    lw_core_def def;
+    int is_bus;
+    int place;
+} lw__core_item;
+
+// A task, or a frame.
+typedef struct lw__task_item {
+    lw_task_def def;
+    lw_law *law;
+    lw_timing *takes, *arrives, *jitter;
+    int is_frame;
+    int place;
+} lw__task_item;
+
 struct lw_rig {
     int references;
     lw__arena *arena;
     const char *name;
     int n_places;
     int n_plants, n_connections, n_sources, n_values, n_adcs, n_dacs, n_loops;
+    int n_cores, n_tasks;
     lw__plant_item *plants;
     lw__connection_item *connections;
     lw__source_item *sources;
@@ -58,6 +76,8 @@ struct lw_rig {
     lw__adc_item *adcs;
     lw__dac_item *dacs;
     lw__loop_item *loops;
+    lw__core_item *cores;
+    lw__task_item *tasks;
     int frozen; // a frozen rig refers to it: no more additions
 };
 
@@ -65,5 +85,8 @@ struct lw_rig {
 lw_status lw__fail_at(const char *origin, lw_error *err, lw_status status, const char *format, ...)
     LW_PRINTF(4, 5);
 lw_status lw__blame(const char *origin, lw_error *err, lw_status status);
+
+// Laws, timings and lists of cores and tasks.
+void lw__rig_free_cpu(lw_rig *rig);
 
 #endif

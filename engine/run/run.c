@@ -8,6 +8,7 @@
 #include "run/driver.h"
 #include "run/motion.h"
 #include "run/record.h"
+#include "run/schedule.h"
 #include "run/track.h"
 
 #include "base/alloc.h"
@@ -117,6 +118,7 @@ void lw__lane_start(lw__lane *s)
     start_plants(s, W, L);
     start_converters(s, W, L);
     start_loops(s, W, L);
+    lw__cores_start(s);
 }
 
 // ---- runs
