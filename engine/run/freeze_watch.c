@@ -5,13 +5,11 @@
 
 #include "io/source.h"
 #include "run/record.h"
+#include "run/series.h"
 #include "run/track.h"
 
 #include <math.h>
 #include <string.h>
-
-#define PIECE_NORM 0.5 // norm(A) times the length of a piece: degree 13 then holds 1e-14
-#define PIECE_DEGREE 13
 
 static int of_loop(lw_metric_kind kind)
 {
@@ -220,16 +218,16 @@ static void track_pieces(lw__freezer *w, lw__track *t)
             double turn = def->kind == LW_SOURCE_SINE ? lw__source_turn(def) : 0;
             norm = turn > norm ? turn : norm;
         }
-    double piece = norm > 0 ? PIECE_NORM / norm * 1e12 : 1e18;
-    t->piece = piece < 1 ? 1 : piece > 1e18 ? LW_TICK_MAX : (lw_tick)piece;
+    t->piece = lw__piece_length(norm);
     int plain = t->of.at.kind != LW__SIGNAL_ROW && t->of.at.kind != LW__SIGNAL_SOURCE &&
                 t->against.at.kind != LW__SIGNAL_SOURCE;
-    t->degree = plain ? 0 : PIECE_DEGREE;
+    t->degree = plain ? 0 : LW__PIECE_DEGREE;
     // a stretch is no longer than a grid step of its group: fewer terms may do
     if (t->of.at.kind == LW__SIGNAL_ROW && t->against.at.kind != LW__SIGNAL_SOURCE) {
         double reach = lw_tick_seconds(w->z->groups[t->of.at.index].kernel.reach) * norm, term = 1;
         t->degree = 1;
-        for (int k = 1; k < PIECE_DEGREE && (term *= fmin(reach, PIECE_NORM) / k) > 0x1p-60; k++)
+        for (int k = 1; k < LW__PIECE_DEGREE && (term *= fmin(reach, LW__PIECE_NORM) / k) > 0x1p-60;
+             k++)
             t->degree = k + 1;
     }
 }

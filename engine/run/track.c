@@ -15,6 +15,7 @@
 
 #include "io/source.h"
 #include "run/poly.h"
+#include "run/series.h"
 
 #include <math.h>
 #include <string.h>
@@ -29,63 +30,13 @@ typedef struct piece {
 
 // ---- pieces
 
-static double dot(int n, const double *a, const double *b)
-{
-    double sum = 0;
-    for (int k = 0; k < n; k++)
-        sum += a[k] * b[k];
-    return sum;
-}
-
-// Taylor coefficients of one output over `length`, from state x and inputs u at its start.
-static void row_series(const lw__kernel *k, const lw__row *row, const double *x, const double *u,
-                       double length, int degree, double *work, double *c)
-{
-    int n = k->n;
-    double *term = work, *next = work + n;
-    memcpy(term, x, sizeof(double) * (size_t)n);
-    c[0] = dot(n, row->c, x) + dot(k->m, row->d, u);
-    for (int power = 1; power <= degree; power++) {
-        double factor = length / power;
-        memset(next, 0, sizeof(double) * (size_t)n);
-        for (int j = 0; j < n; j++)
-            for (int i = 0; i < n; i++)
-                next[i] += k->a[j * n + i] * term[j];
-        for (int j = 0; power == 1 && j < k->m; j++)
-            for (int i = 0; i < n; i++)
-                next[i] += k->b[j * n + i] * u[j];
-        for (int i = 0; i < n; i++)
-            term[i] = next[i] * factor;
-        c[power] = dot(n, row->c, term);
-    }
-}
-
-// Taylor coefficients of a moving source over `length` from tick t on.
-static void source_series(const lw_source_def *def, lw_tick t, double length, int degree, double *c)
-{
-    memset(c, 0, sizeof(double) * (size_t)(degree + 1));
-    c[0] = lw__source_value(def, t);
-    if (def->kind != LW_SOURCE_SINE) {
-        if (degree > 0)
-            c[1] = lw__source_slope(def, t) * length;
-        return;
-    }
-    double sine, cosine, turn = lw__source_turn(def) * length, factor = 1;
-    lw__source_sine(def, t, &sine, &cosine);
-    for (int k = 1; k <= degree; k++) {
-        factor *= turn / k;
-        double derivative = k % 2 == 1 ? cosine : sine;
-        c[k] = (k % 4 == 2 || k % 4 == 3 ? -derivative : derivative) * factor;
-    }
-}
-
 // Coefficients of a signal over the stretch that began at `began`, from tick t on.
 static void signal_series(const lw__lane *s, const lw__track *track, const lw__reference *r,
                           double held, lw_tick began, lw_tick t, double length, double *c)
 {
     int W = s->width, L = s->lane, degree = track->degree;
     if (r->at.kind == LW__SIGNAL_SOURCE) {
-        source_series(&s->z->sources[r->at.index].item->def, t, length, degree, c);
+        lw__source_series(&s->z->sources[r->at.index].item->def, t, length, degree, c);
         return;
     }
     memset(c, 0, sizeof(double) * (size_t)(degree + 1));
@@ -100,7 +51,7 @@ static void signal_series(const lw__lane *s, const lw__track *track, const lw__r
     for (int k = 0; k < g->n_u; k++)
         u[k] = LW__F(track->u + k);
     lw__kernel_value(&g->kernel, began, x0, u, &none, t, x, work);
-    row_series(&g->kernel, &g->rows[r->at.part], x, u, length, degree, work, c);
+    lw__row_series(&g->kernel, &g->rows[r->at.part], x, u, length, degree, work, c);
 }
 
 // ---- what is read off a piece
