@@ -17,6 +17,8 @@
 #include <signal.h>
 #include <stdlib.h>
 #include <string.h>
+#include <time.h>
+#include <unistd.h>
 
 #define LEDGER "latewood.program.ledger"
 #define CREW "latewood.program.crew"
@@ -89,6 +91,7 @@ static void read_metrics(lua_State *L, int def, lw_ledger_def *out)
 
 static void read_limits(lua_State *L, int def, lw_ledger_def *out)
 {
+    static const char *const kinds[] = {"at most", "at least", "defined", NULL};
     lua_getfield(L, def, "limits");
     luaL_checktype(L, -1, LUA_TTABLE);
     int list = lua_gettop(L);
@@ -103,7 +106,7 @@ static void read_limits(lua_State *L, int def, lw_ledger_def *out)
         lua_rawgeti(L, own, 3);
         limits[k].limit = luaL_checknumber(L, -1);
         lua_rawgeti(L, own, 4);
-        limits[k].at_least = lua_toboolean(L, -1);
+        limits[k].kind = (lw_limit_kind)luaL_checkoption(L, -1, NULL, kinds);
         lua_settop(L, own - 1);
     }
     out->limits = limits;
@@ -666,6 +669,34 @@ static int inputs(lua_State *L)
     return 1;
 }
 
+// ---- clocks and cores, for progress and provenance
+
+static int monotonic(lua_State *L)
+{
+    struct timespec t = {0, 0};
+    clock_gettime(CLOCK_MONOTONIC, &t);
+    lua_pushnumber(L, (double)t.tv_sec + 1e-9 * (double)t.tv_nsec);
+    return 1;
+}
+
+static int date(lua_State *L)
+{
+    char text[40];
+    time_t now = time(NULL);
+    struct tm at;
+    gmtime_r(&now, &at);
+    strftime(text, sizeof text, "%Y-%m-%dT%H:%M:%SZ", &at);
+    lua_pushstring(L, text);
+    return 1;
+}
+
+static int cores(lua_State *L)
+{
+    long n = sysconf(_SC_NPROCESSORS_ONLN);
+    lua_pushinteger(L, n < 1 ? 1 : n > LW_CREW_MOST ? LW_CREW_MOST : n);
+    return 1;
+}
+
 // ---- being asked to stop
 
 static volatile sig_atomic_t asked; // signal that came; a handler can reach nothing else
@@ -731,6 +762,9 @@ void lw__program_batch(lua_State *L)
     static const luaL_Reg functions[] = {{"ledger", new_ledger},
                                          {"crew", new_crew},
                                          {"inputs", inputs},
+                                         {"clock", monotonic},
+                                         {"date", date},
+                                         {"cores", cores},
                                          {"catch", catch_signals},
                                          {"release", release_signals},
                                          {"interrupted", interrupted},

@@ -8,9 +8,9 @@
 //
 // ledger(mode, def)  mode "create", "resume" or "open" (def.path); a ledger, or nil, message, name
 //   of the status. def: path (absent: in memory), facts = { { section, name, value }, ... },
-//   metrics = { { name, unit }, ... }, limits = { { name, metric, limit, at_least }, ... }, keep =
-//   "all", "failures" or "counts".
-//   methods  point(number, name, text), commit(), provenance(name, value): true, or nil, message,
+//   metrics = { { name, unit }, ... }, limits = { { name, metric, limit, "at most" | "at least" |
+//   "defined" }, ... }, keep = "all", "failures" or "counts". methods  point(number, name, text),
+//   commit(), provenance(name, value): true, or nil, message,
 //            name; done(point, block): mask; tally(point, name); kept(); facts(), points(),
 //            metrics(): lists; ended(point, most): list of { run, instant, text };
 //            row(point, run): status, instant, text, values; column(point, metric): a sample
@@ -22,7 +22,8 @@
 //            true; lost(); close()
 // inputs()  what the study is made of: list of { "study", "module" or "data", name, text ("sha256
 //   ..." of data), hash }
-// interrupted()  number of the signal that asks to stop, from catch() on until release()
+// clock(): seconds of a clock that only goes on; date(): now, ISO 8601; cores()
+// catch(), release(), interrupted()  number of the signal that asks to stop, from catch() on until release()
 void lw__program_batch(lua_State *L);
 
 #endif

@@ -337,7 +337,9 @@ static lw_status enter_block(lw_ledger *ledger, int64_t point, int64_t block, lw
 static int misses(const lw_ledger_limit *limit, const lw_ledger_row *row)
 {
     double v = row->status == LW_OK ? row->values[limit->metric] : (double)NAN;
-    return !(limit->at_least ? v >= limit->limit : v <= limit->limit);
+    if (limit->kind == LW_LIMIT_DEFINED)
+        return row->status == LW_OK && isnan(v);
+    return !(limit->kind == LW_LIMIT_AT_LEAST ? v >= limit->limit : v <= limit->limit);
 }
 
 static int same_value(double a, double b)

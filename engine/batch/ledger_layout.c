@@ -19,7 +19,7 @@ static const char *const fixed[][2] = {
     {"metric", "CREATE TABLE metric (number INTEGER PRIMARY KEY, name TEXT NOT NULL, "
                "unit TEXT NOT NULL, held_in TEXT NOT NULL)"},
     {"limits", "CREATE TABLE limits (number INTEGER PRIMARY KEY, name TEXT NOT NULL, "
-               "metric INTEGER NOT NULL, at_least INTEGER NOT NULL, value REAL NOT NULL)"},
+               "metric INTEGER NOT NULL, kind INTEGER NOT NULL, value REAL NOT NULL)"},
     {"point", "CREATE TABLE point (number INTEGER PRIMARY KEY, name TEXT NOT NULL, "
               "parameters TEXT NOT NULL)"},
     {"ended", "CREATE TABLE ended (point INTEGER, run INTEGER, instant REAL NOT NULL, "
@@ -92,9 +92,9 @@ static lw_status fill(lw_ledger *ledger, const lw_ledger_def *def, lw_error *err
                         3, (const char *[]){def->metrics[k].name, def->metrics[k].unit, column});
     }
     for (int k = 0; status == LW_OK && k < def->n_limits; k++) {
-        char *sql = sqlite3_mprintf("INSERT INTO limits (name, metric, at_least, value) "
+        char *sql = sqlite3_mprintf("INSERT INTO limits (name, metric, kind, value) "
                                     "VALUES (?1, %d, %d, %!.17g)",
-                                    def->limits[k].metric + 1, def->limits[k].at_least,
+                                    def->limits[k].metric + 1, (int)def->limits[k].kind,
                                     def->limits[k].limit);
         status = sql != NULL ? insert(ledger, err, sql, 1, &def->limits[k].name)
                              : lw_error_set(err, LW_ERR_MEMORY, "no memory for a ledger");

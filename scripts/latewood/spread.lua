@@ -131,9 +131,27 @@ function own.is(value)
   return made[value] == true
 end
 
--- The value of a spread in one run.
-function own.draw(s, seed, run, name)
-  return s.quantile(lw.draw(seed, run, "spread." .. name, 0))
+-- Whether any of the parameters is a spread.
+function own.varies(p)
+  for _, v in pairs(p) do
+    if made[v] then return true end
+  end
+  return false
+end
+
+-- Parameters with spreads at their median, and with the values drawn for one run.
+function own.nominal(p)
+  local out = {}
+  for k, v in pairs(p) do out[k] = made[v] and v.median or v end
+  return out
+end
+
+function own.drawn(p, seed, run)
+  local out = {}
+  for k, v in pairs(p) do
+    out[k] = made[v] and v.quantile(lw.draw(seed, run, "spread." .. k, 0)) or v
+  end
+  return out
 end
 
 return setmetatable(module, { __index = own, __metatable = false })

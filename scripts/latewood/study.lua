@@ -4,13 +4,21 @@
 --   build   function(p, nominal) that returns a rig; p holds the parameters, reading another name
 --           is an error
 --   lasts   length of a run; runs: how many (default 1), numbered from 0; seed (default 1)
---   given   parameters and their values; `name=value` on the command line sets them
+--   given   parameters and their values; `name=value` on the command line sets them. A value may be
+--           a spread (lw.spread), drawn once a run
 --   before, after   parameters that differ between the two variants compared on the same draws
 --   called  { "constant", "recorded" }: names of the two variants
+--   sweep   { name = { values }, ... } or a sweep (lw.sweep): the points at which it is run
+--   keep    rows kept in a ledger: "all" (default), "failures" (of runs that fail), "counts"
+--   stop_early   true: stop at a checkpoint (128 runs, 256, ...) where every verdict stands
 --   title   one line for the head of the report
 --
 -- study:metric { "name", "kind", of = , ... }       the fields of a rig's metrics
 -- study:requirement { "name", "kind", of = , at_most = | at_least = , ... }
+--   share, confidence   the share of runs that must meet the limit, shown at that confidence (95 %);
+--           without a share every run must. Of a percentile, whose own share it is: of_runs
+--   at_most_per_hour    instead of a limit: of a count, an hour of operation
+-- study:budget { "parameter", from = , to = , whole = }   the largest value that meets all
 -- study:figure { "title", of = , wanted = , band = , unit = , from = , to = , every = , note = }
 --   of      a signal, or a list of at most 8: one panel each, the variants over one another
 --   wanted  a signal or a number drawn with the first
@@ -23,6 +31,7 @@
 --   a histogram of a loop's times from sample to write
 
 local lw = require "latewood"
+local sweep = require "latewood.sweep"
 local trial = require "latewood.trial"
 local words = require "latewood.words"
 
@@ -31,7 +40,8 @@ study.__index = study
 study.__name = "study"
 study.__metatable = false
 
-local study_fields = { "lasts", "runs", "seed", "given", "before", "after", "called", "title" }
+local study_fields = { "lasts", "runs", "seed", "given", "before", "after", "called", "title", "sweep",
+  "keep", "stop_early" }
 local figure_fields = { "of", "wanted", "band", "unit", "from", "to", "until", "every", "note",
   "latency_of" }
 
@@ -97,6 +107,13 @@ local function new(t)
       fail("study: %s is %s; a table of parameters is wanted", field, type(t[field]))
     end
   end
+  if t.sweep ~= nil and not sweep.points(t.sweep) then
+    fail("study: sweep is %s; { name = { values } } or a sweep is wanted", tostring(t.sweep))
+  end
+  local keep = text_of("study", "keep", t.keep) or "all"
+  if keep ~= "all" and keep ~= "failures" and keep ~= "counts" then
+    fail("study: keep is \"%s\"; \"all\", \"failures\" or \"counts\" is wanted", keep)
+  end
   local lasts = lw.quantity(t.lasts, "s")
   if not (lasts > 0 and lasts <= 9e6) then
     fail("study: lasts is %g s; above 0, at most 9e6 s is wanted", lasts)
@@ -106,6 +123,7 @@ local function new(t)
     called = names_of_variants(t.called),
     runs = whole("study", "runs", t.runs, 1, 1000000) or 1,
     seed = whole("study", "seed", t.seed, 0, math.maxinteger) or 1,
+    sweep = t.sweep, keep = keep, stop_early = t.stop_early == true,
     given = t.given or {}, before = t.before, after = t.after,
     metrics = {}, requirements = {}, figures = {}, origins = {},
   }
@@ -153,13 +171,39 @@ function study:metric(t)
   return self
 end
 
+-- A share between 0 and 1, as a number or in percent.
+local function share_of(name, field, value)
+  if value == nil then return nil end
+  local n = lw.quantity(value, "1")
+  if not (n > 0 and n < 1) then
+    fail("requirement \"%s\": %s is %s; between 0 and 1 (or 0 %% and 100 %%) is wanted", name, field,
+      tostring(value))
+  end
+  return n
+end
+
+local function rate_of(name, value)
+  if type(value) ~= "number" or not (value > 0) then
+    fail("requirement \"%s\": at_most_per_hour is %s; a number above 0 is wanted", name,
+      tostring(value))
+  end
+  return value
+end
+
 function study:requirement(t)
-  local def = add_metric(self, "requirement", t, { at_most = true, at_least = true })
-  if (t.at_most == nil) == (t.at_least == nil) then
-    fail("requirement \"%s\": state one of at_most and at_least", t[1])
+  local percentile = type(t) == "table" and tostring(t[2] or t[1]):find("percentile")
+  local def = add_metric(self, "requirement", t, { at_most = true, at_least = true, of_runs = true,
+    confidence = true, at_most_per_hour = true, share = not percentile })
+  local stated = (t.at_most ~= nil and 1 or 0) + (t.at_least ~= nil and 1 or 0) +
+    (t.at_most_per_hour ~= nil and 1 or 0)
+  if stated ~= 1 then
+    fail("requirement \"%s\": state one of at_most, at_least and at_most_per_hour", t[1])
   end
   self.requirements[#self.requirements + 1] = {
-    name = t[1], kind = def[2],
+    name = t[1], kind = def[2], 
+    share = share_of(t[1], "share", t.of_runs or not percentile and t.share or nil),
+    confidence = share_of(t[1], "confidence", t.confidence) or 0.95,
+    per_hour = t.at_most_per_hour and rate_of(t[1], t.at_most_per_hour),
     limit_text = type(t.at_most or t.at_least) == "string" and (t.at_most or t.at_least) or nil,
     at_most = limit_of(def[2], t.at_most),
     at_least = limit_of(def[2], t.at_least),

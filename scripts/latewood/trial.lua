@@ -7,6 +7,7 @@
 -- 3. A requirement is met when every run meets it; a run that ended early meets none.
 
 local lw = require "latewood"
+local spread = require "latewood.spread"
 
 local trial = {}
 
@@ -83,8 +84,11 @@ local function guarded(p)
   })
 end
 
-function trial.rig(study, p)
-  local rig = study.build(guarded(p), guarded(p))
+-- The rig at parameters p, of which some may be spreads: as drawn for a run of the seed, or (run nil)
+-- at their medians.
+function trial.rig(study, p, seed, run)
+  local nominal = spread.nominal(p)
+  local rig = study.build(guarded(run and spread.drawn(p, seed, run) or nominal), guarded(nominal))
   if type(rig) ~= "userdata" then
     fail("the function that builds the rig returned %s; a rig is wanted",
       rig == nil and "nothing" or "a " .. type(rig))
@@ -191,13 +195,13 @@ end
 local function run_variant(study, variant, arguments, options)
   local p, message = trial.parameters(study, arguments, variant.own)
   if not p then return nil, message end
-  options.again()
-  local rig = trial.rig(study, p)
+  local varies, rig = spread.varies(p), nil
   local result = { name = variant.name, parameters = p, values = {}, ended = {} }
   for _, m in ipairs(study.metrics) do result.values[m[1]] = {} end
   for i = 0, options.runs - 1 do
     options.again()
     options.progress(variant.name, i, options.runs)
+    if varies or not rig then rig = trial.rig(study, p, options.seed, i) end
     local run, status, why
     if i == 0 then
       run, status, why, result.traces, result.cut = first_run(study, rig, options.seed)

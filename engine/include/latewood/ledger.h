@@ -46,11 +46,17 @@ typedef struct lw_ledger_metric {
     const char *name, *unit;
 } lw_ledger_metric;
 
-// A limit that runs are counted against: column `metric` at most or at least `limit`. An undefined
-// value misses it.
+typedef enum lw_limit_kind {
+    LW_LIMIT_AT_MOST, // missed where the value is larger, undefined, or the run ended early
+    LW_LIMIT_AT_LEAST,
+    LW_LIMIT_DEFINED // missed where a run that reached its end has no value
+} lw_limit_kind;
+
+// What runs are counted against: column `metric` and `limit`.
 typedef struct lw_ledger_limit {
     const char *name;
-    int metric, at_least;
+    int metric;
+    lw_limit_kind kind;
     double limit;
 } lw_ledger_limit;
 
