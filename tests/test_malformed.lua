@@ -195,7 +195,7 @@ local cases = {
   -- what is asked of a run
   { "a_requirement_without_a_limit",
     { requirement = 'study:requirement { "overshoot", of = "coil.current", level = 2 }' }, DATA,
-    ':13: requirement "overshoot": state one of at_most and at_least' },
+    ':13: requirement "overshoot": state one of at_most, at_least and at_most_per_hour' },
   { "an_unknown_metric",
     { requirement = 'study:requirement { "x", "overshot", of = "coil.current", at_most = 1 }' }, DATA,
     ':13: requirement "x": no metric is called "overshot"; nearest "overshoot"' },

@@ -239,21 +239,39 @@ static lw_status prepare_all(lw_ledger *ledger, lw_error *err)
     return status;
 }
 
+// The file of a definition, locked for others and found to be what was made for it.
+static lw_status open_file(const lw_ledger_def *def, lw_ledger **out, lw_error *err)
+{
+    lw_status status = lw__ledger_connect(def->path, SQLITE_OPEN_READWRITE, out, err);
+    if (status == LW_OK && sqlite3_db_readonly((*out)->db, "main"))
+        status = lw_error_set(err, LW_ERR_OUTPUT, "%s: is not writable", def->path);
+    if (status == LW_OK)
+        status = lw__ledger_do(*out, err, "PRAGMA locking_mode=EXCLUSIVE; BEGIN EXCLUSIVE; COMMIT");
+    if (status == LW_OK)
+        status = lw__ledger_verify(*out, err);
+    return status == LW_OK ? lw__ledger_same(*out, def, err) : status;
+}
+
+// A ledger that lives as long as it is open.
+static lw_status open_memory(const lw_ledger_def *def, lw_ledger **out, lw_error *err)
+{
+    lw_status status =
+        lw__ledger_connect(":memory:", SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE, out, err);
+    if (status == LW_OK)
+        status = lw__ledger_lay_out(*out, def, err);
+    if (status != LW_OK)
+        return status;
+    (*out)->n_metrics = def->n_metrics;
+    (*out)->keep = def->keep;
+    return LW_OK;
+}
+
 lw_status lw_ledger_resume(const lw_ledger_def *def, lw_ledger **out, lw_error *err)
 {
     lw_ledger *ledger = NULL;
     lw_status status = check_def(def, err);
     if (status == LW_OK)
-        status = lw__ledger_connect(def->path, SQLITE_OPEN_READWRITE, &ledger, err);
-    if (status == LW_OK && sqlite3_db_readonly(ledger->db, "main"))
-        status = lw_error_set(err, LW_ERR_OUTPUT, "%s: is not writable", def->path);
-    if (status == LW_OK)
-        status =
-            lw__ledger_do(ledger, err, "PRAGMA locking_mode=EXCLUSIVE; BEGIN EXCLUSIVE; COMMIT");
-    if (status == LW_OK)
-        status = lw__ledger_verify(ledger, err);
-    if (status == LW_OK)
-        status = lw__ledger_same(ledger, def, err);
+        status = (def->path != NULL ? open_file : open_memory)(def, &ledger, err);
     if (status == LW_OK)
         status = keep_limits(ledger, def, err);
     if (status == LW_OK)

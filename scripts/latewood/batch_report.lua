@@ -12,9 +12,8 @@ local WIDTH = 78
 local QUANTILES = { 0.01, 0.5, 0.99 }
 
 local function percent(share, digits)
-  if share == 1 or share == 0 then return ("%d %%"):format(share * 100) end
-  local text = ("%%.%df"):format(digits or 3):format(100 * share)
-  if text:find("^100") then text = ("%.6f"):format(100 * share) end
+  local text = ("%%.%dg"):format(digits or 5):format(100 * share)
+  if text == "100" and share < 1 then text = ("%.9g"):format(100 * share) end
   return text .. " %"
 end
 

@@ -10,6 +10,7 @@
 -- host.colour, host.progress: whether standard output, standard error is a terminal for that
 
 local lw = require "latewood"
+local batch_command = require "latewood.batch_command"
 local figure = require "latewood.figure"
 local json = require "latewood.json"
 local report = require "latewood.report"
@@ -54,6 +55,9 @@ to a folder beside the study, named after it: STUDY-results.
   --out DIR      put the results there instead
   --runs N       number of runs, instead of the study's
   --seed N       seed of the draws, instead of the study's
+  --jobs N       processes that compute a batch; as many as there are cores unless stated
+  --ledger FILE  keep the batch's rows in FILE (SQLite); the same command goes on where it stopped
+  --shard K/N    compute only the runs whose number gives K when divided by N, into a ledger
   --json         print the result as JSON (schema latewood-run-1) and nothing else
   --quiet        print the verdict only
 
@@ -79,7 +83,8 @@ exist are left alone, and nothing is written then.
 ]],
 }
 
-local takes = { run = { ["--out"] = true, ["--runs"] = true, ["--seed"] = true },
+local takes = { run = { ["--out"] = true, ["--runs"] = true, ["--seed"] = true, ["--jobs"] = true,
+    ["--ledger"] = true, ["--shard"] = true },
   describe = {}, new = {} }
 local flags = { run = { ["--json"] = true, ["--quiet"] = true }, describe = { ["--json"] = true },
   new = { ["--json"] = true } }
@@ -197,8 +202,9 @@ local function base_name(path)
 end
 
 -- What goes to the folder: list of { file, function that gives its text }. Names first, so that
--- the JSON, which comes last, can list them; texts when they are written, one at a time.
-local function contents(s, result, name)
+-- the JSON, which comes last, can list them; texts when they are written, one at a time. data(files)
+-- gives the JSON where it is not that of a single trial.
+local function contents(s, result, name, data)
   local pending, taken, files = {}, { result = true }, {}
   local function add(file, text) pending[#pending + 1] = { file, text } end
   for i, f in ipairs(figure.all(s, result)) do
@@ -216,7 +222,9 @@ local function contents(s, result, name)
   end
   for i, entry in ipairs(pending) do files[i] = entry[1] end
   files[#files + 1] = "result.json"
-  add("result.json", function() return json.encode(report.data(s, result, name, files)) end)
+  add("result.json", function()
+    return data and data(files) or json.encode(report.data(s, result, name, files))
+  end)
   return pending, files
 end
 
@@ -252,6 +260,9 @@ local function execute(host, s, p, settings)
   return result, why
 end
 
+-- What batch commands use of this file.
+local tools
+
 local function run(host, p)
   local options = p.options
   local runs, bad_runs = whole(options, "--runs", 1, 1000000)
@@ -259,6 +270,9 @@ local function run(host, p)
   if bad_runs or bad_seed then return complain(host, options, USAGE, bad_runs or bad_seed) end
   local s, message, code = load_study(host, p.file)
   if not s then return complain(host, options, code, message) end
+  if batch_command.wanted(s, options, runs or s.runs) then
+    return batch_command.run(host, s, p, { runs = runs, seed = seed }, tools)
+  end
   local result, why = execute(host, s, p, { runs = runs, seed = seed })
   if not result then return complain(host, options, DATA, why) end
   local folder = options["--out"] or p.file:gsub("%.lua$", "") .. "-results"
@@ -350,6 +364,9 @@ local function new(host, p)
     :format(words.plain(p.file), words.shell(p.file .. "/study.lua")))
   return OK
 end
+
+tools = { complain = complain, guarded = guarded, whole = whole, base_name = base_name,
+  contents = contents }
 
 local commands = { run = run, describe = describe, new = new }
 

@@ -183,6 +183,13 @@ local function coloured(line, verdict)
   return (line:gsub("^| " .. word, "| \27[1;" .. colours[verdict] .. "m" .. word .. "\27[0m", 1))
 end
 
+-- Lines in a box, the verdict in the first of them coloured where it may be.
+function report.box(lines, verdict, colour)
+  local out = box(lines)
+  if colour and verdict then out[2] = coloured(out[2], verdict) end
+  return out
+end
+
 -- Lines for a person: what the study says. colour: whether the verdict may have one.
 function report.lines(study, result, colour)
   local out = {}
@@ -199,9 +206,7 @@ function report.lines(study, result, colour)
   end
   add(trouble_lines(study, result))
   add { "" }
-  local verdict = box(verdict_lines(study, result))
-  if colour and result.verdict then verdict[2] = coloured(verdict[2], result.verdict) end
-  add(verdict)
+  add(report.box(verdict_lines(study, result), result.verdict, colour))
   return out
 end
 

@@ -192,16 +192,37 @@ local function first_run(study, rig, seed)
   return run, status, why, traces, status == "done" and cut or nil
 end
 
+-- What the figures show of a batch: run 0 of each variant at the first point, as a result without
+-- values.
+function trial.shown(study, points, seed)
+  local out, seen = { variants = {}, judged = {}, runs = 1, seed = seed }, {}
+  for _, point in ipairs(points) do
+    if not seen[point.variant] then
+      seen[point.variant] = true
+      local rig = trial.rig(study, point.parameters, seed, 0)
+      local run, status, why, traces, cut = first_run(study, rig, seed)
+      out.variants[#out.variants + 1] = { name = point.variant, parameters = point.parameters,
+        values = {}, traces = traces, cut = cut, ended = status ~= "done" and { { run = 0,
+          status = status, message = why, at = run:now() } } or {} }
+    end
+  end
+  return out
+end
+
 local function run_variant(study, variant, arguments, options)
   local p, message = trial.parameters(study, arguments, variant.own)
   if not p then return nil, message end
+  options.again()
   local varies, rig = spread.varies(p), nil
   local result = { name = variant.name, parameters = p, values = {}, ended = {} }
   for _, m in ipairs(study.metrics) do result.values[m[1]] = {} end
   for i = 0, options.runs - 1 do
     options.again()
     options.progress(variant.name, i, options.runs)
-    if varies or not rig then rig = trial.rig(study, p, options.seed, i) end
+    if varies or not rig then
+      if rig then options.again() end
+      rig = trial.rig(study, p, options.seed, i)
+    end
     local run, status, why
     if i == 0 then
       run, status, why, result.traces, result.cut = first_run(study, rig, options.seed)
