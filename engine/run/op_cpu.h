@@ -95,6 +95,14 @@ static inline void steal(lw__lane *s, const lw__core *c, lw_tick length, lw_stre
     set_point_timer(s, c, r, W, L);
 }
 
+// Costs that a masked section has put off.
+static inline void pay_debt(lw__lane *s, const lw__core *c, int W, int L)
+{
+    lw_tick debt = LW__I(c->debt);
+    LW__I(c->debt) = 0;
+    steal(s, c, debt, LW_STRETCH_RELEASE_COST, W, L);
+}
+
 // ---- urgency and resources
 
 LW__INLINE int64_t own_key(lw__lane *s, const lw__core *c, int64_t r, int W, int L)
@@ -166,6 +174,9 @@ static inline int lock(LW__CONTEXT, const lw__core *c, int64_t r, int resource)
         set_keys(s, c, W, L);
         return 1;
     }
+    if (LW__I(c->masked) > 0)
+        lw__end_lane(s, LW_ERR_CAPACITY, task_at(c, r)->name,
+                     "it would wait for a resource within a masked section, for ever");
     LW__I(c->waiting) |= (int64_t)LW__BIT(r);
     LW__I(c->waits_for + r) = resource;
     cut(s, c, r, LW_ENDS_WAITING, W, L);
@@ -182,7 +193,10 @@ static inline void give_back(LW__CONTEXT, const lw__core *c, int64_t r)
     for (int k = 0; k < c->n_resources; k++)
         if (LW__I(c->owner + k) == r)
             unlock(LW__HERE, c, k);
-    LW__I(c->waiting) &= ~(int64_t)LW__BIT(r);
+    if (((uint64_t)LW__I(c->waiting) & LW__BIT(r)) != 0) {
+        LW__I(c->waiting) &= ~(int64_t)LW__BIT(r);
+        set_keys(s, c, W, L); // nobody inherits from it any more
+    }
     if (LW__I(c->running) == r)
         LW__I(c->masked) = 0;
 }
@@ -338,6 +352,8 @@ static inline void abort_job(LW__CONTEXT, const lw__core *c, const lw__task *t)
     if (LW__I(t->ring_read + slot) < 0)
         missed_job(LW__HERE, t, job);
     end_job(LW__HERE, c, t, LW_JOB_ABORTED);
+    if (LW__I(c->masked) == 0)
+        pay_debt(s, c, W, L);
 }
 
 // What becomes of a release that finds the job before unfinished; 1: it is released all the same.
@@ -587,10 +603,8 @@ LW__INLINE int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
         return 1;
     case LW__POINT_UNMASK:
         LW__I(c->masked) -= 1;
-        if (LW__I(c->masked) == 0 && LW__I(c->debt) > 0) {
-            steal(s, c, LW__I(c->debt), LW_STRETCH_RELEASE_COST, W, L);
-            LW__I(c->debt) = 0;
-        }
+        if (LW__I(c->masked) == 0)
+            pay_debt(s, c, W, L);
         lw__make_due(p, c->dispatch_op, N);
         return 1;
     case LW__POINT_YIELD:
