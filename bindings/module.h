@@ -29,7 +29,7 @@
 
 #define LW__LUA_RIG_METHODS(X)                                                                     \
     X(plant) X(connect) X(source) X(value) X(adc) X(dac) X(loop)                                   \
-    X(core) X(task) X(bus) X(frame)                                                                \
+    X(core) X(task) X(bus) X(frame) X(comparator) X(trip)                                          \
     X(freeze) X(describe) X(slices) X(start) X(run) X(close)
 #define LW__LUA_RUN_METHODS(X)                                                                     \
     X(advance) X(finish) X(restart) X(status) X(now) X(instants) X(value) X(metric) X(metrics)     \

@@ -191,6 +191,7 @@ static const lw__lua_field adc_fields[] = {
     OPTIONAL(adc, def.quantiser.bits, "bits", FIELD_COUNT, NULL),
     OPTIONAL(adc, range, "range", FIELD_RANGE, NULL),
     CHOICE(adc, rounding, "rounding", roundings),
+    NUMBER(nominal, "nominal", "s"),
     NUMBER(gain, "gain", NULL),
     NUMBER(bias, "bias", NULL),
     NUMBER(noise, "noise", NULL),

@@ -4,6 +4,7 @@
 #include "run/frozen.h"
 
 #include "io/source.h"
+#include "run/comparator.h"
 #include "run/motion.h"
 #include "run/track.h"
 
@@ -136,6 +137,10 @@ static words range_words(const lw_quantiser *q)
     return w;
 }
 
+// What triggers an adc, and when.
+static const char *const words_of[][2] = {
+    {"", ""}, {"adc", "is done"}, {"task", "finishes"}, {"comparator", "switches"}};
+
 static void describe_adcs(writer *w, const lw_frozen *z)
 {
     for (int i = 0; i < z->n_adcs; i++) {
@@ -146,8 +151,14 @@ static void describe_adcs(writer *w, const lw_frozen *z)
                 d->n_channels > 1 ? " and others" : "", period_words(a->period).text,
                 time_words(a->offset).text, range_words(&d->quantiser).text);
         else
-            say(w, "adc \"%s\": samples \"%s\"%s when adc \"%s\" is done; %s", d->name, d->of[0],
-                d->n_channels > 1 ? " and others" : "", d->after, range_words(&d->quantiser).text);
+            say(w, "adc \"%s\": samples \"%s\"%s when %s \"%s\" %s; %s", d->name, d->of[0],
+                d->n_channels > 1 ? " and others" : "", words_of[a->trigger.kind][0], d->after,
+                words_of[a->trigger.kind][1], range_words(&d->quantiser).text);
+        if (a->sporadic)
+            say(w,
+                "  it reckons with a nominal period of %s; a trigger that comes during a "
+                "conversion is passed over",
+                period_words(a->period).text);
         say(w, "  a conversion takes %s%s", time_words(a->takes).text,
             a->takes == 0 ? " (default)" : "");
         if (d->average > 1)
@@ -170,6 +181,9 @@ static void describe_dacs(writer *w, const lw_frozen *z)
             number_words(def->start).text);
         if (d->n_phases == 0)
             say(w, "  zero-order hold, changes when written (default)");
+        else if (d->latched_by.kind != LW__EVENT_NONE)
+            say(w, "  zero-order hold, latched when %s \"%s\" %s", words_of[d->latched_by.kind][0],
+                def->latched_by, words_of[d->latched_by.kind][1]);
         else
             say(w, "  zero-order hold, latched %d time%s a period of %s%s%s%s", d->n_phases,
                 d->n_phases == 1 ? "" : "s", period_words(d->latch).text,
@@ -308,6 +322,7 @@ void lw_frozen_describe(const lw_frozen *frozen, int (*line)(void *context, cons
     describe_adcs(&w, frozen);
     describe_dacs(&w, frozen);
     describe_loops(&w, frozen);
+    lw__events_describe(frozen, say_plain, &w);
     describe_groups(&w, frozen);
     describe_roundings(&w, frozen);
     describe_pairs(&w, frozen);

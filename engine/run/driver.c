@@ -25,6 +25,7 @@
 #include "run/op_adc.h"
 #include "run/op_cpu.h"
 #include "run/op_dac.h"
+#include "run/op_event.h"
 #include "run/op_group.h"
 #include "run/op_loop.h"
 #include "run/op_signal.h"
@@ -109,6 +110,24 @@ LW__INLINE void perform(LW__CONTEXT, int op)
         return;
     case LW__OP_SAMPLE:
         op_sample(LW__HERE, o->thing);
+        return;
+    case LW__OP_CROSS:
+        op_cross(LW__HERE, o->thing);
+        return;
+    case LW__OP_EDGE:
+        op_edge_arrives(LW__HERE, o->thing);
+        return;
+    case LW__OP_TRIP:
+        op_trip(LW__HERE, o->thing);
+        return;
+    case LW__OP_RELEASE_TRIP:
+        op_release_trip(LW__HERE, o->thing);
+        return;
+    case LW__OP_LATCH_TRIP:
+        op_latch_trip(LW__HERE, o->thing);
+        return;
+    case LW__OP_SEARCH:
+        op_search(LW__HERE, o->thing);
         return;
     case LW__OP_LOGICAL:
         op_logical(LW__HERE, o->thing);

@@ -2,6 +2,7 @@
 
 #include "run/event.h"
 
+#include "run/comparator.h"
 #include "run/schedule.h"
 
 #include <string.h>
@@ -30,6 +31,8 @@ static void offer_all(const lw__freezer *w, search *l)
         offer(l, w->rig->adcs[i].def.name, LW__EVENT_ADC, i);
     for (int i = 0; i < w->z->n_tasks; i++)
         offer(l, w->rig->tasks[i].def.name, LW__EVENT_TASK, i);
+    for (int i = 0; i < w->z->n_comparators; i++)
+        offer(l, w->rig->comparators[i].def.name, LW__EVENT_COMPARATOR, i);
 }
 
 lw_status lw__event_find(lw__freezer *w, const char *origin, const char *what, const char *owner,
@@ -41,9 +44,9 @@ lw_status lw__event_find(lw__freezer *w, const char *origin, const char *what, c
     if (l.found.kind != LW__EVENT_NONE)
         return LW_OK;
     const char *near = lw_nearest_name(name, l.names, l.n);
-    return lw__fail_at(origin, w->err, LW_ERR_NAME, "%s \"%s\": %s: no adc or task \"%s\"%s%s%s",
-                       what, owner, field, name, near ? "; nearest \"" : "", near ? near : "",
-                       near ? "\"" : "");
+    return lw__fail_at(origin, w->err, LW_ERR_NAME,
+                       "%s \"%s\": %s: no adc, task or comparator \"%s\"%s%s%s", what, owner, field,
+                       name, near ? "; nearest \"" : "", near ? near : "", near ? "\"" : "");
 }
 
 lw__set *lw__event_set(const lw_frozen *z, lw__event event)
@@ -53,6 +56,8 @@ lw__set *lw__event_set(const lw_frozen *z, lw__event event)
         return &z->adcs[event.index].after;
     case LW__EVENT_TASK:
         return &z->tasks[event.index].after;
+    case LW__EVENT_COMPARATOR:
+        return &z->comparators[event.index].after;
     case LW__EVENT_NONE:
         break;
     }
@@ -72,6 +77,7 @@ static lw__event cause_of(const lw_frozen *z, lw__event event, lw_period *period
         *period = z->tasks[event.index].release == LW__RELEASE_EVENT ? (lw_period){0, 1}
                                                                      : z->tasks[event.index].period;
         return z->tasks[event.index].trigger;
+    case LW__EVENT_COMPARATOR:
     case LW__EVENT_NONE:
         break;
     }

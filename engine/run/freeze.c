@@ -9,6 +9,7 @@
 
 #include "run/freeze.h"
 
+#include "run/comparator.h"
 #include "run/freezer.h"
 #include "run/schedule.h"
 
@@ -33,6 +34,8 @@ static lw_status begin_frozen(lw__freezer *w, lw_tick lasts)
     z->n_loops = rig->n_loops;
     z->n_cores = rig->n_cores;
     z->n_tasks = rig->n_tasks;
+    z->n_comparators = rig->n_comparators;
+    z->n_trips = rig->n_trips;
     z->plants = lw__freezer_get(w, sizeof *z->plants * (size_t)(z->n_plants + 1));
     z->sources = lw__freezer_get(w, sizeof *z->sources * (size_t)(z->n_sources + 1));
     z->values = lw__freezer_get(w, sizeof *z->values * (size_t)(z->n_values + 1));
@@ -41,6 +44,10 @@ static lw_status begin_frozen(lw__freezer *w, lw_tick lasts)
     z->loops = lw__freezer_get(w, sizeof *z->loops * (size_t)(z->n_loops + 1));
     z->cores = lw__freezer_get(w, sizeof *z->cores * (size_t)(z->n_cores + 1));
     z->tasks = lw__freezer_get(w, sizeof *z->tasks * (size_t)(z->n_tasks + 1));
+    z->comparators = lw__freezer_get(w, sizeof *z->comparators * (size_t)(z->n_comparators + 1));
+    z->trips = lw__freezer_get(w, sizeof *z->trips * (size_t)(z->n_trips + 1));
+    if (!z->comparators || !z->trips)
+        return LW_ERR_MEMORY;
     if (!z->plants || !z->sources || !z->values || !z->adcs || !z->dacs || !z->loops || !z->cores ||
         !z->tasks)
         return LW_ERR_MEMORY;
@@ -67,9 +74,11 @@ static lw_status freeze_parts(lw__freezer *w)
     LW__TRY(lw__freeze_plants(w));
     LW__TRY(place_plants(w));
     LW__TRY(lw__freeze_clocks(w));
+    LW__TRY(lw__freeze_event_cells(w));
     LW__TRY(lw__freeze_converters(w));
     LW__TRY(lw__freeze_loops(w));
     LW__TRY(lw__freeze_cores(w));
+    LW__TRY(lw__freeze_events(w));
     LW__TRY(lw__freeze_streams(w));
     lw__freeze_anchors(w);
     LW__TRY(lw__freeze_watch(w));

@@ -1,5 +1,6 @@
 // Freezing sources, values, adcs and dacs: names resolved, constants formed, cells reserved.
 
+#include "run/comparator.h"
 #include "run/event.h"
 #include "run/freezer.h"
 
@@ -179,6 +180,22 @@ static lw_status trigger_of_adc(lw__freezer *w, int index)
     return lw__event_find(w, def->origin, "adc", def->name, "after", def->after, &a->trigger);
 }
 
+// A trigger that has no period: what is reckoned with is stated.
+static lw_status nominal_of_adc(lw__freezer *w, lw__adc *a)
+{
+    const lw_adc_def *def = &a->item->def;
+    if (a->period.num > 0)
+        return LW_OK;
+    if (isnan(def->nominal))
+        return lw__fail_at(def->origin, w->err, LW_ERR_ARGUMENT,
+                           "adc \"%s\": what \"%s\" triggers has no period; a nominal period is "
+                           "wanted: nominal = \"100 us\"",
+                           def->name, def->after);
+    a->period = lw_period_of_ticks(ticks(def->nominal));
+    a->sporadic = 1;
+    return LW_OK;
+}
+
 static lw_status clock_of_adc(lw__freezer *w, int index)
 {
     lw__adc *a = &w->z->adcs[index];
@@ -186,6 +203,7 @@ static lw_status clock_of_adc(lw__freezer *w, int index)
         return lw__fail_at(a->item->def.origin, w->err, LW_ERR_LOOP,
                            "adc \"%s\": after: adcs trigger one another in a ring",
                            a->item->def.name);
+    LW__TRY(nominal_of_adc(w, a));
     if (lw_tick_seconds(a->takes) > lw_period_seconds(a->period))
         return lw__fail_at(a->item->def.origin, w->err, LW_ERR_ARGUMENT,
                            "adc \"%s\": takes is %.12g; at most one period of %.12g s is permitted",
@@ -220,6 +238,18 @@ static lw_status dac_cells(lw__freezer *w, lw__dac *d, const char *name)
     return d->latch_count >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
+// A comparator or a task whose edge or finish latches; LW__EVENT_NONE where there is none.
+static lw__event latching_event(const lw__freezer *w, const char *name)
+{
+    for (int i = 0; i < w->rig->n_comparators; i++)
+        if (strcmp(w->rig->comparators[i].def.name, name) == 0)
+            return (lw__event){LW__EVENT_COMPARATOR, i};
+    for (int i = 0; i < w->rig->n_tasks; i++)
+        if (strcmp(w->rig->tasks[i].def.name, name) == 0)
+            return (lw__event){LW__EVENT_TASK, i};
+    return (lw__event){LW__EVENT_NONE, -1};
+}
+
 // The latch clock: a period of its own or that of an adc; phases within it.
 static lw_status dac_latch(lw__freezer *w, lw__dac *d, const lw_dac_def *def)
 {
@@ -236,18 +266,23 @@ static lw_status dac_latch(lw__freezer *w, lw__dac *d, const lw_dac_def *def)
             d->latch_offset = a->offset;
         }
     }
-    if (def->latched_by != NULL && d->latch.num == 0) {
+    if (def->latched_by != NULL && d->latch.num == 0)
+        d->latched_by = latching_event(w, def->latched_by);
+    if (def->latched_by != NULL && d->latch.num == 0 && d->latched_by.kind == LW__EVENT_NONE) {
         const char *near = lw_nearest_name(def->latched_by, names, n);
         return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
-                           "dac \"%s\": latch: no adc \"%s\" with a clock of its own%s%s%s",
+                           "dac \"%s\": latch: no adc \"%s\" with a clock of its own, no "
+                           "comparator and no task of that "
+                           "name%s%s%s",
                            def->name, def->latched_by, near ? "; nearest \"" : "", near ? near : "",
                            near ? "\"" : "");
     }
-    d->n_phases = d->latch.num > 0 ? def->n_phases : 0;
+    int by_event = d->latched_by.kind != LW__EVENT_NONE;
+    d->n_phases = d->latch.num > 0 ? def->n_phases : by_event;
     d->set_up = ticks(def->set_up);
     for (int i = 0; i < d->n_phases; i++)
         d->phase[i] = ticks(def->phase[i]);
-    if (d->n_phases > 0)
+    if (d->n_phases > 0 && !by_event)
         d->timer = lw__freezer_timer(w);
     return LW_OK;
 }
@@ -257,7 +292,7 @@ static lw_status freeze_dac(lw__freezer *w, int index)
     lw__dac *d = &w->z->dacs[index];
     d->item = &w->rig->dacs[index];
     const lw_dac_def *def = &d->item->def;
-    d->log = -1;
+    d->log = d->tripped = -1;
     d->slew = isnan(def->slew) ? (double)INFINITY : def->slew;
     lw__ladder_make(&def->quantiser, &d->ladder);
     d->plain = isinf(d->slew) && def->dead_band == 0;

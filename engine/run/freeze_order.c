@@ -7,6 +7,7 @@
 #include "run/freezer.h"
 
 #include "io/source.h"
+#include "run/comparator.h"
 #include "run/schedule.h"
 #include "run/sprint.h"
 #include "run/track.h"
@@ -129,6 +130,23 @@ static void list_cpu_ops(const lw_frozen *z, order *o)
     }
 }
 
+static void list_event_ops(const lw_frozen *z, order *o)
+{
+    for (int i = 0; i < z->n_comparators; i++) {
+        int place = z->comparators[i].item->place;
+        add_op(o, LW__OP_CROSS, 0, place, i, 0);
+        if (z->comparators[i].delay > 0)
+            add_op(o, LW__OP_EDGE, 0, place, i, 0);
+        add_op(o, LW__OP_SEARCH, 8, place, i, 0);
+    }
+    for (int i = 0; i < z->n_trips; i++) {
+        int place = z->trips[i].item->place;
+        add_op(o, LW__OP_TRIP, 1, place, i, 0);
+        add_op(o, LW__OP_RELEASE_TRIP, 1, place, i, 0);
+        add_op(o, LW__OP_LATCH_TRIP, 2, place, i, 0);
+    }
+}
+
 static void list_ops(const lw_frozen *z, order *o)
 {
     for (int g = 0; g < z->n_groups; g++) {
@@ -148,7 +166,7 @@ static void list_ops(const lw_frozen *z, order *o)
         add_op(o, LW__OP_CONVERT, z->adcs[i].takes > 0 ? 1 : 4, place, i, 0);
     }
     for (int i = 0; i < z->n_dacs; i++)
-        if (z->dacs[i].timer >= 0)
+        if (z->dacs[i].n_phases > 0)
             add_op(o, LW__OP_LATCH, 2, z->dacs[i].item->place, i, 0);
     for (int i = 0; i < z->n_loops; i++) {
         int place = z->loops[i].item->place;
@@ -156,6 +174,7 @@ static void list_ops(const lw_frozen *z, order *o)
         add_op(o, LW__OP_STEP, z->loops[i].in_phase_1 ? 1 : 7, place, i, 0);
     }
     list_cpu_ops(z, o);
+    list_event_ops(z, o);
     for (int i = 0; i < z->n_tracks; i++)
         add_op(o, LW__OP_TRACK, 8, i, i, 0);
     for (int i = 0; i < z->n_records; i++)
@@ -190,6 +209,14 @@ static const void *thing_of(const lw_frozen *z, const lw__op *op)
     case LW__OP_READ:
     case LW__OP_LOGICAL:
         return &z->tasks[op->index];
+    case LW__OP_CROSS:
+    case LW__OP_EDGE:
+    case LW__OP_SEARCH:
+        return &z->comparators[op->index];
+    case LW__OP_TRIP:
+    case LW__OP_RELEASE_TRIP:
+    case LW__OP_LATCH_TRIP:
+        return &z->trips[op->index];
     default:
         return NULL;
     }
@@ -315,6 +342,57 @@ static lw_status order_of_cpus(lw__freezer *w)
     return LW_OK;
 }
 
+// Comparators are told of changes of their group and of their level.
+static lw_status order_of_comparator(lw__freezer *w, int index)
+{
+    lw__comparator *c = &w->z->comparators[index];
+    lw__group *g = &w->z->groups[c->condition.group - w->z->groups];
+    const char *names[2] = {c->item->def.of, c->item->def.against};
+    c->search_op = op_number(w->z, LW__OP_SEARCH, index, 0);
+    LW__TRY(make_due(w, c->timer, LW__OP_CROSS, index, 0));
+    LW__TRY(make_due(w, c->delay_timer, LW__OP_EDGE, index, 0));
+    LW__TRY(lw__set_put(w, &g->observers, c->search_op));
+    for (int k = 0; k < 2; k++) {
+        lw__set *set = names[k] != NULL ? lw__signal_observers(w->z, names[k]) : NULL;
+        if (set != NULL)
+            LW__TRY(lw__set_put(w, set, c->search_op));
+    }
+    return LW_OK;
+}
+
+static lw_status order_of_trip(lw__freezer *w, int index)
+{
+    lw_frozen *z = w->z;
+    const lw__trip *t = &z->trips[index];
+    lw__comparator *by = &z->comparators[t->by - z->comparators];
+    lw__dac *d = t->dac;
+    int release = op_number(z, LW__OP_RELEASE_TRIP, index, 0);
+    LW__TRY(lw__set_put(w, &by->rises, op_number(z, LW__OP_TRIP, index, 0)));
+    LW__TRY(make_due(w, t->timer, LW__OP_RELEASE_TRIP, index, 0));
+    if (t->item->def.until == LW_TRIP_CLEAR || t->item->def.until == LW_TRIP_TIME)
+        return lw__set_put(w, &by->falls, release);
+    if (t->item->def.until != LW_TRIP_LATCH)
+        return LW_OK;
+    int at_edge = op_number(z, LW__OP_LATCH_TRIP, index, 0);
+    if (d->timer >= 0)
+        return make_due(w, d->timer, LW__OP_LATCH_TRIP, index, 0);
+    return lw__set_put(w, lw__event_set(z, d->latched_by), at_edge);
+}
+
+static lw_status order_of_events(lw__freezer *w)
+{
+    lw_frozen *z = w->z;
+    for (int i = 0; i < z->n_comparators; i++)
+        LW__TRY(order_of_comparator(w, i));
+    for (int i = 0; i < z->n_trips; i++)
+        LW__TRY(order_of_trip(w, i));
+    for (int i = 0; i < z->n_dacs; i++)
+        if (z->dacs[i].latched_by.kind != LW__EVENT_NONE)
+            LW__TRY(lw__set_put(w, lw__event_set(z, z->dacs[i].latched_by),
+                                op_number(z, LW__OP_LATCH, i, 0)));
+    return LW_OK;
+}
+
 // Which metrics want to know when something changes.
 static lw_status watchers(lw__freezer *w)
 {
@@ -347,9 +425,9 @@ static int plain_dac(const lw__dac *d)
     if (d == NULL || d->drives.n != 1)
         return 0;
     const lw__group *g = d->drives.list[0].group;
-    return d->n_phases == 0 && d->plain && d->log < 0 && !d->newest && d->observers.words == NULL &&
-           d->drives.list[0].delay == 0 && g->observers.words == NULL && g->n_generators == 0 &&
-           g->motion == NULL;
+    return d->n_phases == 0 && d->plain && d->tripped < 0 && d->log < 0 && !d->newest &&
+           d->observers.words == NULL && d->drives.list[0].delay == 0 &&
+           g->observers.words == NULL && g->n_generators == 0 && g->motion == NULL;
 }
 
 static int plain_adc(const lw__adc *a)
@@ -419,6 +497,7 @@ lw_status lw__freeze_order(lw__freezer *w)
     LW__TRY(timers_of_parts(w));
     LW__TRY(conversions(w));
     LW__TRY(order_of_cpus(w));
+    LW__TRY(order_of_events(w));
     LW__TRY(watchers(w));
     LW__TRY(find_sprint(w));
     LW__TRY(lw__set_put(w, &z->no_ops, -1));

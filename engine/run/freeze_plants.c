@@ -139,6 +139,24 @@ static lw_status collect_feeds(lw__freezer *w)
 
 // ---- groups
 
+// A comparator between two plants joins them into one group; 1 where that was news.
+static int join_compared(lw__freezer *w)
+{
+    int changed = 0;
+    for (int i = 0; i < w->rig->n_comparators; i++) {
+        const lw_comparator_def *def = &w->rig->comparators[i].def;
+        const char *port;
+        int a = find_plant(w->rig, def->of, &port);
+        int b = def->against != NULL ? find_plant(w->rig, def->against, &port) : -1;
+        if (a < 0 || b < 0 || w->group_of[a] == w->group_of[b])
+            continue;
+        int least = w->group_of[a] < w->group_of[b] ? w->group_of[a] : w->group_of[b];
+        w->group_of[a] = w->group_of[b] = least;
+        changed = 1;
+    }
+    return changed;
+}
+
 // Number the groups: plants joined by connections share one.
 static lw_status number_groups(lw__freezer *w)
 {
@@ -151,7 +169,7 @@ static lw_status number_groups(lw__freezer *w)
     for (int i = 0; i < n; i++)
         w->group_of[i] = i;
     while (changed) {
-        changed = 0;
+        changed = join_compared(w);
         for (int i = 0; i < w->n_feeds; i++) {
             const lw__feed *f = &w->feeds[i];
             if (f->driver.kind != LW__DRIVER_PLANT)

@@ -2,6 +2,7 @@
 
 #include "run/freezer.h"
 
+#include "run/comparator.h"
 #include "run/record.h"
 #include "run/schedule.h"
 
@@ -123,10 +124,19 @@ static lw_status event_record(lw__freezer *w, lw__record *r, int record, const l
             z->cores[i].log = record;
             return named_record(w, r, LW_N_STRETCH_COLUMNS, stretch_columns);
         }
-    return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
-                       "record: no adc, dac, loop, task or core \"%s\"; a signal needs every or "
-                       "at",
-                       def->signal);
+    for (int i = 0; i < z->n_comparators; i++)
+        if (strcmp(z->comparators[i].name, def->signal) == 0) {
+            static const char *const columns[] = {"time", "value", "crossed"};
+            if (z->comparators[i].log >= 0)
+                return recorded_twice(w, def);
+            z->comparators[i].log = record;
+            return named_record(w, r, 3, columns);
+        }
+    return lw__fail_at(
+        def->origin, w->err, LW_ERR_NAME,
+        "record: no adc, dac, loop, task, core or comparator \"%s\"; a signal needs every or "
+        "at",
+        def->signal);
 }
 
 static lw_status signal_record(lw__freezer *w, lw__record *r, const lw_record_def *def)

@@ -1,5 +1,6 @@
 // Freezing the watch: records, and metrics as readings of shared tracks.
 
+#include "run/comparator.h"
 #include "run/freezer.h"
 #include "run/schedule.h"
 
@@ -304,8 +305,7 @@ static int owns(const char *owner, const char *name)
     return strncmp(owner, name, length) == 0 && (name[length] == 0 || name[length] == '.');
 }
 
-// The observers of what changes a signal of this name; NULL where nothing does.
-static lw__set *signal_observers(lw_frozen *z, const char *name)
+lw__set *lw__signal_observers(lw_frozen *z, const char *name)
 {
     for (int i = 0; i < z->n_plants; i++)
         if (owns(z->plants[i].name, name))
@@ -328,6 +328,9 @@ static lw__set *signal_observers(lw_frozen *z, const char *name)
     for (int i = 0; i < z->n_tasks; i++)
         if (owns(z->tasks[i].name, name))
             return &z->tasks[i].law.observers;
+    for (int i = 0; i < z->n_comparators; i++)
+        if (strcmp(z->comparators[i].name, name) == 0)
+            return &z->comparators[i].observers;
     return NULL;
 }
 
@@ -335,7 +338,7 @@ lw_status lw__track_watch(lw__freezer *w, lw__track *t, int op)
 {
     const char *names[2] = {t->name, t->against_name};
     for (int k = 0; k < 2; k++) {
-        lw__set *set = names[k] != NULL ? signal_observers(w->z, names[k]) : NULL;
+        lw__set *set = names[k] != NULL ? lw__signal_observers(w->z, names[k]) : NULL;
         if (set != NULL)
             LW__TRY(lw__set_put(w, set, op));
     }

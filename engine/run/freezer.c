@@ -3,6 +3,7 @@
 
 #include "run/freezer.h"
 
+#include "run/comparator.h"
 #include "run/schedule.h"
 
 #include "base/alloc.h"
@@ -182,6 +183,11 @@ static int find_signal(const lw_frozen *z, const char *name, lw_signal *out)
     for (int i = 0; i < z->n_tasks; i++)
         if (z->tasks[i].has_law && owns(z->tasks[i].name, name, &rest))
             return loop_signal(&z->tasks[i].law, rest, out);
+    for (int i = 0; i < z->n_comparators; i++)
+        if (z->comparators[i].name != NULL && same(z->comparators[i].name, name)) {
+            *out = cell(z->comparators[i].out);
+            return 1;
+        }
     return 0;
 }
 
@@ -228,6 +234,9 @@ static void list_names(const lw_frozen *z, name_list *list)
     for (int i = 0; i < z->n_tasks; i++)
         for (int k = 0; z->tasks[i].has_law && k < z->tasks[i].law.law->n_out; k++)
             add_name(list, z->tasks[i].name, z->tasks[i].law.law->out_names[k]);
+    for (int i = 0; i < z->n_comparators; i++)
+        if (z->comparators[i].name != NULL)
+            add_name(list, z->comparators[i].name, NULL);
 }
 
 lw_status lw__signal_find(const lw_frozen *z, const char *name, lw_signal *out, lw_error *err)

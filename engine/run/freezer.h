@@ -75,6 +75,8 @@ lw_status lw__freeze_order(lw__freezer *w); // operations, timers, sets
 // Inputs and outputs of a law, `l->what`, item and law known.
 lw_status lw__freeze_wires(lw__freezer *w, lw__loop *l, const lw_loop_def *def);
 
+// The observers of what changes a signal of this name; NULL where nothing does.
+lw__set *lw__signal_observers(lw_frozen *z, const char *name);
 // Have a track's operation told of changes to what it follows.
 struct lw__track;
 lw_status lw__track_watch(lw__freezer *w, struct lw__track *t, int op);

@@ -38,8 +38,9 @@ typedef struct lw__set {
 // What makes operations of other things due (event.h).
 typedef enum lw__event_kind {
     LW__EVENT_NONE,
-    LW__EVENT_ADC, // the end of a conversion
-    LW__EVENT_TASK // the finish of a task's job
+    LW__EVENT_ADC,       // the end of a conversion
+    LW__EVENT_TASK,      // the finish of a task's job
+    LW__EVENT_COMPARATOR // an edge of its output
 } lw__event_kind;
 
 typedef struct lw__event {
@@ -151,6 +152,7 @@ typedef struct lw__adc {
     int watches_reads; // a second read or an old sample reads otherwise
     int at_once;       // one channel, one sample, at the trigger
     int plain;         // neither noise nor average
+    int sporadic;      // its trigger has no period: one that comes while it is busy is passed over
     double gain, bias;
     lw__ladder ladder;
     double inverse_average;
@@ -172,6 +174,8 @@ typedef struct lw__dac {
     int pending, late;                         // double cells: registers before a latch
     int fresh, late_fresh, job, changed_at;    // integer cells
     int latch_count, timer;
+    int tripped;          // integer cell: trips that hold the output; -1: none can
+    lw__event latched_by; // an event that latches, in place of a clock
     lw_period latch;
     lw_tick latch_offset, set_up, phase[4];
     int n_phases;
@@ -252,25 +256,31 @@ typedef struct lw__record {
 } lw__record;
 
 typedef enum lw__op_kind {
-    LW__OP_ANCHOR,   // phase 0
-    LW__OP_TURN,     // phase 0: a generator changes its slope
-    LW__OP_SOURCE,   // phase 0
-    LW__OP_CONVERT,  // phase 1, conversions that took time; phase 4 the others
-    LW__OP_LOGICAL,  // phase 1: writes of a task with logical execution time
-    LW__OP_WRITES,   // phase 1: a core's job reaches points that write, unlock or end it
-    LW__OP_ARRIVE,   // phase 1: delayed writes of a loop
-    LW__OP_DELAYED,  // phase 1: delayed changes of a channel
-    LW__OP_READS,    // phase 1: a core's job reaches points that lock or read, and on from there
-    LW__OP_STEP,     // phase 1 after a conversion that took time, phase 7 otherwise
-    LW__OP_LATCH,    // phase 2
-    LW__OP_SAMPLE,   // phase 3
-    LW__OP_RELEASES, // phase 5: releases of a core's tasks by clock, arrival and slot; stalls
-    LW__OP_RELEASE,  // phase 5: release of a task by an event
-    LW__OP_DISPATCH, // phase 6
-    LW__OP_READ,     // phase 7: a task reads at its release
-    LW__OP_POINTS,   // phase 7: points of a core's job with no work before them
-    LW__OP_TRACK,    // phase 8: metrics
-    LW__OP_RECORD    // phase 8
+    LW__OP_ANCHOR,  // phase 0
+    LW__OP_TURN,    // phase 0: a generator changes its slope
+    LW__OP_SOURCE,  // phase 0
+    LW__OP_CROSS,   // phase 0: a comparator's input comes to its level
+    LW__OP_EDGE,    // phase 0: a delayed edge of a comparator
+    LW__OP_CONVERT, // phase 1, conversions that took time; phase 4 the others
+    LW__OP_LOGICAL, // phase 1: writes of a task with logical execution time
+    LW__OP_WRITES,  // phase 1: a core's job reaches points that write, unlock or end it
+    LW__OP_ARRIVE,  // phase 1: delayed writes of a loop
+    LW__OP_DELAYED, // phase 1: delayed changes of a channel
+    LW__OP_READS,   // phase 1: a core's job reaches points that lock or read, and on from there
+    LW__OP_STEP,    // phase 1 after a conversion that took time, phase 7 otherwise
+    LW__OP_TRIP,    // phase 1: forces an output
+    LW__OP_RELEASE_TRIP, // phase 1
+    LW__OP_LATCH_TRIP,   // phase 2, before the edge latches
+    LW__OP_LATCH,        // phase 2
+    LW__OP_SAMPLE,       // phase 3
+    LW__OP_RELEASES,     // phase 5: releases of a core's tasks by clock, arrival and slot; stalls
+    LW__OP_RELEASE,      // phase 5: release of a task by an event
+    LW__OP_DISPATCH,     // phase 6
+    LW__OP_READ,         // phase 7: a task reads at its release
+    LW__OP_POINTS,       // phase 7: points of a core's job with no work before them
+    LW__OP_SEARCH,       // phase 8: where a comparator next comes to its level
+    LW__OP_TRACK,        // phase 8: metrics
+    LW__OP_RECORD        // phase 8
 } lw__op_kind;
 
 typedef struct lw__op {
@@ -297,6 +307,7 @@ struct lw_frozen {
 
     int n_plants, n_groups, n_sources, n_values, n_adcs, n_dacs, n_loops;
     int n_cores, n_tasks;
+    int n_comparators, n_trips;
     lw__plant_place *plants;
     lw__group *groups;
     lw__source *sources;
@@ -306,6 +317,8 @@ struct lw_frozen {
     lw__loop *loops;
     struct lw__core *cores;
     struct lw__task *tasks;
+    struct lw__comparator *comparators;
+    struct lw__trip *trips;
     int n_records, n_tracks, n_metrics;
     lw__record *records;
     struct lw__track *tracks;

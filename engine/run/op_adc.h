@@ -106,8 +106,18 @@ static inline int sample_in_steps(lw__lane *s, const lw__adc *a, int W, int L)
     return step == a->n_steps;
 }
 
+// A conversion, or the samples of one, is under way at a trigger.
+static inline int adc_is_busy(const lw__lane *s, const lw__adc *a, int W, int L)
+{
+    if (a->done_timer >= 0 && LW__I(s->z->due + a->done_timer) != LW_NEVER)
+        return 1;
+    return LW__I(a->step) != 0 && a->timer >= 0 && LW__I(s->z->due + a->timer) != s->now;
+}
+
 LW__INLINE void op_sample(LW__CONTEXT, const lw__adc *a)
 {
+    if (a->sporadic && adc_is_busy(s, a, W, L))
+        return;
     if (a->at_once) {
         LW__I(a->sampled_at) = s->now;
         take_sample(s, a, 0, LW__I(a->sample), W, L);

@@ -45,6 +45,11 @@ static inline double slew_and_band(const lw__dac *d, double v, double from, doub
 LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked)
 {
     double limited = clamp(asked, d->ladder.lo, d->ladder.hi), v = limited, code;
+    if (d->tripped >= 0 && LW__I(d->tripped) > 0) { // a trip holds the output
+        LW__F(d->asked) = asked;
+        lw__tell(p, &d->observers, N);
+        return;
+    }
     if (!d->plain)
         v = slew_and_band(d, v, LW__F(d->held), lw__seconds(s->now - LW__I(d->changed_at)));
     v = quantise(&d->ladder, v, &code);
@@ -68,7 +73,7 @@ LW__INLINE void dac_write(LW__CONTEXT, const lw__dac *d, double value, int64_t j
     LW__I(d->job) = job;
     if (d->n_phases == 0) {
         dac_output(LW__HERE, d, value);
-    } else if (s->now + d->set_up <= LW__I(s->z->due + d->timer)) {
+    } else if (d->timer < 0 || s->now + d->set_up <= LW__I(s->z->due + d->timer)) {
         LW__F(d->pending) = value;
         LW__I(d->fresh) = 1;
     } else {
@@ -87,7 +92,8 @@ LW__INLINE void op_latch(LW__CONTEXT, const lw__dac *d)
 {
     int64_t k = LW__I(d->latch_count) + 1;
     LW__I(d->latch_count) = k;
-    LW__I(s->z->due + d->timer) = latch_edge(d, k);
+    if (d->timer >= 0)
+        LW__I(s->z->due + d->timer) = latch_edge(d, k);
     if (LW__I(d->fresh)) {
         LW__I(d->fresh) = 0;
         dac_output(LW__HERE, d, LW__F(d->pending));

@@ -62,6 +62,7 @@ void lw_rig_free(lw_rig *rig)
     lw__free(rig->dacs);
     lw__free(rig->loops);
     lw__rig_free_cpu(rig);
+    lw__rig_free_events(rig);
     lw__arena_free(rig->arena);
     lw__free(rig);
 }
@@ -99,7 +100,7 @@ static const char *what_has(const lw_rig *rig, const char *name)
     for (int i = 0; i < rig->n_tasks; i++)
         if (same(rig->tasks[i].def.name, name))
             return rig->tasks[i].is_frame ? "frame" : "task";
-    return NULL;
+    return lw__rig_event_thing(rig, name);
 }
 
 lw_status lw__check_new_name(const lw_rig *rig, const char *origin, const char *what,
@@ -270,6 +271,7 @@ lw_adc_def lw_adc_default(void)
                         .average = 1,
                         .quantiser = lw_quantiser_default(),
                         .gain = 1,
+                        .nominal = (double)NAN,
                         .reread = (double)NAN,
                         .stale_after = (double)NAN};
 }
@@ -293,6 +295,8 @@ static lw_status check_adc_clock(const lw__subject *s, const lw_adc_def *def)
         LW__TRY(lw__check_period(s, "every", def->every));
     LW__TRY(lw__check_time(s, "offset", def->offset));
     LW__TRY(lw__check_time(s, "takes", def->takes));
+    if (!isnan(def->nominal) && !(def->nominal >= 1e-12 && def->nominal <= 9e6))
+        return lw__bad_field(s, "nominal", def->nominal, "a period from 1 ps to 9e6 s is wanted");
     LW__TRY(lw__check_time(s, "average_every", def->average_every));
     if (def->takes < last_sample(def))
         return lw__bad_field(s, "takes", def->takes,

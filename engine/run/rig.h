@@ -5,6 +5,7 @@
 #include "base/arena.h"
 
 #include <latewood/cpu.h>
+#include <latewood/event.h>
 #include <latewood/rig.h>
 
 typedef struct lw__plant_item {
@@ -62,6 +63,16 @@ typedef struct lw__task_item {
     int place;
 } lw__task_item;
 
+typedef struct lw__comparator_item {
+    lw_comparator_def def;
+    int place;
+} lw__comparator_item;
+
+typedef struct lw__trip_item {
+    lw_trip_def def;
+    int place;
+} lw__trip_item;
+
 struct lw_rig {
     int references;
     lw__arena *arena;
@@ -69,6 +80,7 @@ struct lw_rig {
     int n_places;
     int n_plants, n_connections, n_sources, n_values, n_adcs, n_dacs, n_loops;
     int n_cores, n_tasks;
+    int n_comparators, n_trips;
     lw__plant_item *plants;
     lw__connection_item *connections;
     lw__source_item *sources;
@@ -78,6 +90,8 @@ struct lw_rig {
     lw__loop_item *loops;
     lw__core_item *cores;
     lw__task_item *tasks;
+    lw__comparator_item *comparators;
+    lw__trip_item *trips;
     int frozen; // a frozen rig refers to it: no more additions
 };
 
@@ -88,5 +102,8 @@ lw_status lw__blame(const char *origin, lw_error *err, lw_status status);
 
 // Laws, timings and lists of cores and tasks.
 void lw__rig_free_cpu(lw_rig *rig);
+// Lists of comparators and trips; which of them has the name, in words, or NULL.
+void lw__rig_free_events(lw_rig *rig);
+const char *lw__rig_event_thing(const lw_rig *rig, const char *name);
 
 #endif

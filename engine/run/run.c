@@ -5,6 +5,7 @@
 //    a run and stand beside it.
 // 2. A lane that ended stays as it was at its last operation.
 
+#include "run/comparator.h"
 #include "run/driver.h"
 #include "run/motion.h"
 #include "run/record.h"
@@ -119,6 +120,7 @@ void lw__lane_start(lw__lane *s)
     start_converters(s, W, L);
     start_loops(s, W, L);
     lw__cores_start(s);
+    lw__events_start(s);
 }
 
 // ---- runs

@@ -111,7 +111,10 @@ typedef struct lw_adc_def {
     const double *skew;    // [s] sample instant after the trigger; may be NULL (zeros)
     lw_period every;       // own clock; num 0: triggered
     double offset;         // [s] first sample, 0 <= offset
-    const char *after;     // triggered by the end of conversion of this adc (every.num == 0)
+    const char *after;     // triggered by what has this name (every.num == 0): the end of an adc's
+                           // conversion, of a task's job, the edge of a comparator
+    double nominal;        // [s] period to reckon with where the trigger has none; NAN: not stated.
+                           // A trigger that comes during a conversion is then passed over
     double takes;          // [s] trigger to end of conversion, >= last sample, <= period
     int average;           // samples averaged, >= 1
     double average_every;  // [s] spacing
@@ -133,7 +136,8 @@ typedef struct lw_dac_def {
     const char *origin, *name;
     const char *to;         // plant input, or NULL
     lw_period latch;        // num 0: changes when written
-    const char *latched_by; // or: latched at each trigger instant of this adc's own clock
+    const char *latched_by; // or: latched at each trigger instant of this adc's own clock, at each
+                            // chosen edge of this comparator, at each finish of this task
     double phase[4];        // [s] latch instants within a latch period
     int n_phases;           // 1 to 4 with a latch
     double set_up;          // [s] a value written later than this before an edge waits for the next

@@ -1,0 +1,128 @@
+// Comparators and trips in blocks of several runs, in rigs of many operations, and their memory.
+
+#include "loops.h"
+
+#include <latewood/event.h>
+
+// A relay about an integrator, `n` times over.
+static lw_rig *relays(int n)
+{
+    lw_rig *rig = NULL;
+    OK(lw_rig_new("relays", &rig, e));
+    for (int i = 0; i < n; i++) {
+        char plant[40], out[50], in[50], dac[40], comparator[40], trip[40];
+        lw_plant *p = NULL;
+        snprintf(plant, sizeof plant, "x%d", i);
+        snprintf(out, sizeof out, "x%d.out", i);
+        snprintf(in, sizeof in, "x%d.in", i);
+        snprintf(dac, sizeof dac, "push %d", i);
+        snprintf(comparator, sizeof comparator, "high %d", i);
+        snprintf(trip, sizeof trip, "turn %d", i);
+        OK(lw_plant_first_order(3 + i, 1e-3, &p, e));
+        OK(lw_rig_add_plant(rig, NULL, plant, p, e));
+        lw_plant_free(p);
+        lw_dac_def d = lw_dac_default();
+        d.name = dac;
+        d.to = in;
+        d.start = 1;
+        OK(lw_rig_add_dac(rig, &d, e));
+        lw_comparator_def c = lw_comparator_default();
+        c.name = comparator;
+        c.of = out;
+        c.level = 1;
+        c.hysteresis = 0.5 + i;
+        c.delay = i * 1e-6;
+        OK(lw_rig_add_comparator(rig, &c, e));
+        lw_trip_def t = lw_trip_default();
+        t.name = trip;
+        t.by = comparator;
+        t.output = dac;
+        t.to = -1;
+        t.until = LW_TRIP_CLEAR;
+        OK(lw_rig_add_trip(rig, &t, e));
+    }
+    return rig;
+}
+
+static lw_run *run_of(int n, int width)
+{
+    lw_rig *rig = relays(n);
+    lw_frozen *z = NULL;
+    lw_run *run = NULL;
+    OK(lw_rig_freeze(rig, NULL, 20 * MS, &z, e));
+    OK(lw_run_new(z, width, 1, 0, &run, e));
+    ck_assert_int_eq(lw_run_advance(run, 20 * MS), LW_OK);
+    lw_frozen_free(z);
+    lw_rig_free(rig);
+    return run;
+}
+
+static void same_for_any_width(int n)
+{
+    lw_run *one = run_of(n, 1), *three = run_of(n, 3);
+    size_t size = lw_run_lane_size(one);
+    char *a = malloc(size), *b = malloc(size);
+    lw_run_lane(one, 0, a);
+    for (int lane = 0; lane < 3; lane++) {
+        lw_run_lane(three, lane, b);
+        ck_assert_int_eq(memcmp(a, b, size), 0);
+    }
+    ck_assert_int_gt(lw_run_n_instants(one, 0), 20);
+    free(a);
+    free(b);
+    lw_run_free(one);
+    lw_run_free(three);
+}
+
+START_TEST(runs_side_by_side_are_the_bytes_of_one)
+{
+    same_for_any_width(1);
+}
+END_TEST
+
+START_TEST(so_are_rigs_of_more_than_64_operations)
+{
+    same_for_any_width(11);
+}
+END_TEST
+
+// x' = -x / T + k u / T between the two levels: the time from 0.5 up to 1 and back down again.
+START_TEST(limit_cycle_has_the_period_of_the_closed_form)
+{
+    lw_rig *rig = relays(1);
+    lw_frozen *z = NULL;
+    lw_run *run = NULL;
+    lw_watch *watch = NULL;
+    OK(lw_watch_new(&watch, e));
+    OK(lw_watch_events(watch, NULL, "high 0", 0, e));
+    OK(lw_rig_freeze(rig, watch, 20 * MS, &z, e));
+    OK(lw_run_new(z, 1, 1, 0, &run, e));
+    ck_assert_int_eq(lw_run_advance(run, 20 * MS), LW_OK);
+    // from k u = 3: ln((3 - 0.5) / (3 - 1)); back with k u = -3: ln((1 + 3) / (0.5 + 3))
+    double period = 1e-3 * (log(2.5 / 2) + log(4 / 3.5));
+    int64_t n = lw_run_record_rows(run, 0, 0);
+    ck_assert_int_gt(n, 40);
+    for (int64_t k = 2; k < n; k++) {
+        double step = lw_run_record_cell(run, 0, 0, k, 2) - lw_run_record_cell(run, 0, 0, k - 2, 2);
+        // each of the two turns is up to a tick late: 1 ps at a slope of 4000 against 2000
+        ck_assert_double_eq_tol(step, period, 4e-12);
+    }
+    // the twin: a hysteresis a thousandth wider is seen
+    ck_assert(fabs(1e-3 * (log(2.5005 / 2) + log(4 / 3.4995)) - period) > 4e-12);
+    lw_run_free(run);
+    lw_watch_free(watch);
+    lw_frozen_free(z);
+    lw_rig_free(rig);
+}
+END_TEST
+
+int main(void)
+{
+    Suite *suite = suite_create("events");
+    TCase *events = tcase_create("events");
+    tcase_add_test(events, runs_side_by_side_are_the_bytes_of_one);
+    tcase_add_test(events, so_are_rigs_of_more_than_64_operations);
+    tcase_add_test(events, limit_cycle_has_the_period_of_the_closed_form);
+    suite_add_tcase(suite, events);
+    return run_suite(suite);
+}
