@@ -44,6 +44,7 @@ extern "C" {
     X(LW_ERR_INPUT, -13, "a file is missing or cannot be read as what it should be")               \
     X(LW_ERR_OUTPUT, -14, "a file cannot be written")                                              \
     X(LW_ERR_INTERNAL, -15, "an invariant of the engine does not hold")                            \
+    X(LW_ERR_STEP, -16, "an integration cannot go on: its step size collapsed")                    \
     X(LW_ERR_PROCESS, -20, "a process was lost, or could not be started")                          \
     X(LW_ERR_CHATTER, -21, "something switches to and fro while hardly any time passes")
 
