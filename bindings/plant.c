@@ -3,6 +3,7 @@
 // Every constructor also takes states, inputs, outputs (names), start and delay, laid over the
 // plant after it is made.
 
+#include "plant.h"
 #include "fields.h"
 #include "module.h"
 
@@ -74,7 +75,7 @@ static void delay_input(const lw__lua_reader *r, lw__lua_plant *box, const char 
 }
 
 // "2 us" where there is one input, { voltage = "2 us" } otherwise; inputs in the plant's order.
-static void delay_inputs(const lw__lua_reader *r, lw__lua_plant *box)
+void lw__lua_plant_delays(const lw__lua_reader *r, lw__lua_plant *box)
 {
     lua_State *L = r->L;
     int type = lw__lua_push_field(r, "delay");
@@ -107,7 +108,7 @@ static int finish(const lw__lua_reader *r, lw__lua_plant *box, const common *c, 
     lw_error err = {LW_OK, ""};
     lw_plant *started = NULL;
     rename_ports(r, box, c);
-    delay_inputs(r, box);
+    lw__lua_plant_delays(r, box);
     if (c->start.v != NULL) {
         int n_x = lw_plant_look(box->it).n_x;
         if (c->start.n != n_x)

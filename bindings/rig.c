@@ -113,6 +113,8 @@ int lw__lua_rig_plant(lua_State *L)
     lw__lua_plant *plant = second(&r, LW__LUA_PLANT, "a plant");
     if (plant->it == NULL)
         lw__lua_bad(&r, "the plant is closed");
+    if (lw_plant_look(plant->it).flow != NULL)
+        lw__lua_rig_keep(L, -1);
     lw_status status = lw_rig_add_plant(rig->it, r.origin, name, plant->it, &err);
     return lw__lua_rig_added(&r, status, &err);
 }

@@ -10,6 +10,7 @@
 #include "captured.h"
 #include "law.h"
 #include "module.h"
+#include "plant.h"
 #include "rig.h"
 #include "source.h"
 
@@ -33,7 +34,8 @@ static lw__lua_call *push_call(lua_State *L, int rig, int i)
         return NULL;
     }
     int of_law = luaL_testudata(L, -1, LW__LUA_LAW) != NULL;
-    lua_getiuservalue(L, -1, of_law ? LAW_CALL : SOURCE_CALL);
+    int of_plant = luaL_testudata(L, -1, LW__LUA_PLANT) != NULL;
+    lua_getiuservalue(L, -1, of_law ? LAW_CALL : of_plant ? PLANT_CALL : SOURCE_CALL);
     lua_replace(L, -3);
     lua_pop(L, 1);
     return lua_touserdata(L, -1);
@@ -60,9 +62,13 @@ static void push_snapshot(lua_State *L, int rig)
             lw__lua_snapshot_new(L);
             lua_replace(L, place);
         }
-        lua_pushvalue(call->thread, CALL_FUNCTION);
-        lua_xmove(call->thread, L, 1);
-        lw__lua_snapshot_add(L, place, lua_gettop(L));
+        for (int f = CALL_FUNCTION; f <= call->top; f++) {
+            lua_pushvalue(call->thread, f);
+            lua_xmove(call->thread, L, 1);
+            if (lua_isfunction(L, -1)) // not the table of a list
+                lw__lua_snapshot_add(L, place, lua_gettop(L));
+            lua_pop(L, 1);
+        }
         lua_settop(L, place);
     }
 }
@@ -101,8 +107,8 @@ static void check_captured(lua_State *L, int run)
         const char *changed = lw__lua_snapshot_compare(L, -1);
         if (changed != NULL)
             lw__lua_fail(L,
-                         "%s changed during the run; a law or a source may read what it "
-                         "captures, not change it",
+                         "%s changed during the run; a law, a source or a flow may read "
+                         "what it captures, not change it",
                          changed);
     }
     lw__lua_call *call;

@@ -1,8 +1,10 @@
 // Speed of a control law written in Lua: W6, a PI with filter called each period, under the full
 // contract of a law inside a whole loop (plant, adc, dac), against a bare protected call from C
-// with positional scalars and a lag as cheap as can be.
+// with positional scalars and a lag as cheap as can be. And of a plant written in Lua: W4.lua, the
+// loop of W4 with its flow in Lua, against plain C.
 
 #include "bench.h"
+#include "w4.h"
 
 #include "../bindings/latewood_lua.h"
 
@@ -10,7 +12,7 @@
 #include <lualib.h>
 
 static lua_State *L;
-static int run_at, bare_at; // places of the run and of the bare function on the stack
+static int run_at, bare_at, flow_at; // places of the functions on the stack
 
 static const char script[] =
     "local lw = require 'latewood'\n"
@@ -44,7 +46,32 @@ static const char script[] =
     "  r:advance(n * 50e-6)\n"
     "  return r:value 'lag.out'\n"
     "end\n"
-    "return run, bare\n";
+    "local axis = lw.rig 'axis'\n"
+    "local tanh, sin, abs = lw.math.tanh, lw.math.sin, lw.math.abs\n"
+    "axis:plant { 'plant', lw.plant.flow {\n"
+    "  states = { 'current', 'motor', 'twist', 'load', 'angle' }, inputs = { 'volts' },\n"
+    "  rtol = 1e-8, atol = 1e-10,\n"
+    "  flow = function(current, motor, twist, load, angle, volts)\n"
+    "    local shaft = 160 * twist + 0.012 * (motor - load)\n"
+    "    local held = 0.015 * tanh(load / 0.4) + 0.00006 * load * abs(load)\n"
+    "                 + 0.05 * sin(angle + 0.3)\n"
+    "    return (volts - 1.2 * current - 0.11 * motor) / 0.0018,\n"
+    "           (0.11 * current - 0.00025 * motor - shaft) / 0.00014,\n"
+    "           motor - load, (shaft - 0.0003 * load - held) / 0.0009, load\n"
+    "  end } }\n"
+    "axis:source { 'wanted', lw.source.pulses { low = -12, high = 12, width = '100 ms',\n"
+    "  every = '200 ms' } }\n"
+    "axis:adc { 'adc', of = 'plant.motor', every = '50 us', bits = 12, range = { -40, 40 } }\n"
+    "axis:dac { 'dac', to = 'plant.volts' }\n"
+    "axis:loop { 'loop', wanted = 'wanted', measured = 'adc', output = 'dac',\n"
+    "  latency = '0.37 samples', law = lw.law.pi { kp = 2, ki = 240, limit = { -15, 15 },\n"
+    "  anti_windup = 'back-calculation', kb = 600 } }\n"
+    "local function flow(n)\n"
+    "  local r = axis:start { lasts = n * 50e-6 }\n"
+    "  r:advance(n * 50e-6)\n"
+    "  return r:value 'plant.motor'\n"
+    "end\n"
+    "return run, bare, flow\n";
 
 static void fail(void)
 {
@@ -52,15 +79,25 @@ static void fail(void)
     exit(1);
 }
 
-static double whole_loop(long n)
+static double call_with(int function, long n)
 {
-    lua_pushvalue(L, run_at);
+    lua_pushvalue(L, function);
     lua_pushinteger(L, n);
     if (lua_pcall(L, 1, 1, 0) != LUA_OK)
         fail();
     double y = lua_tonumber(L, -1);
-    lua_settop(L, bare_at);
+    lua_settop(L, flow_at);
     return y;
+}
+
+static double whole_loop(long n)
+{
+    return call_with(run_at, n);
+}
+
+static double flow_loop(long n)
+{
+    return call_with(flow_at, n);
 }
 
 static double bare_calls(long n)
@@ -75,7 +112,7 @@ static double bare_calls(long n)
         if (lua_pcall(L, 2, 1, 0) != LUA_OK)
             fail();
         y += 0.004 * (lua_tonumber(L, -1) * 1.3 - y);
-        lua_settop(L, bare_at);
+        lua_settop(L, flow_at);
     }
     return y;
 }
@@ -87,9 +124,11 @@ int main(void)
     luaL_requiref(L, "latewood", luaopen_latewood, 0);
     if (luaL_dostring(L, script) != LUA_OK)
         fail();
-    run_at = lua_gettop(L) - 1;
+    run_at = lua_gettop(L) - 2;
     bare_at = run_at + 1;
+    flow_at = run_at + 2;
     bench_pair("W6", 300000, whole_loop, bare_calls);
+    bench_pair("W4.lua", 4000, flow_loop, w4_plain);
     lua_close(L);
     return 0;
 }

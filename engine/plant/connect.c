@@ -163,6 +163,8 @@ lw_status lw_plant_connect(int n_parts, const lw_part *parts, int n_links, const
     if (net.arena == NULL)
         return lw_error_set(err, LW_ERR_MEMORY, "no memory to connect plants");
     lw_status status = lw__net_read(&net, n_links, links, n_inputs, inputs, n_outputs, outputs);
+    for (int p = 0; status == LW_OK && p < n_parts; p++)
+        status = lw__plant_refuse_flow(parts[p].plant, "part", parts[p].name, err);
     if (status == LW_OK)
         status = lw__net_move_delays(&net);
     if (status == LW_OK)

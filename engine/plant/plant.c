@@ -14,6 +14,7 @@
 
 #include <latewood/time.h>
 #include <math.h>
+#include <stdint.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -24,6 +25,8 @@ lw_plant_view lw_plant_look(const lw_plant *plant)
 
 void lw_plant_free(lw_plant *plant)
 {
+    if (plant != NULL)
+        lw__flow_release(plant->flow);
     lw__free(plant);
 }
 
@@ -269,7 +272,10 @@ static lw_plant *copy(const lw_plant_view *v)
     cursor to = {.number = (double *)(plant + 1)};
     to.name = (const char **)(to.number + n_numbers);
     to.text = (char *)(to.name + n_names);
-    plant->view = (lw_plant_view){.n_x = n_x, .n_u = n_u, .n_y = n_y};
+    plant->view = (lw_plant_view){.n_x = n_x, .n_u = n_u, .n_y = n_y, .flow = v->flow};
+    plant->flow = (lw__flow *)(uintptr_t)v->flow;
+    if (plant->flow != NULL)
+        plant->flow->references++;
     plant->view.a = copy_numbers(&to, v->a, n_x * n_x);
     plant->view.b = copy_numbers(&to, v->b, n_x * n_u);
     plant->view.c = copy_numbers(&to, v->c, n_y * n_x);

@@ -9,7 +9,20 @@
 // One block: the view, then what it points to.
 struct lw_plant {
     lw_plant_view view;
+    struct lw__flow *flow; // NULL: linear
 };
+
+// What flows that are copies of each other share. Of a flow's view, C has a row of one 1 for an
+// output that is a state, and D a 1 where an output follows an input without delay.
+typedef struct lw__flow {
+    lw_flow_def def; // first
+    int references;
+} lw__flow;
+void lw__flow_release(lw__flow *flow);
+
+// `part "tube": its plant is a flow; ...` for functions that need matrices.
+lw_status lw__plant_refuse_flow(const lw_plant *plant, const char *what, const char *name,
+                                lw_error *err);
 
 // Make a checked copy of the plant that `from` describes. d, start, delay (zeros) and the lists of
 // names (defaults) may be NULL; matrices without elements too.

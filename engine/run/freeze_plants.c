@@ -4,7 +4,7 @@
 // Invariants
 // 1. What is chosen for a group depends on the group and what drives or samples it only.
 
-#include "run/freezer.h"
+#include "run/freeze_plants.h"
 
 #include "base/alloc.h"
 #include "io/source.h"
@@ -187,17 +187,7 @@ static lw_status number_groups(lw__freezer *w)
     return w->z->groups != NULL ? LW_OK : LW_ERR_MEMORY;
 }
 
-// Everything lw_plant_connect needs for one group, and the feeds its external inputs stand for.
-typedef struct joint {
-    int n_parts, n_links, n_inputs, n_outputs;
-    lw_part parts[LW_PLANT_MAX_STATES];
-    lw_link links[LW_PLANT_MAX_PORTS];
-    lw_port inputs[LW_PLANT_MAX_PORTS];
-    lw_port outputs[LW_PLANT_MAX_PORTS * 4];
-    lw__feed *feed[LW_PLANT_MAX_PORTS];
-} joint;
-
-static const char *port_text(lw__freezer *w, int plant, const char *port)
+const char *lw__port_text(lw__freezer *w, int plant, const char *port)
 {
     const char *name = w->rig->plants[plant].name;
     size_t size = strlen(name) + strlen(port) + 2;
@@ -215,23 +205,23 @@ static const char *numbered(lw__freezer *w, char letter, int n)
     return text;
 }
 
-static lw_status too_large(lw__freezer *w, const char *origin)
+lw_status lw__group_too_large(lw__freezer *w, const char *origin)
 {
     return lw__fail_at(origin, w->err, LW_ERR_SHAPE,
                        "connected plants have too many parts, inputs or outputs; permitted 64 "
                        "states, 32 inputs, 32 links, 128 outputs");
 }
 
-static lw_status join_plant(lw__freezer *w, joint *j, int plant)
+static lw_status join_plant(lw__freezer *w, lw__joint *j, int plant)
 {
     const lw__plant_item *item = &w->rig->plants[plant];
     lw_plant_view v = lw_plant_look(item->plant);
     if (j->n_parts == LW_PLANT_MAX_STATES || j->n_outputs + v.n_y > LW_PLANT_MAX_PORTS * 4)
-        return too_large(w, item->origin);
+        return lw__group_too_large(w, item->origin);
     j->parts[j->n_parts++] = (lw_part){item->name, item->plant};
     w->first_row[plant] = j->n_outputs;
     for (int i = 0; i < v.n_y; i++) {
-        const char *port = port_text(w, plant, v.output_names[i]);
+        const char *port = lw__port_text(w, plant, v.output_names[i]);
         const char *name = numbered(w, 'y', j->n_outputs);
         if (port == NULL || name == NULL)
             return LW_ERR_MEMORY;
@@ -240,24 +230,24 @@ static lw_status join_plant(lw__freezer *w, joint *j, int plant)
     return LW_OK;
 }
 
-static lw_status join_feed(lw__freezer *w, joint *j, lw__feed *f)
+static lw_status join_feed(lw__freezer *w, lw__joint *j, lw__feed *f)
 {
     lw_plant_view v = lw_plant_look(w->rig->plants[f->plant].plant);
-    const char *to = port_text(w, f->plant, v.input_names[f->input]);
+    const char *to = lw__port_text(w, f->plant, v.input_names[f->input]);
     if (to == NULL)
         return LW_ERR_MEMORY;
     if (f->driver.kind == LW__DRIVER_PLANT) {
         lw_plant_view from = lw_plant_look(w->rig->plants[f->driver.index].plant);
-        const char *text = port_text(w, f->driver.index, from.output_names[f->driver.port]);
+        const char *text = lw__port_text(w, f->driver.index, from.output_names[f->driver.port]);
         if (text == NULL)
             return LW_ERR_MEMORY;
         if (j->n_links == LW_PLANT_MAX_PORTS)
-            return too_large(w, f->driver.origin);
+            return lw__group_too_large(w, f->driver.origin);
         j->links[j->n_links++] = (lw_link){text, to, 1};
         return LW_OK;
     }
     if (j->n_inputs == LW_PLANT_MAX_PORTS)
-        return too_large(w, f->driver.origin);
+        return lw__group_too_large(w, f->driver.origin);
     const char *name = numbered(w, 'u', j->n_inputs);
     if (name == NULL)
         return LW_ERR_MEMORY;
@@ -266,7 +256,7 @@ static lw_status join_feed(lw__freezer *w, joint *j, lw__feed *f)
     return LW_OK;
 }
 
-static lw_status join_group(lw__freezer *w, int group, joint *j)
+lw_status lw__join_group(lw__freezer *w, int group, lw__joint *j)
 {
     for (int p = 0; p < w->rig->n_plants; p++)
         if (w->group_of[p] == group)
@@ -307,7 +297,7 @@ typedef struct system {
     double *start, *u_start;
 } system_of;
 
-static int count_generators(const lw__freezer *w, const joint *j, int *slopes)
+static int count_generators(const lw__freezer *w, const lw__joint *j, int *slopes)
 {
     int n = 0;
     *slopes = 0;
@@ -344,7 +334,7 @@ static void add_generator(system_of *s, const lw_plant_view *v, int column,
     }
 }
 
-static double first_of(const lw__freezer *w, const lw__driver *driver)
+double lw__first_of(const lw__freezer *w, const lw__driver *driver)
 {
     switch (driver->kind) {
     case LW__DRIVER_SOURCE:
@@ -358,8 +348,7 @@ static double first_of(const lw__freezer *w, const lw__driver *driver)
     }
 }
 
-// A source delayed at one input is a copy with its instants moved, so that its kinks stay exact.
-static lw_status delayed_source(lw__freezer *w, const lw__source_item **item, double delay)
+lw_status lw__delayed_source(lw__freezer *w, const lw__source_item **item, double delay)
 {
     if (delay == 0)
         return LW_OK;
@@ -376,24 +365,24 @@ static lw_status delayed_source(lw__freezer *w, const lw__source_item **item, do
     return LW_OK;
 }
 
-static lw_status fill_inputs(lw__freezer *w, const joint *j, const lw_plant_view *v, system_of *s,
-                             lw__generator *generators, lw__channel *channels)
+static lw_status fill_inputs(lw__freezer *w, const lw__joint *j, const lw_plant_view *v,
+                             system_of *s, lw__generator *generators, lw__channel *channels)
 {
     int state = v->n_x, slope = v->n_u, next = 0;
     for (int i = 0; i < j->n_inputs; i++) {
         const lw__feed *f = j->feed[i];
         lw_plant_view own = lw_plant_look(w->rig->plants[f->plant].plant);
-        channels[i].name = port_text(w, f->plant, own.input_names[f->input]);
+        channels[i].name = lw__port_text(w, f->plant, own.input_names[f->input]);
         if (channels[i].name == NULL)
             return LW_ERR_MEMORY;
         lw_tick_from_seconds(v->delay[i], &channels[i].delay);
-        s->u_start[i] = first_of(w, &f->driver);
+        s->u_start[i] = lw__first_of(w, &f->driver);
         if (f->driver.kind != LW__DRIVER_SOURCE)
             continue;
         const lw__source_item *item = &w->rig->sources[f->driver.index];
         if (!lw__source_moves(&item->def))
             continue;
-        LW__TRY(delayed_source(w, &item, v->delay[i]));
+        LW__TRY(lw__delayed_source(w, &item, v->delay[i]));
         lw__generator *gen = &generators[next++];
         *gen = (lw__generator){.source = f->driver.index,
                                .def = &item->def,
@@ -414,8 +403,8 @@ static lw_status fill_inputs(lw__freezer *w, const joint *j, const lw_plant_view
     return LW_OK;
 }
 
-static lw_status make_system(lw__freezer *w, lw__group *g, const joint *j, const lw_plant *plant,
-                             system_of *s)
+static lw_status make_system(lw__freezer *w, lw__group *g, const lw__joint *j,
+                             const lw_plant *plant, system_of *s)
 {
     lw_plant_view v = lw_plant_look(plant);
     int slopes, n_gen = count_generators(w, j, &slopes);
@@ -423,7 +412,7 @@ static lw_status make_system(lw__freezer *w, lw__group *g, const joint *j, const
     s->m = v.n_u + slopes;
     size_t n = (size_t)s->n, m = (size_t)s->m, rows = (size_t)(v.n_y + v.n_x);
     if (s->n > LW__KERNEL_MAX)
-        return too_large(w, g->origin);
+        return lw__group_too_large(w, g->origin);
     s->a = lw__freezer_get(w, sizeof(double) * (n * n + n * m + rows * (n + m) + n + m + 1));
     lw__generator *generators = lw__freezer_get(w, sizeof *generators * (size_t)(n_gen + 1));
     lw__channel *channels = lw__freezer_get(w, sizeof *channels * (m + 1));
@@ -501,7 +490,7 @@ static int shorter(lw_period a, lw_period b)
 
 // The fastest periodic adc on the group, else a latch that drives it, else a length within which
 // the group moves by about its own norm.
-static lw_status choose_grid(lw__freezer *w, lw__group *g, int group)
+lw_status lw__choose_grid(lw__freezer *w, lw__group *g, int group)
 {
     const lw_rig *rig = w->rig;
     double offset = 0;
@@ -579,7 +568,7 @@ static lw_status group_cells(lw__freezer *w, lw__group *g)
 }
 
 // A delayed channel keeps its changes in flight: as many as its driver can make within the delay.
-static lw_status delay_cells(lw__freezer *w, lw__channel *c)
+lw_status lw__delay_cells(lw__freezer *w, lw__channel *c)
 {
     if (c->delay == 0)
         return LW_OK;
@@ -593,7 +582,7 @@ static lw_status delay_cells(lw__freezer *w, lw__channel *c)
 
 // ---- all of it
 
-static void note_feeds(lw__freezer *w, int group, const joint *j)
+void lw__note_feeds(lw__freezer *w, int group, const lw__joint *j)
 {
     for (int i = 0; i < j->n_inputs; i++) {
         j->feed[i]->group = group;
@@ -607,31 +596,41 @@ static void note_feeds(lw__freezer *w, int group, const joint *j)
         }
 }
 
+static int has_flow(const lw__joint *j)
+{
+    for (int p = 0; p < j->n_parts; p++)
+        if (lw_plant_look(j->parts[p].plant).flow != NULL)
+            return 1;
+    return 0;
+}
+
 static lw_status freeze_group(lw__freezer *w, int group)
 {
     lw__group *g = &w->z->groups[group];
-    joint j = {0};
+    lw__joint j = {0};
     lw_plant *plant = NULL;
     system_of s = {0};
     g->name = group_name(w, group);
     g->origin = group_origin(w, group);
-    LW__TRY(join_group(w, group, &j));
+    LW__TRY(lw__join_group(w, group, &j));
+    if (has_flow(&j))
+        return lw__freeze_flow(w, group, &j);
     LW__TRY(lw__blame(g->origin, w->err,
                       lw_plant_connect(j.n_parts, j.parts, j.n_links, j.links, j.n_inputs, j.inputs,
                                        j.n_outputs, j.outputs, &plant, w->err)));
-    note_feeds(w, group, &j);
+    lw__note_feeds(w, group, &j);
     lw_status status = make_system(w, g, &j, plant, &s);
     lw_plant_free(plant);
     if (status == LW_OK)
         status = make_rows(w, g, &s);
     if (status == LW_OK)
-        status = choose_grid(w, g, group);
+        status = lw__choose_grid(w, g, group);
     if (status == LW_OK)
         status = build_kernel(w, g, &s);
     if (status == LW_OK)
         status = group_cells(w, g);
     for (int c = 0; status == LW_OK && c < g->n_u; c++)
-        status = delay_cells(w, &g->channels[c]);
+        status = lw__delay_cells(w, &g->channels[c]);
     return status;
 }
 

@@ -182,7 +182,6 @@ typedef struct lw__dac {
     lw__ladder ladder;
     double slew; // inf: none
     int plain;   // neither slew nor dead band
-    int gaps;    // a metric wants the time between outputs
     lw__drives drives;
     int newest;
     lw__set observers;
@@ -340,6 +339,7 @@ struct lw_frozen {
     lw_slice *slices;
     int now;            // integer cell
     int most_x, most_u; // largest sizes, for scratch
+    int motion_work;    // doubles of scratch that motions need
 };
 
 // Find a signal by name; LW_ERR_NAME gives the nearest.

@@ -7,7 +7,6 @@
 
 #include "run/comparator.h"
 #include "run/driver.h"
-#include "run/job_metric.h"
 #include "run/motion.h"
 #include "run/record.h"
 #include "run/schedule.h"
@@ -30,7 +29,7 @@ struct lw_run {
     lw__table *tables; // width x n_records
     int64_t *instants;
     uint64_t *sets;
-    double *work;
+    double *work, *motion_work;
     int64_t *ticks;
 };
 
@@ -102,9 +101,7 @@ static void start_loops(lw__lane *s, int W, int L)
     for (int i = 0; i < z->n_tracks; i++)
         LW__I(z->due + z->tracks[i].timer) = z->tracks[i].from;
     for (int i = 0; i < z->n_metrics; i++)
-        if (z->metrics[i].task >= 0 || z->metrics[i].dac >= 0)
-            lw__job_metric_start(s, &z->metrics[i]);
-        else if (z->metrics[i].def.kind == LW_METRIC_RISE)
+        if (z->metrics[i].def.kind == LW_METRIC_RISE)
             LW__F(z->metrics[i].own) = LW__F(z->metrics[i].own + 1) = -1;
 }
 
@@ -140,6 +137,7 @@ void lw_run_free(lw_run *run)
     lw__free(run->instants);
     lw__free(run->sets);
     lw__free(run->work);
+    lw__free(run->motion_work);
     lw__free(run->ticks);
     lw_frozen_free(run->z);
     lw__free(run);
@@ -158,6 +156,7 @@ static void set_lanes(lw_run *run)
                                    .due = run->sets + 2 * words * (size_t)k,
                                    .next = run->sets + 2 * words * (size_t)k + words,
                                    .work = run->work,
+                                   .motion_work = run->motion_work,
                                    .ticks = run->ticks,
                                    .tables = run->tables + (size_t)k * (size_t)z->n_records};
 }
@@ -173,9 +172,10 @@ static int get_memory(lw_run *run)
     run->instants = lw__alloc(sizeof *run->instants * width);
     run->sets = lw__alloc(sizeof *run->sets * 2 * width * (size_t)z->n_words);
     run->work = lw__alloc(sizeof(double) * (size_t)LW__WORK(z));
+    run->motion_work = lw__alloc(sizeof(double) * (size_t)(z->motion_work + 1));
     run->ticks = lw__alloc(sizeof *run->ticks * 2 * LW__LIST_CAPACITY);
     return run->block && run->lanes && run->tables && run->instants && run->sets && run->work &&
-           run->ticks;
+           run->motion_work && run->ticks;
 }
 
 lw_status lw_run_new(lw_frozen *frozen, int width, uint64_t seed, uint64_t first_run, lw_run **out,

@@ -24,6 +24,7 @@ typedef struct lw__lane {
     uint64_t seed, run;
     uint64_t *due, *next; // sets of a pass where one word is too small
     double *work;         // scratch doubles
+    double *motion_work;  // and those of motions: observers use `work` while a group moves
     int64_t *ticks;       // scratch for a list of input changes: ticks, then channels
     lw__table *tables;    // records of this lane
     // why the lane ended
@@ -116,8 +117,6 @@ void lw__lane_start(lw__lane *s);
 // State and present output of a group or signal, for readers that change nothing.
 void lw__group_state(const lw__lane *s, int group, double *x, double *u);
 double lw__signal_value(const lw__lane *s, const lw__reference *r);
-// An output of a dac that has `gaps`.
-void lw__dac_changed(lw__lane *s, const lw__dac *d);
 // One row to a record; a full record ends the lane.
 void lw__table_add(lw__lane *s, int record, const double *row);
 

@@ -1,4 +1,5 @@
-// Linear plants: x' = A x + B u, y = C x + D u, with named inputs, outputs and states.
+// Plants: linear ones, x' = A x + B u, y = C x + D u, and flows, x' = f(t, x, u), with named
+// inputs, outputs and states.
 //
 // A lw_plant is built once and then only read. Matrices are row-major. Names follow the rule of
 // every name in a rig: UTF-8, 1 to 200 bytes, no control characters, no dot; unique among the
@@ -8,6 +9,7 @@
 #define LATEWOOD_PLANT_H
 
 #include <latewood/status.h>
+#include <stdint.h>
 
 #ifdef __cplusplus
 extern "C" {
@@ -30,6 +32,8 @@ typedef struct lw_plant_view {
     const char *const *state_names;
     const char *const *input_names;
     const char *const *output_names;
+    const struct lw_flow_def *flow; // NULL: linear. Of a flow A, B, C and D say nothing; names and
+                                    // start are those above
 } lw_plant_view;
 
 LW_API lw_plant_view lw_plant_look(const lw_plant *plant);
@@ -110,6 +114,59 @@ LW_API lw_status lw_plant_winding(double resistance, double inductance, lw_plant
                                   lw_error *err);
 LW_API lw_status lw_plant_dc_machine(const lw_dc_machine *p, lw_plant **out, lw_error *err);
 LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **out, lw_error *err);
+
+// A plant that is an ordinary differential equation. Its functions are pure: the same arguments
+// give the same numbers, and nothing else changes. Times are seconds since the start of the run,
+// inputs are held or move smoothly between two calls of `happened`. Each function returns 0;
+// anything else ends the run with LW_ERR_LAW.
+//
+//   x   n_x states, then n_modes modes: numbers that stand still but for `happened`
+//   u   n_u inputs
+//   flow      dx: n_x derivatives
+//   outputs   y: n_y outputs. Of u it may read the inputs in `direct` only; the others hold NAN
+//             there. An output that bears the name of a state is that state, whatever is put in its
+//             place. NULL: all outputs are such.
+//   switches  g: n_switches numbers, continuous in t and x. Where one changes its sign the flow may
+//             have a kink or a jump: the instant is found and a step ends there. NULL where
+//             n_switches is 0. Without them error control alone sees a kink, in many small steps.
+//   jacobian  j: n_x x n_x, row-major, of the flow by x; for the stiff method. NULL: by differences
+//   happened  switching `which` has passed through zero, rising (1) or falling (0): may change
+//             states and modes. NULL: nothing changes by itself.
+//   method    Dormand-Prince 5(4) (J. Dormand, P. Prince, J. Comp. Appl. Math. 6 (1980) 19-26) with
+//             step-size control; each step's error is held within atol + rtol |x|, state by state.
+//             A stiff flow is noticed and goes on by a stiff method; see engine/ode/ode.h.
+typedef struct lw_flow_def {
+    int n_x, n_u, n_y;
+    const char *const *state_names; // all names, start and atol are copied
+    const char *const *input_names;
+    const char *const *output_names; // NULL where outputs is NULL: all states, n_y is n_x then
+    const double *start;             // n_x, may be NULL (zeros)
+    int (*flow)(void *context, double t, const double *x, const double *u, double *dx);
+    int (*outputs)(void *context, double t, const double *x, const double *u, double *y);
+    uint32_t direct; // bit i: some output depends on input i without delay; all by default
+    int n_switches;
+    int (*switches)(void *context, double t, const double *x, const double *u, double *g);
+    int (*jacobian)(void *context, double t, const double *x, const double *u, double *j);
+    int n_modes;
+    const double *modes; // n_modes, at time zero; may be NULL (zeros)
+    int (*happened)(void *context, double t, double *x, const double *u, int which, int rising);
+    double rtol;        // 1e-8 by default; permitted 1e-13 to 0.1
+    const double *atol; // n_x, above 0, in the unit of each state; NULL: rtol / 100 each
+    void *context;      // given to every function; owned by the plant once it is made
+    void (*free_context)(void *context); // NULL: nothing to free
+    int needs_serial;                    // nonzero: calls back into one interpreter
+} lw_flow_def;
+
+#define LW_FLOW_MAX_SWITCHES 64
+#define LW_FLOW_MAX_MODES 16
+
+LW_API lw_flow_def lw_flow_default(void);
+// Make a plant of it. In a rig it connects like any other; functions of this header that combine
+// plants refuse it. lw_plant_delayed, lw_plant_started and lw_plant_renamed take it.
+//   errors  LW_ERR_SHAPE a count out of range; LW_ERR_ARGUMENT flow, names or switches missing,
+//           rtol, atol; LW_ERR_NOT_FINITE a start or mode; LW_ERR_NAME, LW_ERR_DUPLICATE names. On
+//           failure the context is not taken over.
+LW_API lw_status lw_plant_flow(const lw_flow_def *def, lw_plant **out, lw_error *err);
 
 // A copy of `plant` with an input delay of `seconds` >= 0 added to input `input`, with the state
 // at time zero replaced (n values), or with inputs, outputs, states renamed (NULL list: keep).

@@ -1,0 +1,514 @@
+// Groups that hold flows: integrated step by step from own event to own event.
+//
+// Workload: an advance each sample and input change of the group, a step or two each; the flow's
+// functions take most of the time.
+//
+// Invariants
+// 1. Only `advance` writes cells. `row` and `look` do the same arithmetic on a copy.
+// 2. A step never passes the present tick, which is an own event; its size is carried on.
+// 3. Times within an advance count from the anchor, so that they keep their digits in long runs.
+
+#include "run/flow.h"
+
+#include "io/source.h"
+
+#include <latewood/elementary.h>
+
+#include <math.h>
+#include <stdint.h>
+#include <stdio.h>
+#include <string.h>
+
+#define PART_STATES (LW_PLANT_MAX_STATES + LW_FLOW_MAX_MODES + LW_FLOW_MAX_SWITCHES)
+
+// A moving source in closed form from the anchor on: before + slope t, or before + a sine.
+typedef struct course {
+    int channel, is_sine;
+    double value, slope;       // lines
+    double sine, cosine, turn; // sines
+} course;
+
+// What the flow of a group is called with.
+typedef struct bond {
+    const lw__group *g;
+    const lw__flow_group *m;
+    double begun; // instant of the anchor [s]
+    double *u;    // n_u channels
+    double *y, *part_u, *part_x;
+    double *modes;
+    const double *sides; // of the switchings of all parts
+    int n_courses;
+    course courses[LW_PLANT_MAX_PORTS];
+    const char *failed; // the part whose function failed
+} bond;
+
+// ---- what the parts give
+
+static void move_sources(bond *b, double t)
+{
+    for (int k = 0; k < b->n_courses; k++) {
+        const course *c = &b->courses[k];
+        double v = c->value + c->slope * t;
+        if (c->is_sine)
+            v += c->sine * lw_cos(c->turn * t) + c->cosine * lw_sin(c->turn * t);
+        b->u[c->channel] = v;
+    }
+}
+
+// A flow's states, modes and sides in one row.
+static const double *states_of(bond *b, const lw__flow_part *p, const double *x)
+{
+    const lw_flow_def *def = p->view.flow;
+    if (def == NULL || def->n_modes + def->n_switches == 0)
+        return x + p->first_x;
+    memcpy(b->part_x, x + p->first_x, sizeof(double) * (size_t)p->view.n_x);
+    memcpy(b->part_x + p->view.n_x, b->modes + p->first_mode,
+           sizeof(double) * (size_t)def->n_modes);
+    memcpy(b->part_x + p->view.n_x + def->n_modes, b->sides + p->first_switch,
+           sizeof(double) * (size_t)def->n_switches);
+    return b->part_x;
+}
+
+// Inputs of a part from channels and from outputs formed so far; NAN where those are to come.
+static const double *inputs_of(bond *b, const lw__flow_part *p)
+{
+    double *u = b->part_u + p->first_u;
+    for (int i = 0; i < p->view.n_u; i++) {
+        lw__flow_feed f = b->m->feeds[p->first_u + i];
+        u[i] = f.kind == LW__FEED_CHANNEL  ? b->u[f.index]
+               : f.kind == LW__FEED_OUTPUT ? b->y[f.index]
+                                           : 0;
+    }
+    return u;
+}
+
+static double linear_output(const lw_plant_view *v, int output, const double *x, const double *u)
+{
+    const double *c = v->c + output * v->n_x, *d = v->d + output * v->n_u;
+    double y = 0;
+    for (int k = 0; k < v->n_x; k++)
+        y += c[k] * x[k];
+    for (int k = 0; k < v->n_u; k++)
+        y += d[k] != 0 ? d[k] * u[k] : 0; // others may be still to come
+    return y;
+}
+
+static int form_outputs(bond *b, double t, const double *x)
+{
+    const lw__flow_group *m = b->m;
+    for (int k = 0; k < m->n_y; k++)
+        b->y[k] = (double)NAN;
+    for (int k = 0; k < m->n_steps; k++) {
+        const lw__flow_part *p = &m->parts[m->steps[k].part];
+        const double *u = inputs_of(b, p);
+        int output = m->steps[k].output;
+        if (output >= 0) {
+            b->y[p->first_y + output] = linear_output(&p->view, output, x + p->first_x, u);
+            continue;
+        }
+        const lw_flow_def *def = p->view.flow;
+        if (def->outputs(def->context, b->begun + t, states_of(b, p, x), u, b->y + p->first_y)) {
+            b->failed = p->name;
+            return 1;
+        }
+        for (int i = 0; i < p->view.n_y; i++) { // whatever it put there
+            int state = b->g->rows[p->first_y + i].state;
+            if (state >= 0)
+                b->y[p->first_y + i] = x[state];
+        }
+    }
+    return 0;
+}
+
+static int part_flow(bond *b, const lw__flow_part *p, double t, const double *x, double *dx)
+{
+    const lw_plant_view *v = &p->view;
+    const double *u = inputs_of(b, p);
+    double *out = dx + p->first_x;
+    if (v->flow != NULL) {
+        if (v->n_x == 0 ||
+            !v->flow->flow(v->flow->context, b->begun + t, states_of(b, p, x), u, out))
+            return 0;
+        b->failed = p->name;
+        return 1;
+    }
+    for (int i = 0; i < v->n_x; i++) {
+        double sum = 0;
+        for (int k = 0; k < v->n_x; k++)
+            sum += v->a[i * v->n_x + k] * x[p->first_x + k];
+        for (int k = 0; k < v->n_u; k++)
+            sum += v->b[i * v->n_u + k] * u[k];
+        out[i] = sum;
+    }
+    return 0;
+}
+
+// ---- the group as a system for the integrator
+
+static int flow_alone(void *context, double t, const double *x, double *dx)
+{
+    bond *b = context;
+    const lw__flow_part *p = b->m->parts;
+    const lw_flow_def *def = p->view.flow;
+    if (!def->flow(def->context, b->begun + t, states_of(b, p, x), b->u, dx))
+        return 0;
+    b->failed = p->name;
+    return 1;
+}
+
+static int flow_of_all(void *context, double t, const double *x, double *dx)
+{
+    bond *b = context;
+    move_sources(b, t);
+    if (form_outputs(b, t, x))
+        return 1;
+    for (int p = 0; p < b->m->n_parts; p++)
+        if (part_flow(b, &b->m->parts[p], t, x, dx))
+            return 1;
+    return 0;
+}
+
+static int switches_of_all(void *context, double t, const double *x, double *g)
+{
+    bond *b = context;
+    move_sources(b, t);
+    if (!b->m->alone && form_outputs(b, t, x))
+        return 1;
+    for (int k = 0; k < b->m->n_parts; k++) {
+        const lw__flow_part *p = &b->m->parts[k];
+        const lw_flow_def *def = p->view.flow;
+        if (def == NULL || def->n_switches == 0)
+            continue;
+        const double *u = inputs_of(b, p);
+        if (def->switches(def->context, b->begun + t, states_of(b, p, x), u, g + p->first_switch)) {
+            b->failed = p->name;
+            return 1;
+        }
+    }
+    return 0;
+}
+
+// A switching has passed through zero: the part it belongs to may jump.
+static int happened_to_part(void *context, double t, double *x, int which, int rising)
+{
+    bond *b = context;
+    const lw__flow_part *p = b->m->parts;
+    while (which >= p->first_switch + (p->view.flow != NULL ? p->view.flow->n_switches : 0))
+        p++;
+    const lw_flow_def *def = p->view.flow;
+    if (def->happened == NULL)
+        return 0;
+    move_sources(b, t);
+    if (!b->m->alone && form_outputs(b, t, x))
+        return 1;
+    double own[PART_STATES];
+    memcpy(own, states_of(b, p, x),
+           sizeof(double) * (size_t)(p->view.n_x + def->n_modes + def->n_switches));
+    if (def->happened(def->context, b->begun + t, own, inputs_of(b, p), which - p->first_switch,
+                      rising)) {
+        b->failed = p->name;
+        return 1;
+    }
+    memcpy(x + p->first_x, own, sizeof(double) * (size_t)p->view.n_x);
+    memcpy(b->modes + p->first_mode, own + p->view.n_x, sizeof(double) * (size_t)def->n_modes);
+    return 0;
+}
+
+// ---- a bond for one lane
+
+// Take n doubles of scratch.
+static double *scratch(double **work, int n)
+{
+    double *here = *work;
+    *work += n;
+    return here;
+}
+
+static void set_courses(bond *b, lw_tick anchor)
+{
+    const lw__group *g = b->g;
+    b->n_courses = g->n_generators;
+    for (int k = 0; k < g->n_generators; k++) {
+        const lw__generator *gen = &g->generators[k];
+        course *c = &b->courses[k];
+        *c = (course){.channel = gen->state, .is_sine = gen->is_sine};
+        if (gen->is_sine) {
+            c->value = gen->def->before;
+            c->turn = lw__source_turn(gen->def);
+            lw__source_sine(gen->def, anchor, &c->sine, &c->cosine);
+        } else {
+            c->value = lw__source_value(gen->def, anchor);
+            c->slope = lw__source_slope(gen->def, anchor);
+        }
+    }
+}
+
+// What the group is at its anchor, copied from the cells of the lane.
+typedef struct motion_copy {
+    bond b;
+    lw__system system;
+    double *x, *memory, *work;
+} motion_copy;
+
+static void open_copy(const lw__lane *s, const lw__group *g, motion_copy *c)
+{
+    const lw__flow_group *m = g->moves;
+    int W = s->width, L = s->lane, n_memory = m->n_memory;
+    double *work = s->motion_work;
+    bond *b = &c->b;
+    *b = (bond){.g = g, .m = m, .begun = lw__seconds(LW__I(g->anchor))};
+    b->u = scratch(&work, m->n_u);
+    b->y = scratch(&work, m->n_y);
+    b->part_u = scratch(&work, m->n_part_u);
+    b->part_x = scratch(&work, PART_STATES);
+    b->modes = scratch(&work, m->n_modes);
+    c->x = scratch(&work, m->n_x);
+    c->memory = scratch(&work, n_memory);
+    c->work = work;
+    for (int k = 0; k < m->n_u; k++)
+        b->u[k] = LW__F(g->u_now + k);
+    for (int k = 0; k < m->n_modes; k++)
+        b->modes[k] = LW__F(m->mode_cells + k);
+    for (int k = 0; k < m->n_x; k++)
+        c->x[k] = LW__F(g->x + k);
+    for (int k = 0; k < n_memory; k++)
+        c->memory[k] = LW__F(m->memory + k);
+    if (g->n_generators > 0)
+        set_courses(b, LW__I(g->anchor));
+    b->sides = lw__steps_sides(&m->system, c->memory);
+    c->system = m->system;
+    c->system.context = b;
+}
+
+static void close_copy(lw__lane *s, const lw__group *g, const motion_copy *c)
+{
+    const lw__flow_group *m = g->moves;
+    int W = s->width, L = s->lane, n_memory = m->n_memory;
+    for (int k = 0; k < m->n_modes; k++)
+        LW__F(m->mode_cells + k) = c->b.modes[k];
+    for (int k = 0; k < m->n_x; k++)
+        LW__F(g->x + k) = c->x[k];
+    for (int k = 0; k < n_memory; k++)
+        LW__F(m->memory + k) = c->memory[k];
+    LW__I(g->anchor) = s->now;
+}
+
+// ---- stretches
+
+typedef struct giver {
+    bond *b;
+    lw_tick anchor;
+    lw__take_stretch take;
+    void *context;
+    const lw__step *step;
+    int has_outputs;  // the outputs at the nodes are formed
+    double *at_nodes; // (degree + 1) x n_y
+} giver;
+
+static double node(int i)
+{
+    static const double nodes[LW__FLOW_DEGREE + 1] = {
+        0,   0.03806023374435663, 0.14644660940672624, 0.30865828381745508,
+        0.5, 0.69134171618254492, 0.85355339059327376, 0.96193976625564337,
+        1};
+    return nodes[i]; // (1 - cos(i pi / 8)) / 2
+}
+
+// Outputs at Chebyshev points of the step.
+static int outputs_at_nodes(giver *v)
+{
+    bond *b = v->b;
+    double x[LW_PLANT_MAX_STATES];
+    for (int i = 0; i <= LW__FLOW_DEGREE; i++) {
+        double t = v->step->t + node(i) * v->step->h;
+        lw__step_value(v->step, node(i), x);
+        move_sources(b, t);
+        if (form_outputs(b, t, x))
+            return 1;
+        memcpy(v->at_nodes + i * b->m->n_y, b->y, sizeof(double) * (size_t)b->m->n_y);
+    }
+    return 0;
+}
+
+// Newton's divided differences, then powers of s.
+static void interpolate(double *d, double *c)
+{
+    enum { N = LW__FLOW_DEGREE };
+    for (int k = 1; k <= N; k++)
+        for (int i = N; i >= k; i--)
+            d[i] = (d[i] - d[i - 1]) / (node(i) - node(i - k));
+    memset(c, 0, sizeof(double) * (N + 1));
+    for (int k = N; k >= 0; k--) {
+        for (int i = N - k; i > 0; i--)
+            c[i] = c[i - 1] - node(k) * c[i];
+        c[0] = d[k] - node(k) * c[0];
+    }
+}
+
+static int row_of_stretch(const lw__stretch *stretch, int row, double *c)
+{
+    giver *v = (giver *)(uintptr_t)stretch->context;
+    const lw__flow_group *m = v->b->m;
+    int state = stretch->group->rows[row].state;
+    for (int k = 0; state >= 0 && k <= LW__STEP_DEGREE; k++)
+        c[k] = v->step->c[k * v->step->n + state];
+    if (state >= 0)
+        return LW__STEP_DEGREE;
+    if (!v->has_outputs && outputs_at_nodes(v))
+        for (int i = 0; i <= LW__FLOW_DEGREE * m->n_y; i++)
+            v->at_nodes[i] = (double)NAN;
+    v->has_outputs = 1;
+    double d[LW__FLOW_DEGREE + 1];
+    for (int i = 0; i <= LW__FLOW_DEGREE; i++)
+        d[i] = v->at_nodes[i * m->n_y + row];
+    interpolate(d, c);
+    return LW__FLOW_DEGREE;
+}
+
+static void give(void *context, const lw__step *step)
+{
+    giver *v = context;
+    v->step = step;
+    v->has_outputs = 0;
+    lw__stretch stretch = {.group = v->b->g,
+                           .anchor = v->anchor,
+                           .begin = step->t,
+                           .end = step->t + step->h,
+                           .row = row_of_stretch,
+                           .context = v};
+    v->take(v->context, &stretch);
+}
+
+// ---- the motion
+
+typedef struct outcome {
+    lw_status status;
+    lw_tick at;
+    const char *text;
+} outcome;
+
+static outcome integrate(const lw__lane *s, motion_copy *c, lw__take_stretch take, void *context)
+{
+    const lw__flow_group *m = c->b.m;
+    int W = s->width, L = s->lane;
+    lw_tick anchor = LW__I(c->b.g->anchor);
+    giver v = {.b = &c->b, .anchor = anchor, .take = take, .context = context, .at_nodes = c->work};
+    lw__steps_end end =
+        lw__steps_advance(&c->system, c->memory, 0, lw__seconds(s->now - anchor), c->x,
+                          take != NULL ? give : NULL, &v, c->work + (LW__FLOW_DEGREE + 1) * m->n_y);
+    return (outcome){end.status, anchor + (lw_tick)floor(end.t * 1e12), end.text};
+}
+
+static const char *name_of(const motion_copy *c)
+{
+    return c->b.failed != NULL ? c->b.failed : c->b.g->name;
+}
+
+static void observe(void *context, const lw__stretch *stretch)
+{
+    lw__lane *s = context;
+    lw__observe(s, stretch, s->now);
+}
+
+static void advance(lw__lane *s, const lw__group *g)
+{
+    int W = s->width, L = s->lane;
+    if (LW__I(g->anchor) == s->now || s->status != LW_OK)
+        return;
+    motion_copy c;
+    open_copy(s, g, &c);
+    outcome o = integrate(s, &c, g->n_watchers > 0 ? observe : NULL, s);
+    if (o.status != LW_OK) {
+        lw__end_lane_at(s, o.at, o.status, name_of(&c), o.text);
+        return;
+    }
+    close_copy(s, g, &c);
+    if (g->n_watchers > 0)
+        lw__observed(s, g, s->now);
+}
+
+static void start(lw__lane *s, const lw__group *g)
+{
+    const lw__flow_group *m = g->moves;
+    int W = s->width, L = s->lane;
+    for (int k = 0; k < m->n_modes; k++)
+        LW__F(m->mode_cells + k) = m->modes[k];
+}
+
+static void changed(lw__lane *s, const lw__group *g)
+{
+    const lw__flow_group *m = g->moves;
+    int W = s->width, L = s->lane;
+    double memory[LW__STEPS_HEAD];
+    for (int k = 0; k < LW__STEPS_HEAD; k++)
+        memory[k] = LW__F(m->memory + k);
+    lw__steps_disturb(memory);
+    for (int k = 0; k < LW__STEPS_HEAD; k++)
+        LW__F(m->memory + k) = memory[k];
+}
+
+static lw_status look(const lw__lane *s, const lw__group *g, lw__take_stretch take_it,
+                      void *context, lw_tick *at, const char **text)
+{
+    motion_copy c;
+    open_copy(s, g, &c);
+    outcome o = integrate(s, &c, take_it, context);
+    *at = o.at;
+    *text = o.text;
+    return o.status;
+}
+
+static double row(const lw__lane *s, const lw__group *g, int number)
+{
+    int W = s->width, L = s->lane;
+    motion_copy c;
+    open_copy(s, g, &c);
+    lw_tick anchor = LW__I(g->anchor);
+    if (anchor != s->now && integrate(s, &c, NULL, NULL).status != LW_OK)
+        return (double)NAN;
+    int state = g->rows[number].state;
+    if (state >= 0)
+        return c.x[state];
+    double since = lw__seconds(s->now - anchor);
+    move_sources(&c.b, since);
+    return form_outputs(&c.b, since, c.x) ? (double)NAN : c.b.y[number];
+}
+
+static void describe(const lw__group *g, void (*say)(void *context, const char *text),
+                     void *context)
+{
+    const lw__flow_group *m = g->moves;
+    char text[400];
+    snprintf(text, sizeof text,
+             "group of \"%s\": %d state%s, %d switching%s, integrated by Dormand-Prince 5(4) with "
+             "its step size carried on, rtol %.3g, atol %.3g; kinks are located",
+             g->name, m->n_x, m->n_x == 1 ? "" : "s", m->n_switches, m->n_switches == 1 ? "" : "s",
+             m->rtol, m->n_x > 0 ? m->atol[0] : 0.0);
+    say(context, text);
+}
+
+const struct lw__motion lw__flow_motion = {.name = "flow",
+                                           .start = start,
+                                           .advance = advance,
+                                           .changed = changed,
+                                           .row = row,
+                                           .look = look,
+                                           .describe = describe};
+
+int lw__flow_prepare(lw__group *g, lw__flow_group *m)
+{
+    const lw__flow_part *p = m->parts;
+    m->alone = m->n_parts == 1 && g->n_generators == 0 && m->n_u == p->view.n_u && p->view.n_x > 0;
+    for (int i = 0; m->alone && i < m->n_u; i++)
+        m->alone = m->feeds[i].kind == LW__FEED_CHANNEL && m->feeds[i].index == i;
+    m->system = (lw__system){.n = m->n_x,
+                             .n_switches = m->n_switches,
+                             .flow = m->alone ? flow_alone : flow_of_all,
+                             .switches = switches_of_all,
+                             .happened = happened_to_part,
+                             .rtol = m->rtol,
+                             .atol = m->atol};
+    m->n_memory = lw__steps_memory(&m->system);
+    return m->n_u + m->n_y + m->n_part_u + PART_STATES + m->n_modes + m->n_x + m->n_memory +
+           (LW__FLOW_DEGREE + 1) * m->n_y + lw__steps_scratch(&m->system);
+}
