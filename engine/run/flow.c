@@ -19,6 +19,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#define MOST_ROUNDS 1000 // switchings that make one another happen at one instant
 #define PART_STATES (LW_PLANT_MAX_STATES + LW_FLOW_MAX_MODES + LW_FLOW_MAX_SWITCHES)
 
 // A moving source in closed form from the anchor on: before + slope t, or before + a sine.
@@ -36,10 +37,11 @@ typedef struct bond {
     double *u;    // n_u channels
     double *y, *part_u, *part_x;
     double *modes;
-    const double *sides; // of the switchings of all parts
+    double *sides, *values; // of the switchings of all parts: -1, 1, 0 on neither; scratch
     int n_courses;
     course courses[LW_PLANT_MAX_PORTS];
     const char *failed; // the part whose function failed
+    int chatters;
 } bond;
 
 // ---- what the parts give
@@ -188,10 +190,28 @@ static int switches_of_all(void *context, double t, const double *x, double *g)
     return 0;
 }
 
-// A switching has passed through zero: the part it belongs to may jump.
-static int happened_to_part(void *context, double t, double *x, int which, int rising)
+static int jacobian_alone(void *context, double t, const double *x, double *j)
 {
     bond *b = context;
+    const lw__flow_part *p = b->m->parts;
+    const lw_flow_def *def = p->view.flow;
+    move_sources(b, t);
+    if (!def->jacobian(def->context, b->begun + t, states_of(b, p, x), inputs_of(b, p), j))
+        return 0;
+    b->failed = p->name;
+    return 1;
+}
+
+// ---- switchings
+
+static int side_of(double g)
+{
+    return g > 0 ? 1 : g < 0 ? -1 : 0;
+}
+
+// A switching is on its new side: the part it belongs to may jump.
+static int call_happened(bond *b, double t, double *x, int which)
+{
     const lw__flow_part *p = b->m->parts;
     while (which >= p->first_switch + (p->view.flow != NULL ? p->view.flow->n_switches : 0))
         p++;
@@ -202,16 +222,58 @@ static int happened_to_part(void *context, double t, double *x, int which, int r
     if (!b->m->alone && form_outputs(b, t, x))
         return 1;
     double own[PART_STATES];
-    memcpy(own, states_of(b, p, x),
-           sizeof(double) * (size_t)(p->view.n_x + def->n_modes + def->n_switches));
+    memcpy(own, states_of(b, p, x), sizeof own[0] * (size_t)(p->view.n_x + def->n_modes));
     if (def->happened(def->context, b->begun + t, own, inputs_of(b, p), which - p->first_switch,
-                      rising)) {
+                      b->sides[which] > 0)) {
         b->failed = p->name;
         return 1;
     }
     memcpy(x + p->first_x, own, sizeof(double) * (size_t)p->view.n_x);
     memcpy(b->modes + p->first_mode, own + p->view.n_x, sizeof(double) * (size_t)def->n_modes);
     return 0;
+}
+
+// Sides as they are at (t, x): those that have changed, by a jump of an input or of a state, happen
+// one after the other. `border`: one that jumped; at zero it is on neither side.
+static int settle(bond *b, double t, double *x, int border)
+{
+    const lw__flow_group *m = b->m;
+    for (int round = 0; round < MOST_ROUNDS; round++) {
+        int which = -1;
+        if (switches_of_all(b, t, x, b->values))
+            return 1;
+        for (int k = 0; k < m->n_switches && which < 0; k++) {
+            int side = side_of(b->values[k]);
+            which = side * b->sides[k] < 0 ? k : -1;
+            if (side != 0 || k == border)
+                b->sides[k] = side;
+        }
+        if (which < 0)
+            return 0;
+        if (call_happened(b, t, x, which))
+            return 1;
+        border = which;
+    }
+    b->chatters = 1;
+    return 1;
+}
+
+// The integrator has come to where one passes through zero.
+static int passed(void *context, double t, double *x, int which, int rising)
+{
+    bond *b = context;
+    double before = b->sides[which];
+    b->sides[which] = rising ? 1 : -1;
+    if (before == 0 || before == b->sides[which])
+        return 0; // it leaves the border, or is known
+    int jumps = 0;
+    for (int p = 0; p < b->m->n_parts; p++)
+        jumps |= b->m->parts[p].view.flow != NULL && b->m->parts[p].view.flow->happened != NULL;
+    if (!jumps)
+        return 0;
+    if (call_happened(b, t, x, which))
+        return 1;
+    return settle(b, t, x, which);
 }
 
 // ---- a bond for one lane
@@ -246,7 +308,7 @@ static void set_courses(bond *b, lw_tick anchor)
 // What the group is at its anchor, copied from the cells of the lane.
 typedef struct motion_copy {
     bond b;
-    lw__system system;
+    lw__ode_system system;
     double *x, *memory, *work;
 } motion_copy;
 
@@ -262,6 +324,8 @@ static void open_copy(const lw__lane *s, const lw__group *g, motion_copy *c)
     b->part_u = scratch(&work, m->n_part_u);
     b->part_x = scratch(&work, PART_STATES);
     b->modes = scratch(&work, m->n_modes);
+    b->sides = scratch(&work, m->n_switches);
+    b->values = scratch(&work, m->n_switches);
     c->x = scratch(&work, m->n_x);
     c->memory = scratch(&work, n_memory);
     c->work = work;
@@ -269,13 +333,14 @@ static void open_copy(const lw__lane *s, const lw__group *g, motion_copy *c)
         b->u[k] = LW__F(g->u_now + k);
     for (int k = 0; k < m->n_modes; k++)
         b->modes[k] = LW__F(m->mode_cells + k);
+    for (int k = 0; k < m->n_switches; k++)
+        b->sides[k] = LW__F(m->side_cells + k);
     for (int k = 0; k < m->n_x; k++)
         c->x[k] = LW__F(g->x + k);
     for (int k = 0; k < n_memory; k++)
         c->memory[k] = LW__F(m->memory + k);
     if (g->n_generators > 0)
         set_courses(b, LW__I(g->anchor));
-    b->sides = lw__steps_sides(&m->system, c->memory);
     c->system = m->system;
     c->system.context = b;
 }
@@ -286,11 +351,14 @@ static void close_copy(lw__lane *s, const lw__group *g, const motion_copy *c)
     int W = s->width, L = s->lane, n_memory = m->n_memory;
     for (int k = 0; k < m->n_modes; k++)
         LW__F(m->mode_cells + k) = c->b.modes[k];
+    for (int k = 0; k < m->n_switches; k++)
+        LW__F(m->side_cells + k) = c->b.sides[k];
     for (int k = 0; k < m->n_x; k++)
         LW__F(g->x + k) = c->x[k];
     for (int k = 0; k < n_memory; k++)
         LW__F(m->memory + k) = c->memory[k];
     LW__I(g->anchor) = s->now;
+    LW__I(m->disturbed) = 0;
 }
 
 // ---- stretches
@@ -300,7 +368,7 @@ typedef struct giver {
     lw_tick anchor;
     lw__take_stretch take;
     void *context;
-    const lw__step *step;
+    const lw__ode_piece *piece;
     int has_outputs;  // the outputs at the nodes are formed
     double *at_nodes; // (degree + 1) x n_y
 } giver;
@@ -320,8 +388,8 @@ static int outputs_at_nodes(giver *v)
     bond *b = v->b;
     double x[LW_PLANT_MAX_STATES];
     for (int i = 0; i <= LW__FLOW_DEGREE; i++) {
-        double t = v->step->t + node(i) * v->step->h;
-        lw__step_value(v->step, node(i), x);
+        double t = v->piece->t + node(i) * v->piece->h;
+        lw__ode_piece_value(v->piece, node(i), x);
         move_sources(b, t);
         if (form_outputs(b, t, x))
             return 1;
@@ -350,10 +418,8 @@ static int row_of_stretch(const lw__stretch *stretch, int row, double *c)
     giver *v = (giver *)(uintptr_t)stretch->context;
     const lw__flow_group *m = v->b->m;
     int state = stretch->group->rows[row].state;
-    for (int k = 0; state >= 0 && k <= LW__STEP_DEGREE; k++)
-        c[k] = v->step->c[k * v->step->n + state];
     if (state >= 0)
-        return LW__STEP_DEGREE;
+        return lw__ode_piece_series(v->piece, state, c);
     if (!v->has_outputs && outputs_at_nodes(v))
         for (int i = 0; i <= LW__FLOW_DEGREE * m->n_y; i++)
             v->at_nodes[i] = (double)NAN;
@@ -365,15 +431,15 @@ static int row_of_stretch(const lw__stretch *stretch, int row, double *c)
     return LW__FLOW_DEGREE;
 }
 
-static void give(void *context, const lw__step *step)
+static void give(void *context, const lw__ode_piece *piece)
 {
     giver *v = context;
-    v->step = step;
+    v->piece = piece;
     v->has_outputs = 0;
     lw__stretch stretch = {.group = v->b->g,
                            .anchor = v->anchor,
-                           .begin = step->t,
-                           .end = step->t + step->h,
+                           .begin = piece->t,
+                           .end = piece->t + piece->h,
                            .row = row_of_stretch,
                            .context = v};
     v->take(v->context, &stretch);
@@ -393,10 +459,19 @@ static outcome integrate(const lw__lane *s, motion_copy *c, lw__take_stretch tak
     int W = s->width, L = s->lane;
     lw_tick anchor = LW__I(c->b.g->anchor);
     giver v = {.b = &c->b, .anchor = anchor, .take = take, .context = context, .at_nodes = c->work};
-    lw__steps_end end =
-        lw__steps_advance(&c->system, c->memory, 0, lw__seconds(s->now - anchor), c->x,
-                          take != NULL ? give : NULL, &v, c->work + (LW__FLOW_DEGREE + 1) * m->n_y);
-    return (outcome){end.status, anchor + (lw_tick)floor(end.t * 1e12), end.text};
+    double span = lw__seconds(s->now - anchor), failed = 0;
+    const char *text = "its flow failed";
+    if (m->n_switches > 0 && LW__I(m->disturbed) != 0 && settle(&c->b, 0, c->x, -1))
+        return (outcome){c->b.chatters ? LW_ERR_CHATTER : LW_ERR_LAW, anchor,
+                         c->b.chatters ? "it switches on and on at one instant"
+                                       : "a function of the plant failed"};
+    lw_status status = lw__ode_advance(&c->system, m->rtol, m->atol, c->memory, 0, span, c->x,
+                                       take != NULL ? give : NULL, &v,
+                                       c->work + (LW__FLOW_DEGREE + 1) * m->n_y, &failed, &text);
+    if (c->b.chatters)
+        return (outcome){LW_ERR_CHATTER, anchor + (lw_tick)floor(failed * 1e12),
+                         "it switches on and on at one instant"};
+    return (outcome){status, anchor + (lw_tick)floor(failed * 1e12), text};
 }
 
 static const char *name_of(const motion_copy *c)
@@ -433,18 +508,14 @@ static void start(lw__lane *s, const lw__group *g)
     int W = s->width, L = s->lane;
     for (int k = 0; k < m->n_modes; k++)
         LW__F(m->mode_cells + k) = m->modes[k];
+    LW__I(m->disturbed) = 1; // the sides are to be taken
 }
 
 static void changed(lw__lane *s, const lw__group *g)
 {
     const lw__flow_group *m = g->moves;
     int W = s->width, L = s->lane;
-    double memory[LW__STEPS_HEAD];
-    for (int k = 0; k < LW__STEPS_HEAD; k++)
-        memory[k] = LW__F(m->memory + k);
-    lw__steps_disturb(memory);
-    for (int k = 0; k < LW__STEPS_HEAD; k++)
-        LW__F(m->memory + k) = memory[k];
+    LW__I(m->disturbed) = 1;
 }
 
 static lw_status look(const lw__lane *s, const lw__group *g, lw__take_stretch take_it,
@@ -501,14 +572,14 @@ int lw__flow_prepare(lw__group *g, lw__flow_group *m)
     m->alone = m->n_parts == 1 && g->n_generators == 0 && m->n_u == p->view.n_u && p->view.n_x > 0;
     for (int i = 0; m->alone && i < m->n_u; i++)
         m->alone = m->feeds[i].kind == LW__FEED_CHANNEL && m->feeds[i].index == i;
-    m->system = (lw__system){.n = m->n_x,
-                             .n_switches = m->n_switches,
-                             .flow = m->alone ? flow_alone : flow_of_all,
-                             .switches = switches_of_all,
-                             .happened = happened_to_part,
-                             .rtol = m->rtol,
-                             .atol = m->atol};
-    m->n_memory = lw__steps_memory(&m->system);
-    return m->n_u + m->n_y + m->n_part_u + PART_STATES + m->n_modes + m->n_x + m->n_memory +
-           (LW__FLOW_DEGREE + 1) * m->n_y + lw__steps_scratch(&m->system);
+    int has_jacobian = m->alone && p->view.flow->jacobian != NULL;
+    m->system = (lw__ode_system){.n = m->n_x,
+                                 .n_switches = m->n_switches,
+                                 .flow = m->alone ? flow_alone : flow_of_all,
+                                 .switches = switches_of_all,
+                                 .jacobian = has_jacobian ? jacobian_alone : NULL,
+                                 .happened = passed};
+    m->n_memory = lw__ode_memory_size(m->n_x);
+    return m->n_u + m->n_y + m->n_part_u + PART_STATES + m->n_modes + 2 * m->n_switches + m->n_x +
+           m->n_memory + (LW__FLOW_DEGREE + 1) * m->n_y + lw__ode_work_size(m->n_x, m->n_switches);
 }

@@ -2,8 +2,8 @@
 #ifndef LATEWOOD_RUN_FLOW_H
 #define LATEWOOD_RUN_FLOW_H
 
+#include "ode/ode.h"
 #include "run/motion.h"
-#include "run/steps.h"
 
 #define LW__FLOW_DEGREE 8 // of the polynomial through an output over a step
 
@@ -38,11 +38,12 @@ typedef struct lw__flow_group {
     const lw__flow_step *steps;
     int alone; // one flow, its inputs are the channels in order, nothing moves between events
     double rtol;
-    const double *atol;  // n_x
-    const double *modes; // n_modes, at time zero
-    lw__system system;   // without its context
+    const double *atol;    // n_x
+    const double *modes;   // n_modes, at time zero
+    lw__ode_system system; // without its context
     // cells
-    int mode_cells, memory, n_memory;
+    int mode_cells, side_cells, memory, n_memory;
+    int disturbed; // integer cell: an input has changed since the anchor came to where it is
 } lw__flow_group;
 
 extern const struct lw__motion lw__flow_motion;
