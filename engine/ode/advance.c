@@ -13,8 +13,12 @@
 
 int lw__ode_memory_size(int n)
 {
-    (void)n;
-    return (int)(sizeof(lw__ode_memory) / sizeof(double));
+    return (int)(sizeof(lw__ode_memory) / sizeof(double)) + n;
+}
+
+void lw__ode_disturb(double *memory)
+{
+    ((lw__ode_memory *)memory)->slope_known = 0;
 }
 
 static int method_work(int n)
@@ -140,6 +144,16 @@ static int look_inside(course *c, double h, double s, double *g)
     return look_at_switches(c, c->o.t + s * h, c->x_mid, g);
 }
 
+// Whether no function can well have been at zero within the step: each is farther from it, at both
+// ends, than it has moved.
+static int far_from_zero(const course *c)
+{
+    for (int k = 0; k < c->n_g; k++)
+        if (!(fmin(fabs(c->g[k]), fabs(c->g_new[k])) > fabs(c->g_new[k] - c->g[k])))
+            return 0;
+    return 1;
+}
+
 // The share of the step by which the first switching has happened; 1 where none does before the
 // end. g_new holds the values at the end. Bisection on whether anything changed, which needs no
 // continuity; the last half digit by regula falsi would be lost in rounding anyway.
@@ -147,6 +161,8 @@ static int first_switching(course *c, double h, double *share)
 {
     double lo = 0, hi = 1;
     *share = 1;
+    if (!any_changed(c, c->g_new) && far_from_zero(c))
+        return 0;
     make_dense(c, h);
     if (look_inside(c, h, 0.5, c->g_mid))
         return 1;
@@ -341,9 +357,15 @@ lw_status lw__ode_advance(const lw__ode_system *s, double rtol, const double *at
     c.since = c.largest + c.n_g;
     c.o.k = c.since + c.n_g;
     memset(c.largest, 0, sizeof(double) * 2 * (size_t)c.n_g);
+    double *slope = memory + sizeof(lw__ode_memory) / sizeof(double);
+    if ((c.o.f_known = c.m->slope_known != 0))
+        memcpy(c.o.f, slope, sizeof(double) * (size_t)n);
     lw_status status = look_at_switches(&c, t0, x, c.g)
                            ? fail(&c, LW_ERR_LAW, "a function of the plant failed")
                            : go(&c);
+    c.m->slope_known = status == LW_OK && c.o.f_known;
+    if (c.m->slope_known != 0)
+        memcpy(slope, c.o.f, sizeof(double) * (size_t)n);
     if (status != LW_OK) {
         *t_failed = c.o.t;
         *text = c.text;

@@ -16,8 +16,8 @@
 // Workload: two to four calls a period of a loop, each a step or two; up to 64 states.
 //
 // Invariants
-// 1. No step passes t1. What is carried between calls (the natural step size and the method) is in
-//    `memory` alone, and a step shortened by t1 does not shorten it.
+// 1. No step passes t1. What is carried between calls (the natural step size, the method, the flow
+//    at the end) is in `memory` alone, and a step shortened by t1 does not shorten it.
 // 2. Whether there is a sink changes no bit of x or memory.
 // 3. Nothing is allocated; nothing of the C library's elementary functions is called.
 #ifndef LATEWOOD_ODE_ODE_H
@@ -53,6 +53,9 @@ typedef void (*lw__ode_sink)(void *context, const lw__ode_piece *piece);
 
 // Doubles of memory to be kept between calls, zero at first, and of scratch.
 int lw__ode_memory_size(int n);
+// The flow at the end of the last call, kept for the next one, no longer holds: an input or the
+// state has changed.
+void lw__ode_disturb(double *memory);
 int lw__ode_work_size(int n, int n_switches);
 
 // All states at s in [0, 1]; the coefficients of one state, and their degree.

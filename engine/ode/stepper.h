@@ -13,6 +13,7 @@ typedef struct lw__ode_memory {
     double h;     // natural size of the next step; 0: not known
     double stiff; // 1: the stiff method is at work
     double suspicion;
+    double slope_known; // 1: the flow at the end of the last call stands behind this
 } lw__ode_memory;
 
 typedef struct lw__ode_state {

@@ -516,6 +516,11 @@ static void changed(lw__lane *s, const lw__group *g)
     const lw__flow_group *m = g->moves;
     int W = s->width, L = s->lane;
     LW__I(m->disturbed) = 1;
+    for (int k = 0; k < m->n_memory; k++) // few: the flow at the anchor is another one now
+        s->motion_work[k] = LW__F(m->memory + k);
+    lw__ode_disturb(s->motion_work);
+    for (int k = 0; k < m->n_memory; k++)
+        LW__F(m->memory + k) = s->motion_work[k];
 }
 
 static lw_status look(const lw__lane *s, const lw__group *g, lw__take_stretch take_it,
