@@ -206,6 +206,12 @@ static void accept(course *c, double h)
     if (c->sink != NULL) {
         make_dense(c, h);
         lw__ode_piece p = {o->t, h, o->n, o->degree, o->c};
+        if (o->degree == 4) {
+            // a flow that fails at a point between is none of the run's: the step had it not
+            lw_status failed = o->failed;
+            p.degree = lw__ode_explicit_refine(o, h) == 0 ? 5 : 4;
+            o->failed = failed;
+        }
         c->sink(c->context, &p);
     }
     o->t += h;
@@ -249,9 +255,10 @@ static lw_status one_step(course *c, int *switched)
         if (c->n_g > 0 &&
             (look_at_switches(c, o->t + h, o->x_new, c->g_new) || first_switching(c, h, &share)))
             return fail(c, LW_ERR_LAW, "a function of the plant failed");
-        if (share < 1 && !cut && share * h > least_step(c)) {
+        double first = fmax(share * h, least_step(c));
+        if (first < h && !cut) {
             cut = 1; // again, to end there
-            next = share * h;
+            next = first;
             c->m->stiff = was_stiff;
             continue;
         }

@@ -6,7 +6,7 @@
 
 #include <math.h>
 
-#define LW__ODE_DEGREE 4
+#define LW__ODE_DEGREE 5
 
 // Carried between calls.
 typedef struct lw__ode_memory {
@@ -47,6 +47,8 @@ lw__ode_outcome lw__ode_stiff(lw__ode_state *o, lw__ode_memory *m, double h, dou
 // Dense output of the step just accepted, into o->c.
 void lw__ode_explicit_dense(lw__ode_state *o, double h);
 void lw__ode_stiff_dense(lw__ode_state *o, double h);
+// The same of order 5, from that of order 4 in o->c, for two flows more; nonzero: the flow failed.
+int lw__ode_explicit_refine(lw__ode_state *o, double h);
 
 int lw__ode_explicit_work(int n);
 int lw__ode_stiff_work(int n);
