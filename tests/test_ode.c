@@ -14,7 +14,7 @@ typedef struct result {
     double at;
     const char *text;
     long n_evals;
-    double memory[8];
+    double memory[64];
 } result;
 
 typedef struct counted {
@@ -50,7 +50,7 @@ static result integrate(const problem *p, double rtol, double atol, int pieces, 
         absolute[i] = rtol * atol;
     memcpy(r.x, p->start, sizeof r.x);
     double *work = calloc((size_t)lw__ode_work_size(s.n, s.n_switches), sizeof(double));
-    ck_assert_int_le(lw__ode_memory_size(s.n), 8);
+    ck_assert_int_le(lw__ode_memory_size(s.n), 64);
     for (int k = 0; k < pieces && r.status == LW_OK; k++)
         r.status =
             lw__ode_advance(&s, rtol, absolute, r.memory, p->end * k / pieces,
@@ -310,7 +310,7 @@ START_TEST(impacts_come_at_their_instants)
                         .switches = floor_below,
                         .happened = bounce,
                         .context = &b};
-    double x[2] = {1, 0}, memory[8] = {0}, atol[2] = {1e-14, 1e-14}, work[400], failed;
+    double x[2] = {1, 0}, memory[64] = {0}, atol[2] = {1e-14, 1e-14}, work[400], failed;
     const char *text;
     ck_assert_int_le(lw__ode_work_size(2, 1), 400);
     ck_assert(lw__ode_advance(&s, 1e-12, atol, memory, 0, 3.5, x, NULL, NULL, work, &failed,
@@ -335,7 +335,7 @@ START_TEST(impacts_without_end_are_said)
                         .switches = floor_below,
                         .happened = bounce,
                         .context = &b};
-    double x[2] = {1, 0}, memory[8] = {0}, atol[2] = {1e-14, 1e-14}, work[400], failed = 0;
+    double x[2] = {1, 0}, memory[64] = {0}, atol[2] = {1e-14, 1e-14}, work[400], failed = 0;
     const char *text = "";
     lw_status status =
         lw__ode_advance(&s, 1e-12, atol, memory, 0, 10, x, NULL, NULL, work, &failed, &text);
