@@ -150,7 +150,7 @@ static void make_class(lua_State *L, const char *name, const luaL_Reg *methods,
 
 // ---- the parts written in Lua
 
-static const char *const parts[] = {"study", "spread", "sweep", NULL};
+static const char *const parts[] = {"study", "spread", "sweep", "worst_phase", NULL};
 
 static int is_part(const char *name)
 {

@@ -32,8 +32,8 @@
     X(core) X(task) X(bus) X(frame) X(comparator) X(trip)                                          \
     X(freeze) X(describe) X(slices) X(start) X(run) X(close)
 #define LW__LUA_RUN_METHODS(X)                                                                     \
-    X(advance) X(finish) X(restart) X(status) X(now) X(instants) X(value) X(metric) X(metrics)     \
-    X(row) X(record) X(csv) X(json) X(block) X(close)
+    X(advance) X(drain) X(finish) X(restart) X(status) X(now) X(instants) X(value) X(metric)       \
+    X(metrics) X(row) X(record) X(csv) X(json) X(block) X(close)
 // clang-format on
 
 #define LW__LUA_DECLARE_PLANT(name) int lw__lua_plant_##name(lua_State *L);

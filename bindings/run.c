@@ -189,7 +189,8 @@ lw__lua_present *lw__lua_present_of(lua_State *L)
     return present;
 }
 
-// The run at stack index `run` goes on to `until`; a function's failure is kept with it.
+// The run at stack index `run` goes on to `until` (LW_NEVER: until its tasks have finished, without
+// further releases); a function's failure is kept with it.
 static lw_status advance(lua_State *L, int run, lw_tick until)
 {
     lw__lua_run *box = lua_touserdata(L, run);
@@ -203,7 +204,8 @@ static lw_status advance(lua_State *L, int run, lw_tick until)
     box->busy = 1;
     present->run = box;
     present->depth++;
-    lw_status status = lw_run_advance(box->run, until);
+    lw_status status =
+        until == LW_NEVER ? lw_run_drain(box->run) : lw_run_advance(box->run, until);
     present->depth--;
     present->run = before;
     box->busy = 0;
@@ -293,6 +295,18 @@ int lw__lua_run_advance(lua_State *L)
         lw__lua_bad(&r, "the instant is %s, and the run is past it", shown);
     }
     if (advance(L, 1, until) != LW_OK)
+        return push_status(L, box);
+    lua_settop(L, 1);
+    return 1;
+}
+
+int lw__lua_run_drain(lua_State *L)
+{
+    lw__lua_run *box = lw__lua_run_self(L);
+    refuse_busy(L, box, "drain");
+    if (box->finished)
+        lw__lua_fail(L, "the run is finished");
+    if (advance(L, 1, LW_NEVER) != LW_OK)
         return push_status(L, box);
     lua_settop(L, 1);
     return 1;

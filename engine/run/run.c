@@ -229,6 +229,20 @@ lw_status lw_run_advance(lw_run *run, lw_tick until)
     return status;
 }
 
+lw_status lw_run_drain(lw_run *run)
+{
+    lw_status status = LW_OK;
+    if (run->finished)
+        return LW_ERR_TIME;
+    for (int k = 0; k < run->width; k++) {
+        lw__lane *s = &run->lanes[k];
+        run->instants[k] += lw__lane_drain(s);
+        if (s->status != LW_OK)
+            status = LW_STOPPED;
+    }
+    return status;
+}
+
 void lw_run_finish(lw_run *run)
 {
     if (run->finished)

@@ -3,6 +3,7 @@
 
 #include "run/schedule.h"
 
+#include "run/driver.h"
 #include "run/record.h"
 
 #include <math.h>
@@ -77,6 +78,53 @@ void lw__cores_start(lw__lane *s)
 {
     for (int i = 0; i < s->z->n_cores; i++)
         start_core(s, &s->z->cores[i]);
+}
+
+// ---- draining
+
+static void close_core(lw__lane *s, const lw__core *c)
+{
+    int W = s->width, L = s->lane;
+    LW__I(c->closed) = s->now;
+    for (int r = 0; r < c->n_tasks; r++) {
+        const lw__task *t = c->tasks[r];
+        int by_time = t->release == LW__RELEASE_CLOCK || t->release == LW__RELEASE_ARRIVALS;
+        if (by_time && LW__I(t->nominal) > s->now)
+            LW__I(c->due + r) = LW_NEVER;
+    }
+}
+
+// The next instant at which this core can go on with a job; LW_NEVER: it has none to do.
+static lw_tick core_goes_on(const lw__lane *s, const lw__core *c)
+{
+    int W = s->width, L = s->lane;
+    lw_tick next = LW__I(s->z->due + c->point_timer);
+    int pending = LW__I(c->ready) != 0;
+    for (int r = 0; r < c->n_tasks; r++) {
+        next = LW__I(c->due + r) < next ? LW__I(c->due + r) : next;
+        pending |= LW__I(c->due + r) != LW_NEVER;
+    }
+    if (pending && LW__I(c->turn_due) < next)
+        next = LW__I(c->turn_due); // a job may wait for its next slot
+    return pending ? next : LW_NEVER;
+}
+
+int64_t lw__lane_drain(lw__lane *s)
+{
+    int64_t handled = 0;
+    for (int i = 0; i < s->z->n_cores; i++)
+        close_core(s, &s->z->cores[i]);
+    while (s->status == LW_OK) {
+        lw_tick next = LW_NEVER;
+        for (int i = 0; i < s->z->n_cores; i++) {
+            lw_tick t = core_goes_on(s, &s->z->cores[i]);
+            next = t < next ? t : next;
+        }
+        if (next == LW_NEVER)
+            break;
+        handled += lw__drive_lane(s, next);
+    }
+    return handled;
 }
 
 // ---- rows

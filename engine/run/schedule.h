@@ -144,6 +144,8 @@ typedef struct lw__core {
 
 // Put cores and tasks at time zero.
 void lw__cores_start(lw__lane *s);
+// Close releases at the present instant and go on until no job is left; instants handled.
+int64_t lw__lane_drain(lw__lane *s);
 // A job that ended, for record and metrics.
 typedef struct lw__job_end {
     int64_t job;

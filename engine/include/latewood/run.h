@@ -71,6 +71,10 @@ LW_API void lw_run_restart(lw_run *run, uint64_t seed, uint64_t first_run);
 //   returns  LW_OK       all lanes reached `until`
 //            LW_STOPPED  some lanes ended earlier; lw_run_status tells which and why
 LW_API lw_status lw_run_advance(lw_run *run, lw_tick until);
+// No releases of tasks from now on; go on in each lane until every job has finished. Jobs that
+// finishing jobs release are finished as well. Lanes end at different instants.
+//   returns  as lw_run_advance; LW_STOPPED also where a job can never finish
+LW_API lw_status lw_run_drain(lw_run *run);
 // Close metrics' windows at the present time. Further advancing is an error.
 LW_API void lw_run_finish(lw_run *run);
 
