@@ -92,6 +92,7 @@ static const lw__lua_field metric_fields[] = {
     OPTIONAL(lw_metric_def, low, "low", FIELD_NUMBER, "1"),
     OPTIONAL(lw_metric_def, high, "high", FIELD_NUMBER, "1"),
     OPTIONAL(lw_metric_def, share, "share", FIELD_NUMBER, "1"),
+    OPTIONAL(lw_metric_def, window, "window", FIELD_LONG, NULL),
     OPTIONAL(lw_metric_def, from, "from", FIELD_TICK, NULL),
     OPTIONAL(lw_metric_def, until, "until", FIELD_TICK, NULL),
     OPTIONAL(lw_metric_def, until, "to", FIELD_TICK, NULL),
@@ -101,12 +102,12 @@ static const lw__lua_field metric_fields[] = {
 static lw_metric_kind read_kind(const lw__lua_reader *r, const char *name)
 {
     lua_State *L = r->L;
-    const char *words[64];
+    const char *words[256];
     int n = 0;
     const char *wanted = name;
     if (lua_rawgeti(L, r->table, 2) != LUA_TNIL)
         wanted = lw__lua_field_text(r, "its kind (the second element)", -1);
-    for (; n < lw_metric_count() && n < 64; n++) {
+    for (; n < lw_metric_count() && n < 256; n++) {
         words[n] = lw_metric_words((lw_metric_kind)n);
         if (strcmp(words[n], wanted) == 0)
             return (lw_metric_kind)n;

@@ -167,7 +167,7 @@ static lw_watch *observe(extras x)
     OK(lw_watch_new(&watch, e));
     if (x.records)
         add_records(watch);
-    for (int kind = 0; x.metrics && kind < lw_metric_count(); kind++) {
+    for (int kind = 0; x.metrics && kind <= LW_METRIC_MISSED; kind++) {
         static const char *const of[] = {"tube.height", "tube.speed", "motor.torque"};
         lw_metric_def m = lw_metric_default((lw_metric_kind)kind);
         int of_loop = strstr(lw_metric_words(m.kind), "latency") != NULL ||

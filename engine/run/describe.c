@@ -1,7 +1,7 @@
 // The frozen rig in words: what it is made of, defaults that were taken, roundings, who sees what
 // at one tick, how each group is propagated.
 
-#include "run/frozen.h"
+#include "run/describe.h"
 
 #include "io/source.h"
 #include "run/comparator.h"
@@ -13,60 +13,6 @@
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
-
-typedef struct writer {
-    int (*line)(void *context, const char *text);
-    void *context;
-    int stopped;
-} writer;
-
-static void say(writer *w, const char *format, ...) LW_PRINTF(2, 3);
-static void say(writer *w, const char *format, ...)
-{
-    char text[700];
-    va_list arguments;
-    va_start(arguments, format);
-    vsnprintf(text, sizeof text, format, arguments);
-    va_end(arguments);
-    if (!w->stopped)
-        w->stopped = w->line(w->context, text);
-}
-
-static void say_plain(void *context, const char *text)
-{
-    say(context, "%s", text);
-}
-
-// A time in words: "50 us".
-typedef struct words {
-    char text[64];
-} words;
-
-static words time_words(lw_tick t)
-{
-    words w;
-    if (t == LW_NEVER)
-        snprintf(w.text, sizeof w.text, "never");
-    else
-        lw_tick_format(t, w.text);
-    return w;
-}
-
-static words period_words(lw_period p)
-{
-    words w;
-    if (p.den == 1)
-        return time_words(p.num);
-    snprintf(w.text, sizeof w.text, "%.9g Hz", 1e12 * (double)p.den / (double)p.num);
-    return w;
-}
-
-static words number_words(double v)
-{
-    words w;
-    lw_double_format(v, w.text);
-    return w;
-}
 
 // ---- parts
 
@@ -323,6 +269,7 @@ void lw_frozen_describe(const lw_frozen *frozen, int (*line)(void *context, cons
     describe_dacs(&w, frozen);
     describe_loops(&w, frozen);
     lw__events_describe(frozen, say_plain, &w);
+    lw__describe_cpu(&w, frozen);
     describe_groups(&w, frozen);
     describe_roundings(&w, frozen);
     describe_pairs(&w, frozen);

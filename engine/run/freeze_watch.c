@@ -2,6 +2,7 @@
 
 #include "run/comparator.h"
 #include "run/freezer.h"
+#include "run/job_metric.h"
 #include "run/schedule.h"
 
 #include "io/source.h"
@@ -76,8 +77,8 @@ static lw_status loop_metric(lw__freezer *w, lw__metric *m)
         if (strcmp(z->loops[i].item->def.name, m->def.of) == 0)
             m->loop = i;
     if (m->loop < 0)
-        return lw__fail_at(m->def.origin, w->err, LW_ERR_NAME, "metric \"%s\": of: no loop \"%s\"",
-                           m->def.name, m->def.of);
+        return lw__fail_at(m->def.origin, w->err, LW_ERR_NAME,
+                           "metric \"%s\": of: no loop or task \"%s\"", m->def.name, m->def.of);
     lw__loop *l = &z->loops[m->loop];
     l->observed = 1;
     double lo = lw_tick_seconds(l->latency.lowest), hi = lw_tick_seconds(l->latency.highest);
@@ -369,7 +370,10 @@ lw_status lw__freeze_watch(lw__freezer *w)
         m->def.name = texts[0];
         m->def.of = texts[1];
         m->def.against = texts[2];
-        LW__TRY(of_loop(m->def.kind) ? loop_metric(w, m) : track_metric(w, m));
+        m->task = m->dac = -1;
+        LW__TRY(lw__job_metric_concerns(w, &m->def) ? lw__job_metric_freeze(w, m)
+                : of_loop(m->def.kind)              ? loop_metric(w, m)
+                                                    : track_metric(w, m));
         z->n_metrics = i + 1;
     }
     return list_watchers(w);

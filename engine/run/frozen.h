@@ -182,6 +182,7 @@ typedef struct lw__dac {
     lw__ladder ladder;
     double slew; // inf: none
     int plain;   // neither slew nor dead band
+    int gaps;    // a metric wants the time between outputs
     lw__drives drives;
     int newest;
     lw__set observers;

@@ -219,19 +219,21 @@ LW__INLINE void task_read(LW__CONTEXT, const lw__task *t, int64_t slot)
     lw__tell(p, &l->observers, N);
 }
 
-// `out`: cell of the first output.
-LW__INLINE void task_write(LW__CONTEXT, const lw__task *t, int64_t out, int64_t job)
+// `out`: cell of the first output. 0: nothing was written.
+LW__INLINE int task_write(LW__CONTEXT, const lw__task *t, int64_t out, int64_t job)
 {
     const lw__loop *l = &t->law;
     if (LW__I(l->stepped_at) < 0)
-        return;
+        return 0;
     if (t->lost > 0 &&
         lw_draw_uniform((lw_address){s->seed, s->run, t->lost_stream, (uint32_t)job}) < t->lost) {
         LW__I(l->n_lost) += 1;
-        return;
+        return 0;
     }
-    LW__I(t->written) = s->now;
+    if (t->observed)
+        lw__task_wrote(s, t);
     write_outputs(LW__HERE, l, out, job);
+    return 1;
 }
 
 LW__INLINE void op_logical(LW__CONTEXT, const lw__task *t)
@@ -595,8 +597,10 @@ LW__INLINE int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
     int r = t->rank;
     switch (point->kind) {
     case LW__POINT_WRITE:
-        task_write(LW__HERE, t, t->reads_at_release ? t->outs + slot * t->law.n_out : t->law.outs,
-                   LW__I(t->ring_job + slot));
+        if (task_write(LW__HERE, t,
+                       t->reads_at_release ? t->outs + slot * t->law.n_out : t->law.outs,
+                       LW__I(t->ring_job + slot)))
+            LW__I(t->written) = s->now;
         return 1;
     case LW__POINT_UNLOCK:
         unlock(LW__HERE, c, point->resource);

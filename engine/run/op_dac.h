@@ -62,6 +62,8 @@ LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked)
     if (d->log >= 0)
         lw__table_add(s, d->log,
                       (double[]){lw__seconds(s->now), asked, limited, v, code, limited != asked});
+    if (d->gaps)
+        lw__dac_changed(s, d);
     lw__tell(p, &d->observers, N);
     drive(LW__HERE, &d->drives, v);
 }

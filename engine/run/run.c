@@ -7,6 +7,7 @@
 
 #include "run/comparator.h"
 #include "run/driver.h"
+#include "run/job_metric.h"
 #include "run/motion.h"
 #include "run/record.h"
 #include "run/schedule.h"
@@ -101,7 +102,9 @@ static void start_loops(lw__lane *s, int W, int L)
     for (int i = 0; i < z->n_tracks; i++)
         LW__I(z->due + z->tracks[i].timer) = z->tracks[i].from;
     for (int i = 0; i < z->n_metrics; i++)
-        if (z->metrics[i].def.kind == LW_METRIC_RISE)
+        if (z->metrics[i].task >= 0 || z->metrics[i].dac >= 0)
+            lw__job_metric_start(s, &z->metrics[i]);
+        else if (z->metrics[i].def.kind == LW_METRIC_RISE)
             LW__F(z->metrics[i].own) = LW__F(z->metrics[i].own + 1) = -1;
 }
 

@@ -157,6 +157,8 @@ void lw__job_ended(lw__lane *s, const lw__task *t, const lw__job_end *e)
 {
     if (t->log >= 0)
         log_job(s, t, e);
+    if (t->observed)
+        lw__job_observed(s, t, e);
 }
 
 void lw__stretch_ended(lw__lane *s, const lw__core *c, const lw__task *t, lw_tick from,

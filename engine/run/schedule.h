@@ -154,6 +154,9 @@ typedef struct lw__job_end {
     lw_job_outcome outcome;
 } lw__job_end;
 void lw__job_ended(lw__lane *s, const lw__task *t, const lw__job_end *e);
+void lw__job_observed(lw__lane *s, const lw__task *t, const lw__job_end *e);
+// A task that is observed has written its outputs.
+void lw__task_wrote(lw__lane *s, const lw__task *t);
 // A stretch of a core's time; task NULL: none.
 void lw__stretch_ended(lw__lane *s, const lw__core *c, const lw__task *t, lw_tick from,
                        lw_tick until, lw_stretch_kind kind, lw_stretch_end ends);

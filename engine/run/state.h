@@ -117,6 +117,8 @@ void lw__lane_start(lw__lane *s);
 // State and present output of a group or signal, for readers that change nothing.
 void lw__group_state(const lw__lane *s, int group, double *x, double *u);
 double lw__signal_value(const lw__lane *s, const lw__reference *r);
+// An output of a dac that has `gaps`.
+void lw__dac_changed(lw__lane *s, const lw__dac *d);
 // One row to a record; a full record ends the lane.
 void lw__table_add(lw__lane *s, int record, const double *row);
 

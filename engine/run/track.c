@@ -13,6 +13,8 @@
 
 #include "run/track.h"
 
+#include "run/job_metric.h"
+
 #include "io/source.h"
 #include "run/poly.h"
 #include "run/series.h"
@@ -516,5 +518,7 @@ static double track_metric(const lw__lane *s, const lw__metric *m)
 double lw__metric_value(const lw__lane *s, int metric)
 {
     const lw__metric *m = &s->z->metrics[metric];
+    if (m->task >= 0 || m->dac >= 0)
+        return lw__job_metric_value(s, m);
     return m->track < 0 ? loop_metric(s, m) : track_metric(s, m);
 }

@@ -58,12 +58,13 @@ typedef struct lw__track {
 // A metric: a reading of a track, or of a loop's latencies.
 typedef struct lw__metric {
     lw_metric_def def;
-    int track; // -1: of a loop
+    int track; // -1: of a loop, or of jobs
     int loop;
-    double lo, per_cell; // histogram of latencies: cells over the timing's support
-    int own;             // doubles: settling: last instant outside, outside at the end;
-                         // rise: instants of low and high; latencies: sum, count, largest
-    int cells;           // integers: histogram
+    int task, dac, job_time; // of jobs (job_metric.h), -1
+    double lo, per_cell;     // histogram of latencies: cells over the timing's support
+    int own;                 // doubles: settling: last instant outside, outside at the end;
+                             // rise: instants of low and high; latencies: sum, count, largest
+    int cells;               // integers: histogram
 } lw__metric;
 
 #define LW__CELLS 1000

@@ -126,6 +126,7 @@ lw_metric_def lw_metric_default(lw_metric_kind kind)
                            .low = 0.1,
                            .high = 0.9,
                            .share = 0.99,
+                           .window = 10,
                            .from = 0,
                            .until = LW_NEVER};
 }

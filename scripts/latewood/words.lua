@@ -24,6 +24,19 @@ words.units = { overshoot = "1", lost = "1", missed = "1", ["settling time"] = "
   ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
   ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
 
+-- Times and counts of a task's jobs.
+for _, time in ipairs { "release lateness", "start delay", "response", "execution",
+                        "read to write", "data age" } do
+  for _, statistic in ipairs { "mean", "maximum", "percentile" } do
+    words.units[time .. " " .. statistic] = "s"
+  end
+end
+words.units["gap between outputs"], words.units["gap between outputs mean"] = "s", "s"
+for _, count in ipairs { "jobs", "skipped jobs", "aborted jobs", "misses in a row",
+                         "misses within a window" } do
+  words.units[count] = "1"
+end
+
 local never = { ["settling time"] = "never", ["rise time"] = "never" }
 
 -- A metric's value as a reader expects it: shares in percent, times with a unit.

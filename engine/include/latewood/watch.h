@@ -38,6 +38,41 @@ LW_API lw_status lw_watch_record(lw_watch *watch, const lw_record_def *def, lw_e
 LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char *name,
                                  int64_t limit, lw_error *err);
 
+// Times of the jobs of a task, each with mean, maximum and percentile.
+#define LW_JOB_TIMES(X)                                                                            \
+    X(LATENESS, "release lateness") /* nominal to actual release */                                \
+    X(START, "start delay")         /* nominal release to start */                                 \
+    X(RESPONSE, "response")         /* nominal release to finish */                                \
+    X(EXECUTION, "execution")                                                                      \
+    X(READ_TO_WRITE, "read to write")                                                              \
+    X(DATA_AGE, "data age") /* sample to read */
+#define LW_JOB_METRICS(X)                                                                          \
+    X(LATENESS_MEAN, "release lateness mean")                                                      \
+    X(LATENESS_MAXIMUM, "release lateness maximum")                                                \
+    X(LATENESS_PERCENTILE, "release lateness percentile")                                          \
+    X(START_MEAN, "start delay mean")                                                              \
+    X(START_MAXIMUM, "start delay maximum")                                                        \
+    X(START_PERCENTILE, "start delay percentile")                                                  \
+    X(RESPONSE_MEAN, "response mean")                                                              \
+    X(RESPONSE_MAXIMUM, "response maximum")                                                        \
+    X(RESPONSE_PERCENTILE, "response percentile")                                                  \
+    X(EXECUTION_MEAN, "execution mean")                                                            \
+    X(EXECUTION_MAXIMUM, "execution maximum")                                                      \
+    X(EXECUTION_PERCENTILE, "execution percentile")                                                \
+    X(READ_TO_WRITE_MEAN, "read to write mean")                                                    \
+    X(READ_TO_WRITE_MAXIMUM, "read to write maximum")                                              \
+    X(READ_TO_WRITE_PERCENTILE, "read to write percentile")                                        \
+    X(DATA_AGE_MEAN, "data age mean")                                                              \
+    X(DATA_AGE_MAXIMUM, "data age maximum")                                                        \
+    X(DATA_AGE_PERCENTILE, "data age percentile")                                                  \
+    X(GAP, "gap between outputs") /* the largest, of a task's writes or a dac's fresh outputs */   \
+    X(GAP_MEAN, "gap between outputs mean")                                                        \
+    X(JOBS, "jobs") /* finished */                                                                 \
+    X(SKIPPED, "skipped jobs")                                                                     \
+    X(ABORTED, "aborted jobs")                                                                     \
+    X(MISSES_IN_A_ROW, "misses in a row")         /* the longest run of missed deadlines */        \
+    X(MISSES_IN_WINDOW, "misses within a window") /* the most among `window` jobs in a row */
+
 // X(name, in words)
 #define LW_METRIC_LIST(X)                                                                          \
     X(MAXIMUM, "maximum") /* largest value of the signal */                                        \
@@ -54,13 +89,15 @@ LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char
     X(ISE, "ise")                                                                                  \
     X(ITAE, "itae") /* time counts since `from` */                                                 \
     X(ERROR_RMS, "error rms")                                                                      \
-    X(ERROR_PEAK, "error peak")                 /* largest |error| */                              \
-    X(SATURATION_TIME, "saturation time")       /* of a dac [s] */                                 \
-    X(LATENCY_PERCENTILE, "latency percentile") /* of a loop [s]; histogram of 1000 cells */       \
+    X(ERROR_PEAK, "error peak")           /* largest |error| */                                    \
+    X(SATURATION_TIME, "saturation time") /* of a dac [s] */                                       \
+    /* of a loop or a task [s]: sample to write */                                                 \
+    X(LATENCY_PERCENTILE, "latency percentile") /* by a histogram */                               \
     X(LATENCY_MEAN, "latency mean")                                                                \
     X(LATENCY_MAXIMUM, "latency maximum")                                                          \
-    X(LOST, "lost") /* writes of a loop lost, samples missed: counts */                            \
-    X(MISSED, "missed")
+    X(LOST, "lost")     /* writes of a loop or task that were lost */                              \
+    X(MISSED, "missed") /* samples of a loop; deadlines of a task, skipped and aborted jobs too */ \
+    LW_JOB_METRICS(X)
 
 typedef enum lw_metric_kind {
 #define LW_METRIC_ENUM(name, words) LW_METRIC_##name,
@@ -76,7 +113,8 @@ LW_API int lw_metric_count(void);
 typedef struct lw_metric_def {
     const char *origin, *name;
     lw_metric_kind kind;
-    const char *of;      // a signal; for saturation time a dac; for latency.. a loop
+    const char *of;      // a signal; for saturation time a dac; for latency, lost and
+                         // missed a loop or a task; for times and counts of jobs a task
     const char *against; // signal the error is taken against (a source or a value), or NULL
     double level;        // level where against is NULL; NAN: none given
     double base; // level at the start; NAN: `against` at `from`, or the signal's value at `from`
@@ -84,6 +122,7 @@ typedef struct lw_metric_def {
     double band; // share of |level - base| for settling (default 0.02)
     double low, high;    // shares for rise (default 0.1, 0.9)
     double share;        // of a percentile, in (0, 1)
+    int64_t window;      // jobs of "misses within a window"
     lw_tick from, until; // window; LW_NEVER: the end of the run
 } lw_metric_def;
 LW_API lw_metric_def lw_metric_default(lw_metric_kind kind);
