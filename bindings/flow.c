@@ -24,6 +24,7 @@
 
 #define MOST_PARAMETERS (LW_PLANT_MAX_STATES + LW_FLOW_MAX_MODES + LW_PLANT_MAX_PORTS + 1)
 #define MOST_EVENTS 16
+#define MOST_ROW (LW_PLANT_MAX_STATES + LW_FLOW_MAX_MODES + LW_FLOW_MAX_SWITCHES)
 
 typedef enum slot_kind { SLOT_STATE, SLOT_INPUT, SLOT_TIME } slot_kind;
 
@@ -56,7 +57,7 @@ typedef struct own {
     event events[MOST_EVENTS];
     // the last call of the flow, for its switchings
     int has_last;
-    double last_t, last_x[LW_PLANT_MAX_STATES + LW_FLOW_MAX_MODES], last_u[LW_PLANT_MAX_PORTS];
+    double last_t, last_x[MOST_ROW], last_u[LW_PLANT_MAX_PORTS];
     double g[LW_FLOW_MAX_SWITCHES];
 } own;
 
@@ -92,7 +93,7 @@ static void remember(own *o, double t, const double *x, const double *u)
 {
     o->has_last = 1;
     o->last_t = t;
-    memcpy(o->last_x, x, sizeof(double) * (size_t)(o->n_x + o->n_modes));
+    memcpy(o->last_x, x, sizeof(double) * (size_t)(o->n_x + o->n_modes + o->n_noted));
     memcpy(o->last_u, u, sizeof(double) * (size_t)o->n_u);
     for (int k = 0; o->notes->n != o->n_noted && k < o->n_noted; k++)
         o->g[k] = 1;
@@ -103,9 +104,13 @@ static int flow(void *context, double t, const double *x, const double *u, doubl
     own *o = context;
     lua_State *L = o->call.thread;
     lw__lua_notes before = *o->notes;
-    if (o->n_noted > 0)
-        *o->notes = (lw__lua_notes){o->g, 0, o->n_noted};
+    *o->notes = (lw__lua_notes){o->g, 0, o->n_noted, x + o->n_x + o->n_modes};
     int failed = call(o, &o->flow, t, x, u, o->n_x);
+    if (!failed && o->notes->n != o->n_noted) { // not the same in each call: no sides to take
+        lua_settop(L, o->call.top);
+        *o->notes = (lw__lua_notes){o->g, 0, o->n_noted, NULL};
+        failed = call(o, &o->flow, t, x, u, o->n_x);
+    }
     if (o->n_noted > 0 && !failed)
         remember(o, t, x, u);
     *o->notes = before;
@@ -126,9 +131,10 @@ static int switches(void *context, double t, const double *x, const double *u, d
 {
     own *o = context;
     double dx[LW_PLANT_MAX_STATES];
-    int same = o->has_last && t == o->last_t &&
-               memcmp(x, o->last_x, sizeof(double) * (size_t)(o->n_x + o->n_modes)) == 0 &&
-               memcmp(u, o->last_u, sizeof(double) * (size_t)o->n_u) == 0;
+    int same =
+        o->has_last && t == o->last_t &&
+        memcmp(x, o->last_x, sizeof(double) * (size_t)(o->n_x + o->n_modes + o->n_noted)) == 0 &&
+        memcmp(u, o->last_u, sizeof(double) * (size_t)o->n_u) == 0;
     if (o->n_noted > 0 && !same && flow(context, t, x, u, dx))
         return 1;
     memcpy(g, o->g, sizeof(double) * (size_t)o->n_noted);
@@ -189,18 +195,19 @@ static int outputs(void *context, double t, const double *x, const double *u, do
 
 typedef struct flow_def {
     lw__lua_texts states, inputs, modes;
+    double *modes_start;
     lw__lua_list start;
     double rtol;
 } flow_def;
 
 static const lw__lua_field flow_fields[] = {REQUIRED(flow_def, states, "states", FIELD_TEXTS, NULL),
                                             OPTIONAL(flow_def, inputs, "inputs", FIELD_TEXTS, NULL),
-                                            OPTIONAL(flow_def, modes, "modes", FIELD_TEXTS, NULL),
                                             OPTIONAL(flow_def, start, "start", FIELD_LIST, NULL),
                                             OPTIONAL(flow_def, rtol, "rtol", FIELD_NUMBER, "1"),
                                             OTHER("flow"),
                                             OTHER("outputs"),
                                             OTHER("events"),
+                                            OTHER("modes"),
                                             OTHER("atol"),
                                             OTHER("delay")};
 
@@ -214,6 +221,34 @@ typedef struct making {
     int used[LW_PLANT_MAX_PORTS]; // inputs that some function takes
     int in_outputs;
 } making;
+
+// A mode is a name, which starts at 0, or { name, start }. Names stay on the stack.
+static void read_modes(const lw__lua_reader *r, flow_def *p)
+{
+    static const char wanted[] = "a list of names and { name, start }";
+    lua_State *L = r->L;
+    if (lw__lua_push_field(r, "modes") == LUA_TNIL)
+        return;
+    int list = lua_gettop(L), n = lw__lua_length(r, "modes", list, wanted);
+    if (n > LW_FLOW_MAX_MODES)
+        lw__lua_bad(r, "modes has %d names; permitted up to %d", n, LW_FLOW_MAX_MODES);
+    p->modes.n = n;
+    p->modes.v = lw__lua_room(L, (size_t)n, sizeof *p->modes.v);
+    p->modes_start = lw__lua_room(L, (size_t)n, sizeof *p->modes_start);
+    luaL_checkstack(L, 4 * n + 8, "too many modes");
+    for (int i = 0; i < n; i++) {
+        const char *field = lua_pushfstring(L, "modes[%d]", i + 1);
+        if (lua_rawgeti(L, list, i + 1) == LUA_TTABLE) {
+            int pair = lua_gettop(L);
+            lua_rawgeti(L, pair, 2);
+            p->modes_start[i] = lw__lua_number(r, field, -1, NULL);
+            lua_rawgeti(L, pair, 1);
+        }
+        if (lua_type(L, -1) != LUA_TSTRING)
+            lw__lua_bad_type(r, field, -1, "a name or { name, start }");
+        p->modes.v[i] = lw__lua_field_text(r, field, -1);
+    }
+}
 
 static int place_of(const lw__lua_texts *names, const char *name)
 {
@@ -413,8 +448,6 @@ static void check_names(const making *m)
     if (p->inputs.n > LW_PLANT_MAX_PORTS)
         lw__lua_bad(m->r, "inputs has %d names; permitted up to %d", p->inputs.n,
                     LW_PLANT_MAX_PORTS);
-    if (p->modes.n > LW_FLOW_MAX_MODES)
-        lw__lua_bad(m->r, "modes has %d names; permitted up to %d", p->modes.n, LW_FLOW_MAX_MODES);
     if (place_of(&p->states, "t") >= 0 || place_of(&p->inputs, "t") >= 0 ||
         place_of(&p->modes, "t") >= 0)
         lw__lua_bad(m->r, "the name t stands for time; another is wanted");
@@ -433,11 +466,13 @@ static void try_flow(making *m)
 {
     own *o = m->o;
     lua_State *T = o->call.thread;
-    double x[LW_PLANT_MAX_STATES + LW_FLOW_MAX_MODES] = {0}, u[LW_PLANT_MAX_PORTS] = {0};
+    double x[MOST_ROW] = {0}, u[LW_PLANT_MAX_PORTS] = {0};
     if (m->p->start.v != NULL)
         memcpy(x, m->p->start.v, sizeof(double) * (size_t)o->n_x);
+    if (o->n_modes > 0)
+        memcpy(x + o->n_x, m->p->modes_start, sizeof(double) * (size_t)o->n_modes);
     lw__lua_notes before = *o->notes;
-    *o->notes = (lw__lua_notes){o->g, 0, LW_FLOW_MAX_SWITCHES};
+    *o->notes = (lw__lua_notes){o->g, 0, LW_FLOW_MAX_SWITCHES, NULL};
     int failed = call(o, &o->flow, 0, x, u, LUA_MULTRET);
     int n_noted = o->notes->n;
     *o->notes = before;
@@ -464,6 +499,7 @@ static void fill_definition(making *m)
     o->n_x = m->def.n_x = p->states.n;
     o->n_u = m->def.n_u = p->inputs.n;
     o->n_modes = m->def.n_modes = p->modes.n;
+    m->def.modes = p->modes_start;
     m->def.state_names = p->states.v;
     m->def.input_names = p->inputs.v;
     m->def.start = p->start.v;
@@ -499,6 +535,7 @@ int lw__lua_plant_flow(lua_State *L)
     flow_def p = {.rtol = 1e-8};
     lw__lua_reader r = lw__lua_read(L, 1, "plant flow");
     LW__LUA_FIELDS(&r, flow_fields, 0, &p);
+    read_modes(&r, &p);
     making m = {.r = &r, .p = &p, .def = lw_flow_default()};
     check_names(&m);
     if (lw__lua_push_field(&r, "flow") == LUA_TNIL)

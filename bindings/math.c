@@ -24,20 +24,26 @@ lw__lua_notes *lw__lua_notes_of(lua_State *L)
         return lua_touserdata(L, -1);
     lua_pop(L, 1);
     lw__lua_notes *made = lua_newuserdatauv(L, sizeof *made, 0);
-    *made = (lw__lua_notes){NULL, 0, 0};
+    *made = (lw__lua_notes){NULL, 0, 0, NULL};
     lua_pushvalue(L, -1);
     lua_setfield(L, LUA_REGISTRYINDEX, NOTEBOOK_KEY);
     return made;
 }
 
-static void note(lua_State *L, double g)
+// Note g; returns it, or the side that is to be taken in its place: a jump happens at the end of a
+// step, where its instant was found, and not within.
+static double note(lua_State *L, double g)
 {
     lw__lua_notes *notes = lua_touserdata(L, lua_upvalueindex(1));
     if (notes->at == NULL)
-        return;
-    if (notes->n < notes->room)
+        return g;
+    double side = 0;
+    if (notes->n < notes->room) {
         notes->at[notes->n] = g;
+        side = notes->sides != NULL ? notes->sides[notes->n] : 0;
+    }
     notes->n++;
+    return side != 0 ? side : g;
 }
 
 #define ONE_ARGUMENT(name)                                                                         \
@@ -230,8 +236,7 @@ static int math_clamp(lua_State *L)
 // sign(x): -1, 0 or 1
 static int math_sign(lua_State *L)
 {
-    double x = luaL_checknumber(L, 1);
-    note(L, x);
+    double x = note(L, luaL_checknumber(L, 1));
     lua_pushnumber(L, x > 0 ? 1 : x < 0 ? -1 : x);
     return 1;
 }
@@ -242,8 +247,7 @@ static int math_where(lua_State *L)
     double c = lua_isboolean(L, 1) ? (lua_toboolean(L, 1) ? 1 : -1) : luaL_checknumber(L, 1);
     luaL_checknumber(L, 2);
     luaL_checknumber(L, 3);
-    note(L, c);
-    lua_pushvalue(L, c > 0 ? 2 : 3);
+    lua_pushvalue(L, note(L, c) > 0 ? 2 : 3);
     return 1;
 }
 

@@ -10,6 +10,7 @@ typedef struct lw__lua_notes {
     double *at; // NULL: nobody asks
     int n;      // noted so far, also beyond room
     int room;
+    const double *sides; // room: the side to take of each, -1 or 1; 0, or NULL: as it is
 } lw__lua_notes;
 
 // The notebook of this state, made when first asked for, pushed on the stack.

@@ -2,6 +2,7 @@
 -- the study itself asks is beside the point.
 
 require "test_module"
+require "test_lua_flow"
 require "test_own_law"
 require "test_lua_run"
 

@@ -116,7 +116,87 @@ local function test_kinks()
   end)
 end
 
+-- A mass that a sine pushes over a rough floor: it rests while the push is below `stick`.
+local function rough_floor(stick, slide)
+  local m = lw.math
+  local function rest_or_turn(place, speed, push, stuck, way)
+    if m.abs(push) < stick and stuck == 0 then return place, 0, 1, way end
+    return place, speed, stuck, m.sign(push)
+  end
+  local function break_away(place, speed, push)
+    return place, speed, 0, m.sign(push)
+  end
+  return lw.plant.flow { states = { "place", "speed" }, inputs = { "push" },
+    modes = { { "stuck", 1 }, "way" }, rtol = 1e-12,
+    flow = function(speed, push, stuck, way)
+      return (1 - stuck) * speed, (1 - stuck) * (push - slide * way)
+    end,
+    events = { { when = function(speed) return speed end,
+                 rising = rest_or_turn, falling = rest_or_turn },
+               { when = function(push, stuck) return m.abs(push) - stick - (1 - stuck) end,
+                 rising = break_away } } }
+end
+
+local function test_events()
+  -- Down from 5 m at 10 m/s^2: it meets the floor at 1 s with 10 m/s and leaves with 5.
+  test("an_end_stop_gives_new_states_and_modes", function()
+    local plant = lw.plant.flow { states = { "height", "speed" }, start = { 5, 0 },
+      modes = { "bounces" }, rtol = 1e-10,
+      outputs = { "height", { "bounced", function(bounces) return bounces end } },
+      flow = function(speed) return speed, -10 end,
+      events = { { when = function(height) return height end,
+        falling = function(height, speed, bounces) return 0, -speed / 2, bounces + 1 end } } }
+    near(end_of(plant, 1.5, "p.height"), 2.5 - 1.25, 1e-9)
+    equal(end_of(plant, 0.9, "p.bounced"), 0)
+    equal(end_of(plant, 1.5, "p.bounced"), 1)
+    equal(end_of(plant, 2.2, "p.bounced"), 2)
+  end)
+
+  test("dry_friction_sticks_and_breaks_away", function()
+    local push = lw.source.sine { amplitude = 0.6, frequency = 10 }
+    local far = end_of(rough_floor(0.5, 0.45), 0.0499, "p.place", push, "p.push")
+    equal(far > 1e-5, true)
+    near(end_of(rough_floor(0.5, 0.45), 0.1, "p.place", push, "p.push"), 0, 1e-10, far)
+    near(end_of(rough_floor(0.5, 0.45), 0.15, "p.place", push, "p.push"), far, 1e-10, far)
+    equal(end_of(rough_floor(0.7, 0.45), 0.15, "p.place", push, "p.push"), 0) -- never breaks away
+  end)
+
+  -- A push that jumps: a held input makes the event true by itself.
+  test("a_jump_of_an_input_is_an_event", function()
+    local step = lw.source.step { at = 0.05, to = 0.6 }
+    near(end_of(rough_floor(0.5, 0.45), 0.15, "p.speed", step, "p.push"), 0.015, 1e-10)
+    equal(end_of(rough_floor(0.7, 0.45), 0.15, "p.speed", step, "p.push"), 0)
+  end)
+
+  -- The branch is that of the side: within a step the flow is smooth, so few calls do.
+  test("a_jump_of_a_flow_costs_few_steps", function()
+    local plant = lw.plant.flow { states = { "x" }, rtol = 1e-10, flow = function(t)
+      return lw.math.where(lw.math.sin(20 * t), 2, -1)
+    end }
+    near(end_of(plant, lw.math.pi, "p.x"), lw.math.pi / 2, 1e-9)
+  end)
+end
+
 local function test_refusals()
+  test("bad_events_are_refused", function()
+    refuses([[ lw.plant.flow { states = { "x" }, flow = function(x) return x end,
+      events = { { rising = function(x) return x end } } } ]],
+      "mount.lua:2: plant flow: events[1]: when is missing")
+    refuses([[ lw.plant.flow { states = { "x" }, flow = function(x) return x end,
+      events = { { when = function(x) return x end, raising = 1 } } } ]],
+      "plant flow: events[1]", "\"raising\"")
+    refuses([[ lw.plant.flow { states = { "x" }, modes = { "x" }, flow = function(x) return x end } ]],
+      "\"x\" is a mode and a state")
+    local plant = mount [[
+      return lw.plant.flow { states = { "x" }, start = { 1 }, flow = function(x) return -1 end,
+        events = { { when = function(x) return x end, falling = function(x) end } } } ]]
+    local rig = lw.rig "alone"
+    rig:plant { "p", plant }
+    local status, message = rig:run { lasts = 2 }:status()
+    equal(status, "LW_ERR_LAW")
+    equal(message:find("returns nil as after an event, x", 1, true) ~= nil, true)
+  end)
+
   test("what_cannot_be_is_refused_at_its_line", function()
     refuses([[ lw.plant.flow { states = { "x" } } ]], "mount.lua:2: plant flow: flow is missing")
     refuses([[ lw.plant.flow { states = { "angle" }, flow = function(angel) return 1 end } ]],
@@ -173,6 +253,7 @@ end
 local function suite()
   test_values()
   test_kinks()
+  test_events()
   test_refusals()
 end
 

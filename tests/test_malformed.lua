@@ -38,6 +38,18 @@ end
 
 local DATA = 65
 local cases = {
+  -- flows
+  { "a_flow_with_an_unknown_parameter", { plant = 'rig:plant { "coil", lw.plant.flow { ' ..
+    'states = { "current" }, inputs = { "voltage" }, flow = function(curent, voltage) ' ..
+    'return voltage end } }' }, DATA,
+    ':5: plant flow: flow: its parameter "curent" is no state.*nearest "current"' },
+  { "a_flow_that_returns_too_little", { plant = 'rig:plant { "coil", lw.plant.flow { ' ..
+    'states = { "current", "heat" }, inputs = { "voltage" }, flow = function(voltage) ' ..
+    'return voltage end } }' }, DATA, ":5: plant flow: flow returns 1 values" },
+  { "a_flow_in_a_connection_of_matrices", { plant = 'rig:plant { "coil", lw.plant.series(' ..
+    'lw.plant.flow { states = { "current" }, inputs = { "voltage" }, ' ..
+    'flow = function(current, voltage) return voltage - current end }, ' ..
+    'lw.plant.gain { gain = 1 }) }' }, DATA, ':5: .*the plant is a flow and has no matrices' },
   -- units and numbers
   { "a_wrong_unit", { adc = 'rig:adc { "current", of = "coil.current", every = "5 V" }' }, DATA,
     ':6: adc "current": every.*"5 V" is a voltage' },

@@ -11,7 +11,7 @@ grep -v '^[0-9]* passed' "$TMPDIR/said"
 awk -v code="$code" '
   /^[0-9]+ passed, [0-9]+ failed$/ { passed += $1; failed += $3; n++ }
   END {
-    if (n != 3 || code != 0) { failed++; print "suites that ended: " n + 0 "; exit code: " code }
+    if (n != 4 || code != 0) { failed++; print "suites that ended: " n + 0 "; exit code: " code }
     printf "%d passed, %d failed\n", passed, failed
     exit failed > 0
   }' "$TMPDIR/said"

@@ -40,8 +40,8 @@ typedef struct bond {
     double *sides, *values; // of the switchings of all parts: -1, 1, 0 on neither; scratch
     int n_courses;
     course courses[LW_PLANT_MAX_PORTS];
-    const char *failed; // the part whose function failed
-    int chatters;
+    const char *failed;    // the part whose function failed
+    int chatters, settled; // settled: no side had to change
 } bond;
 
 // ---- what the parts give
@@ -250,6 +250,7 @@ static int settle(bond *b, double t, double *x, int border)
         }
         if (which < 0)
             return 0;
+        b->settled = 0;
         if (call_happened(b, t, x, which))
             return 1;
         border = which;
@@ -358,7 +359,6 @@ static void close_copy(lw__lane *s, const lw__group *g, const motion_copy *c)
     for (int k = 0; k < n_memory; k++)
         LW__F(m->memory + k) = c->memory[k];
     LW__I(g->anchor) = s->now;
-    LW__I(m->disturbed) = 0;
 }
 
 // ---- stretches
@@ -453,6 +453,14 @@ typedef struct outcome {
     const char *text;
 } outcome;
 
+// Of the functions of the parts, or of switchings that make one another happen.
+static outcome failure(const motion_copy *c, lw_tick at)
+{
+    if (c->b.chatters)
+        return (outcome){LW_ERR_CHATTER, at, "it switches on and on at one instant"};
+    return (outcome){LW_ERR_LAW, at, "a function of the plant failed"};
+}
+
 static outcome integrate(const lw__lane *s, motion_copy *c, lw__take_stretch take, void *context)
 {
     const lw__flow_group *m = c->b.m;
@@ -461,17 +469,16 @@ static outcome integrate(const lw__lane *s, motion_copy *c, lw__take_stretch tak
     giver v = {.b = &c->b, .anchor = anchor, .take = take, .context = context, .at_nodes = c->work};
     double span = lw__seconds(s->now - anchor), failed = 0;
     const char *text = "its flow failed";
-    if (m->n_switches > 0 && LW__I(m->disturbed) != 0 && settle(&c->b, 0, c->x, -1))
-        return (outcome){c->b.chatters ? LW_ERR_CHATTER : LW_ERR_LAW, anchor,
-                         c->b.chatters ? "it switches on and on at one instant"
-                                       : "a function of the plant failed"};
+    c->b.settled = 1;
+    if (m->n_switches > 0 && settle(&c->b, 0, c->x, -1))
+        return failure(c, anchor);
+    if (!c->b.settled)
+        lw__ode_disturb(c->memory);
     lw_status status = lw__ode_advance(&c->system, m->rtol, m->atol, c->memory, 0, span, c->x,
                                        take != NULL ? give : NULL, &v,
                                        c->work + (LW__FLOW_DEGREE + 1) * m->n_y, &failed, &text);
-    if (c->b.chatters)
-        return (outcome){LW_ERR_CHATTER, anchor + (lw_tick)floor(failed * 1e12),
-                         "it switches on and on at one instant"};
-    return (outcome){status, anchor + (lw_tick)floor(failed * 1e12), text};
+    lw_tick at = anchor + (lw_tick)floor(failed * 1e12);
+    return c->b.chatters ? failure(c, at) : (outcome){status, at, text};
 }
 
 static const char *name_of(const motion_copy *c)
@@ -508,14 +515,12 @@ static void start(lw__lane *s, const lw__group *g)
     int W = s->width, L = s->lane;
     for (int k = 0; k < m->n_modes; k++)
         LW__F(m->mode_cells + k) = m->modes[k];
-    LW__I(m->disturbed) = 1; // the sides are to be taken
 }
 
 static void changed(lw__lane *s, const lw__group *g)
 {
     const lw__flow_group *m = g->moves;
     int W = s->width, L = s->lane;
-    LW__I(m->disturbed) = 1;
     for (int k = 0; k < m->n_memory; k++) // few: the flow at the anchor is another one now
         s->motion_work[k] = LW__F(m->memory + k);
     lw__ode_disturb(s->motion_work);

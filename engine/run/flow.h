@@ -43,7 +43,6 @@ typedef struct lw__flow_group {
     lw__ode_system system; // without its context
     // cells
     int mode_cells, side_cells, memory, n_memory;
-    int disturbed; // integer cell: an input has changed since the anchor came to where it is
 } lw__flow_group;
 
 extern const struct lw__motion lw__flow_motion;

@@ -224,7 +224,6 @@ static lw_status take_cells(lw__freezer *w, lw__group *g, lw__flow_group *m)
         lw__freezer_double(w, name, "sides of switchings", LW_SLICE_PLANT, m->n_switches);
     m->memory = lw__freezer_double(w, name, "memory of the method", LW_SLICE_PLANT, m->n_memory);
     g->anchor = lw__freezer_integer(w, name, "anchor", LW_SLICE_PLANT, 1);
-    m->disturbed = lw__freezer_integer(w, name, "inputs have changed", LW_SLICE_PLANT, 1);
     g->count = lw__freezer_integer(w, name, "anchors so far", LW_SLICE_PLANT, 1);
     g->list_n = g->list_tick = g->list_channel = g->count; // never used: changes move the anchor
     for (int i = 0; i < g->n_generators; i++) {

@@ -120,7 +120,10 @@ LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **
 // inputs are held or move smoothly between two calls of `happened`. Each function returns 0;
 // anything else ends the run with LW_ERR_LAW.
 //
-//   x   n_x states, then n_modes modes: numbers that stand still but for `happened`
+//   x   n_x states, then n_modes modes, numbers that stand still but for `happened`, then
+//       n_switches sides: -1 or 1, where each switching stands (0: at zero so far). They change at
+//       the ends of steps only: a flow that jumps takes its branch from them, so that it is smooth
+//       within a step
 //   u   n_u inputs
 //   flow      dx: n_x derivatives
 //   outputs   y: n_y outputs. Of u it may read the inputs in `direct` only; the others hold NAN
@@ -130,11 +133,14 @@ LW_API lw_status lw_plant_two_mass_drive(const lw_two_mass_drive *p, lw_plant **
 //             have a kink or a jump: the instant is found and a step ends there. NULL where
 //             n_switches is 0. Without them error control alone sees a kink, in many small steps.
 //   jacobian  j: n_x x n_x, row-major, of the flow by x; for the stiff method. NULL: by differences
-//   happened  switching `which` has passed through zero, rising (1) or falling (0): may change
-//             states and modes. NULL: nothing changes by itself.
+//   happened  switching `which` has passed through zero, rising (1) or falling (0), on its way or
+//   by
+//             a jump of an input or of the state: may change states and modes. NULL: nothing
+//             changes by itself.
 //   method    Dormand-Prince 5(4) (J. Dormand, P. Prince, J. Comp. Appl. Math. 6 (1980) 19-26) with
 //             step-size control; each step's error is held within atol + rtol |x|, state by state.
-//             A stiff flow is noticed and goes on by a stiff method; see engine/ode/ode.h.
+//             A stiff flow is noticed and goes on by Radau IIA of order 5 (E. Hairer, G. Wanner,
+//             Solving Ordinary Differential Equations II (1996) IV.8); see engine/ode/ode.h.
 typedef struct lw_flow_def {
     int n_x, n_u, n_y;
     const char *const *state_names; // all names, start and atol are copied
