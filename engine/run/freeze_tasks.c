@@ -112,6 +112,26 @@ static lw_status clock_of_task(lw__freezer *w, lw__task *t)
     return LW_OK;
 }
 
+// Logical execution time is measured by the core's own clock; a whole period ends with the next
+// release, wherever that is rounded to.
+static lw_status logical_time(lw__freezer *w, lw__task *t)
+{
+    const lw_task_def *def = &t->item->def;
+    t->logical = LW_NEVER;
+    if (isnan(def->logical))
+        return LW_OK;
+    double every = def->every.num > 0 ? lw_period_seconds(def->every) : 0;
+    t->logical = ticks(def->logical * w->z->cores[t->core].rate * 1e12);
+    t->logical_is_period = !t->relative && t->overrun != LW_OVERRUN_REPHASE && every > 0 &&
+                           fabs(def->logical - every) < 1e-13;
+    if (t->logical_is_period || t->least_between == 0 || t->logical <= t->least_between)
+        return LW_OK;
+    return lw__fail_at(def->origin, w->err, LW_ERR_ARGUMENT,
+                       "task \"%s\": logical is %.12g s; at most the least time between two "
+                       "releases, %.12g s, is permitted",
+                       t->name, def->logical, lw_tick_seconds(t->least_between));
+}
+
 // ---- points
 
 typedef struct placed {
@@ -207,7 +227,6 @@ static lw_status points_of(lw__freezer *w, lw__task *t)
     LW__TRY(put_sections(&l, views));
     for (int i = 0; i < def->n_yields && i < 60; i++)
         put_point(&l, LW__POINT_YIELD, def->yields[i], -1);
-    t->logical = isnan(def->logical) ? LW_NEVER : ticks(def->logical * 1e12);
     t->reads_at_release = def->reads.kind == LW_PLACE_RELEASE || t->logical != LW_NEVER;
     if (t->has_law && !t->reads_at_release)
         put_point(&l, LW__POINT_READ, def->reads, -1);
@@ -424,6 +443,7 @@ lw_status lw__freeze_cores(lw__freezer *w)
         LW__TRY(clock_of_task(w, t));
         LW__TRY(law_of_task(w, t));
         LW__TRY(nominal_of_law(w, t));
+        LW__TRY(logical_time(w, t));
         LW__TRY(points_of(w, t));
         LW__TRY(task_cells(w, t));
     }

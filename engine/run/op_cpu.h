@@ -259,7 +259,9 @@ LW__INLINE void op_read(LW__CONTEXT, const lw__task *t)
         lw__end_lane(s, LW_ERR_CAPACITY, t->name,
                      "it is released before its logical execution time has passed");
     LW__I(t->logical_job) = LW__I(t->ring_job + slot);
-    LW__I(s->z->due + t->logical_timer) = LW__I(t->ring_nominal + slot) + t->logical;
+    LW__I(s->z->due + t->logical_timer) = t->logical_is_period
+                                              ? LW__I(t->nominal) // of the next release
+                                              : LW__I(t->ring_nominal + slot) + t->logical;
 }
 
 // ---- jobs

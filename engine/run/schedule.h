@@ -80,6 +80,7 @@ typedef struct lw__task {
     const lw_section_view *sections;
     int reads_at_release;
     lw_tick logical; // LW_NEVER: none
+    int logical_is_period;
     // what it computes
     int has_law;
     lw__loop law;

@@ -17,7 +17,7 @@
 //   points     At one place within a job: writes, unlocks, locks, reads. The law steps when it
 //              reads. A write at the start writes what the job before computed.
 //   clocks     A core whose clock is fast by `drift` has shorter clock periods, offsets, timer
-//              ticks and cycles; durations in seconds are real seconds.
+//              ticks, logical execution times and cycles; durations in seconds are real seconds.
 //
 // Methods: C. Liu, J. Layland 1973 (fixed priority, earliest deadline); L. Sha, R. Rajkumar,
 // J. Lehoczky 1990 (inheritance, ceilings); A. Burns, M. Gutierrez, M. Aldea, M. Gonzalez 2015
