@@ -32,6 +32,11 @@ void lw__flow_release(lw__flow *flow)
 lw_status lw__plant_refuse_flow(const lw_plant *plant, const char *what, const char *name,
                                 lw_error *err)
 {
+    if (plant->modes != NULL)
+        return lw_error_set(err, LW_ERR_ARGUMENT,
+                            "%s \"%.200s\": the plant has modes and not one set of matrices; it is "
+                            "connected within a rig",
+                            what, name);
     if (plant->flow == NULL)
         return LW_OK;
     return lw_error_set(err, LW_ERR_ARGUMENT,

@@ -25,8 +25,10 @@ lw_plant_view lw_plant_look(const lw_plant *plant)
 
 void lw_plant_free(lw_plant *plant)
 {
-    if (plant != NULL)
+    if (plant != NULL) {
         lw__flow_release(plant->flow);
+        lw__modes_release(plant->modes);
+    }
     lw__free(plant);
 }
 
@@ -272,10 +274,14 @@ static lw_plant *copy(const lw_plant_view *v)
     cursor to = {.number = (double *)(plant + 1)};
     to.name = (const char **)(to.number + n_numbers);
     to.text = (char *)(to.name + n_names);
-    plant->view = (lw_plant_view){.n_x = n_x, .n_u = n_u, .n_y = n_y, .flow = v->flow};
+    plant->view =
+        (lw_plant_view){.n_x = n_x, .n_u = n_u, .n_y = n_y, .flow = v->flow, .modes = v->modes};
     plant->flow = (lw__flow *)(uintptr_t)v->flow;
     if (plant->flow != NULL)
         plant->flow->references++;
+    plant->modes = (lw__modes *)(uintptr_t)v->modes;
+    if (plant->modes != NULL)
+        plant->modes->references++;
     plant->view.a = copy_numbers(&to, v->a, n_x * n_x);
     plant->view.b = copy_numbers(&to, v->b, n_x * n_u);
     plant->view.c = copy_numbers(&to, v->c, n_y * n_x);

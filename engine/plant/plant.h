@@ -2,6 +2,9 @@
 #ifndef LATEWOOD_PLANT_PLANT_H
 #define LATEWOOD_PLANT_PLANT_H
 
+#include "base/arena.h"
+
+#include <latewood/modes.h>
 #include <latewood/plant.h>
 
 #define LW__PLANT_MAX_SHOWN (4 * LW_PLANT_MAX_PORTS) // outputs of a connection
@@ -9,7 +12,8 @@
 // One block: the view, then what it points to.
 struct lw_plant {
     lw_plant_view view;
-    struct lw__flow *flow; // NULL: linear
+    struct lw__flow *flow;   // NULL: no flow
+    struct lw__modes *modes; // NULL: no modes
 };
 
 // What flows that are copies of each other share. Of a flow's view, C has a row of one 1 for an
@@ -19,6 +23,14 @@ typedef struct lw__flow {
     int references;
 } lw__flow;
 void lw__flow_release(lw__flow *flow);
+
+// The definition of a plant with modes, shared likewise.
+typedef struct lw__modes {
+    lw_modes_def def; // first
+    lw__arena *arena; // holds this and what it points to
+    int references;
+} lw__modes;
+void lw__modes_release(lw__modes *modes);
 
 // `part "tube": its plant is a flow; ...` for functions that need matrices.
 lw_status lw__plant_refuse_flow(const lw_plant *plant, const char *what, const char *name,

@@ -198,7 +198,9 @@ static void plan_pieces(const lw__freezer *w, lw__condition *q)
 {
     const lw__kernel *k = &q->group->kernel;
     double norm = k->norm, term = 1;
-    q->tolerance = q->group->motion != NULL ? 1e-7 : k->method == LW__LADDER ? 1e-9 : 1e-12;
+    q->tolerance = q->group->motion != NULL  ? q->group->motion->tolerance
+                   : k->method == LW__LADDER ? 1e-9
+                                             : 1e-12;
     if (q->level.at.kind == LW__SIGNAL_SOURCE) {
         const lw_source_def *def = &w->z->sources[q->level.at.index].item->def;
         double turn = def->kind == LW_SOURCE_SINE ? lw__source_turn(def) : 0;

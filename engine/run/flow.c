@@ -569,6 +569,7 @@ static void describe(const lw__group *g, void (*say)(void *context, const char *
 }
 
 const struct lw__motion lw__flow_motion = {.name = "flow",
+                                           .tolerance = 1e-7,
                                            .start = start,
                                            .advance = advance,
                                            .changed = changed,

@@ -218,8 +218,8 @@ static void describe_comparator(const writer *w, const lw__comparator *c)
 {
     static const char *const edges[] = {"its rise", "its fall", "each change"};
     const lw_comparator_def *d = &c->item->def;
-    say(w, "comparator \"%s\": 1 while \"%s\" is at or %s %s; %s triggers what names it%s",
-        c->name, d->of, d->below ? "below" : "above", level_of(d).text, edges[d->edge],
+    say(w, "comparator \"%s\": 1 while \"%s\" is at or %s %s; %s triggers what names it%s", c->name,
+        d->of, d->below ? "below" : "above", level_of(d).text, edges[d->edge],
         d->edge == LW_EDGE_RISES ? " (default)" : "");
     if (d->hysteresis > 0)
         say(w, "  back to 0 once it is %s %s by %s", d->below ? "above" : "below", level_of(d).text,

@@ -288,15 +288,6 @@ static const char *group_origin(lw__freezer *w, int group)
 
 // ---- the augmented system of a group
 
-// Plant states first, then the states of generators; channels: external inputs first (a moving
-// source's column carries its constant part), then slopes.
-typedef struct system {
-    int n, m;
-    double *a, *b; // row-major, n x n and n x m
-    double *c, *d; // rows x n, rows x m
-    double *start, *u_start;
-} system_of;
-
 static int count_generators(const lw__freezer *w, const lw__joint *j, int *slopes)
 {
     int n = 0;
@@ -315,7 +306,7 @@ static int count_generators(const lw__freezer *w, const lw__joint *j, int *slope
 }
 
 // Bring in one moving source at external input `column`: states, slope channel, couplings.
-static void add_generator(system_of *s, const lw_plant_view *v, int column,
+static void add_generator(lw__linear *s, const lw_plant_view *v, int column,
                           const lw_source_def *def, const lw__generator *g)
 {
     int n = s->n, m = s->m;
@@ -366,7 +357,7 @@ lw_status lw__delayed_source(lw__freezer *w, const lw__source_item **item, doubl
 }
 
 static lw_status fill_inputs(lw__freezer *w, const lw__joint *j, const lw_plant_view *v,
-                             system_of *s, lw__generator *generators, lw__channel *channels)
+                             lw__linear *s, lw__generator *generators, lw__channel *channels)
 {
     int state = v->n_x, slope = v->n_u, next = 0;
     for (int i = 0; i < j->n_inputs; i++) {
@@ -403,8 +394,8 @@ static lw_status fill_inputs(lw__freezer *w, const lw__joint *j, const lw_plant_
     return LW_OK;
 }
 
-static lw_status make_system(lw__freezer *w, lw__group *g, const lw__joint *j,
-                             const lw_plant *plant, system_of *s)
+lw_status lw__make_linear(lw__freezer *w, lw__group *g, const lw__joint *j, const lw_plant *plant,
+                          lw__linear *s)
 {
     lw_plant_view v = lw_plant_look(plant);
     int slopes, n_gen = count_generators(w, j, &slopes);
@@ -445,7 +436,7 @@ static lw_status make_system(lw__freezer *w, lw__group *g, const lw__joint *j,
     return fill_inputs(w, j, &v, s, generators, channels);
 }
 
-static lw_status make_rows(lw__freezer *w, lw__group *g, const system_of *s)
+lw_status lw__make_rows(lw__freezer *w, lw__group *g, const lw__linear *s)
 {
     lw__row *rows = lw__freezer_get(w, sizeof *rows * (size_t)(g->n_rows + 1));
     if (rows == NULL)
@@ -519,7 +510,7 @@ lw_status lw__choose_grid(lw__freezer *w, lw__group *g, int group)
     return lw_tick_from_seconds(offset, &g->grid_offset);
 }
 
-static lw_status build_kernel(lw__freezer *w, lw__group *g, const system_of *s)
+static lw_status build_kernel(lw__freezer *w, lw__group *g, const lw__linear *s)
 {
     if (g->grid.num == 0) {
         double norm = 0, span = lw_tick_seconds(w->z->lasts);
@@ -596,6 +587,14 @@ void lw__note_feeds(lw__freezer *w, int group, const lw__joint *j)
         }
 }
 
+static int has_modes(const lw__joint *j)
+{
+    for (int p = 0; p < j->n_parts; p++)
+        if (lw_plant_look(j->parts[p].plant).modes != NULL)
+            return 1;
+    return 0;
+}
+
 static int has_flow(const lw__joint *j)
 {
     for (int p = 0; p < j->n_parts; p++)
@@ -609,20 +608,22 @@ static lw_status freeze_group(lw__freezer *w, int group)
     lw__group *g = &w->z->groups[group];
     lw__joint j = {0};
     lw_plant *plant = NULL;
-    system_of s = {0};
+    lw__linear s = {0};
     g->name = group_name(w, group);
     g->origin = group_origin(w, group);
     LW__TRY(lw__join_group(w, group, &j));
+    if (has_modes(&j))
+        return lw__freeze_modes(w, group, &j);
     if (has_flow(&j))
         return lw__freeze_flow(w, group, &j);
     LW__TRY(lw__blame(g->origin, w->err,
                       lw_plant_connect(j.n_parts, j.parts, j.n_links, j.links, j.n_inputs, j.inputs,
                                        j.n_outputs, j.outputs, &plant, w->err)));
     lw__note_feeds(w, group, &j);
-    lw_status status = make_system(w, g, &j, plant, &s);
+    lw_status status = lw__make_linear(w, g, &j, plant, &s);
     lw_plant_free(plant);
     if (status == LW_OK)
-        status = make_rows(w, g, &s);
+        status = lw__make_rows(w, g, &s);
     if (status == LW_OK)
         status = lw__choose_grid(w, g, group);
     if (status == LW_OK)

@@ -27,6 +27,21 @@ lw_status lw__delayed_source(lw__freezer *w, const lw__source_item **item, doubl
 lw_status lw__choose_grid(lw__freezer *w, lw__group *g, int group);
 lw_status lw__delay_cells(lw__freezer *w, lw__channel *c);
 
+// One linear system of a group. Plant states first, then the states of generators; channels:
+// external inputs first (a moving source's column carries its constant part), then slopes.
+typedef struct lw__linear {
+    int n, m;
+    double *a, *b; // row-major, n x n and n x m
+    double *c, *d; // rows x n, rows x m
+    double *start, *u_start;
+} lw__linear;
+// Augment the connected plant; sets what the group knows of its sizes, channels and generators.
+lw_status lw__make_linear(lw__freezer *w, lw__group *g, const lw__joint *j, const lw_plant *plant,
+                          lw__linear *s);
+lw_status lw__make_rows(lw__freezer *w, lw__group *g, const lw__linear *s);
+
+// A group with plants that have modes: see freeze_modes.c. Name and origin are set.
+lw_status lw__freeze_modes(lw__freezer *w, int group, const lw__joint *j);
 // A group with flows: see freeze_flow.c. Name and origin are set.
 lw_status lw__freeze_flow(lw__freezer *w, int group, const lw__joint *j);
 

@@ -26,6 +26,7 @@ typedef void (*lw__take_stretch)(void *context, const lw__stretch *stretch);
 
 struct lw__motion {
     const char *name;
+    double tolerance; // share of a signal's size by which a trial and an advance may differ
     // Cells of its own at time zero.
     void (*start)(lw__lane *s, const lw__group *g);
     // Move the anchor to s->now; every stretch goes to lw__observe, then lw__observed is called. A

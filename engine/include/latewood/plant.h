@@ -34,6 +34,8 @@ typedef struct lw_plant_view {
     const char *const *output_names;
     const struct lw_flow_def *flow; // NULL: linear. Of a flow A, B, C and D say nothing; names and
                                     // start are those above
+    const struct lw_modes_def *modes; // not NULL: linear between switchings (modes.h); the matrices
+                                      // above are those of the first mode
 } lw_plant_view;
 
 LW_API lw_plant_view lw_plant_look(const lw_plant *plant);
