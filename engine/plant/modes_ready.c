@@ -250,8 +250,9 @@ static void add_stop(stops *s, int side)
     s->modes[s->n_modes++] = (lw_mode){names[side], s->held, s->held_b, NULL, s->v.c, s->v.d, NULL};
     lw_condition hits = {toward, NULL, -sign * at};
     lw_condition fast = {s->speed[side], NULL, -e->rest_below};
-    s->switchings[s->n_switchings++] =
-        (lw_switching){"free", "free", hits, fast, 1, s->bounce, NULL};
+    if (e->restitution > 0)
+        s->switchings[s->n_switchings++] =
+            (lw_switching){"free", "free", hits, fast, 1, s->bounce, NULL};
     s->switchings[s->n_switchings++] =
         (lw_switching){"free", names[side], hits, {0}, 0, s->rest, s->at_stop[side]};
     s->switchings[s->n_switchings++] = (lw_switching){
