@@ -2,6 +2,7 @@
 
 #include "run.h"
 
+#include <math.h>
 #include <string.h>
 
 // Open entry i of the list at `list`; a plain name becomes an entry with nothing else.
@@ -96,7 +97,43 @@ static const lw__lua_field metric_fields[] = {
     OPTIONAL(lw_metric_def, from, "from", FIELD_TICK, NULL),
     OPTIONAL(lw_metric_def, until, "until", FIELD_TICK, NULL),
     OPTIONAL(lw_metric_def, until, "to", FIELD_TICK, NULL),
+    OPTIONAL(lw_metric_def, band_value, "band_value", FIELD_NUMBER, NULL),
+    OPTIONAL(lw_metric_def, low_value, "low_value", FIELD_NUMBER, NULL),
+    OPTIONAL(lw_metric_def, high_value, "high_value", FIELD_NUMBER, NULL),
+    OPTIONAL(lw_metric_def, step, "step", FIELD_NUMBER, NULL),
+    OPTIONAL(lw_metric_def, last, "last", FIELD_TICK, NULL),
+    OTHER("mask"),
 };
+
+// mask = { { time, low, high }, ... }; false where there is no limit.
+static void read_mask(const lw__lua_reader *r, lw_metric_def *def)
+{
+    lua_State *L = r->L;
+    if (lw__lua_push_field(r, "mask") == LUA_TNIL)
+        return;
+    int list = lua_gettop(L);
+    int n = lw__lua_length(r, "mask", list, "a list of { time, low, high }");
+    double *v = lw__lua_room(L, 3 * (size_t)n, sizeof *v); // stays on the stack
+    if (n < 2)
+        lw__lua_bad(r, "mask has %d corners; at least 2 are wanted", n);
+    for (int k = 0; k < n; k++) {
+        lua_rawgeti(L, list, k + 1);
+        int corner = lua_gettop(L);
+        if (!lua_istable(L, corner))
+            lw__lua_bad_type(r, "mask", corner, "a list of { time, low, high }");
+        for (int side = 0; side < 3; side++) {
+            lua_rawgeti(L, corner, side + 1);
+            int none = side > 0 && (lua_isnil(L, -1) || !lua_toboolean(L, -1));
+            v[side * n + k] =
+                none ? (double)NAN : lw__lua_number(r, "mask", -1, side == 0 ? "s" : NULL);
+        }
+        lua_settop(L, corner - 1);
+    }
+    def->n_mask = n;
+    def->mask_time = v;
+    def->mask_low = v + n;
+    def->mask_high = v + 2 * n;
+}
 
 // The kind by its words: the second element, or the name itself.
 static lw_metric_kind read_kind(const lw__lua_reader *r, const char *name)
@@ -128,6 +165,7 @@ static void read_metric(const lw__lua_reader *r, lw_watch *watch)
     LW__LUA_FIELDS(&entry, metric_fields, 2, &def);
     def.origin = r->origin;
     def.name = name;
+    read_mask(&entry, &def);
     if (lw_watch_metric(watch, &def, &err) != LW_OK)
         lw__lua_raise(r->L, r->origin, &err);
 }

@@ -149,9 +149,22 @@ static lw_watch *observe(extras x)
         int of_loop = strstr(lw_metric_words(m.kind), "latency") != NULL ||
                       m.kind == LW_METRIC_LOST || m.kind == LW_METRIC_MISSED;
         m.name = lw_metric_words(m.kind);
+        int of_task = kind >= LW_METRIC_LATENESS_MEAN && kind != LW_METRIC_GAP &&
+                      kind != LW_METRIC_GAP_MEAN; // the rig has none
+        if (of_task)
+            continue;
         m.of = of_loop ? "current loop" : "axis.load_speed";
-        if (m.kind == LW_METRIC_SATURATION_TIME)
+        int of_dac = m.kind == LW_METRIC_SATURATION_TIME || strstr(m.name, "gap") != NULL ||
+                     strstr(m.name, "output age") != NULL;
+        if (of_dac)
             m.of = "bridge";
+        static const double corners[] = {0, 1e-3}, low[] = {-1, 0}, high[] = {1, 0};
+        if (strstr(m.name, "mask") != NULL) {
+            m.n_mask = 2;
+            m.mask_time = corners;
+            m.mask_low = low;
+            m.mask_high = high;
+        }
         m.against = of_loop ? NULL : "speed wanted";
         m.from = 123 * US;
         OK(lw_watch_metric(watch, &m, e));

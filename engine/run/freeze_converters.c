@@ -234,6 +234,11 @@ static lw_status dac_cells(lw__freezer *w, lw__dac *d, const char *name)
         lw__freezer_integer(w, name, "register for the edge after is fresh", LW_SLICE_HELD, 1);
     d->job = lw__freezer_integer(w, name, "job that wrote it", LW_SLICE_HELD, 1);
     d->changed_at = lw__freezer_integer(w, name, "instant of the last output", LW_SLICE_HELD, 1);
+    d->sampled = lw__freezer_integer(w, name, "sample behind the output", LW_SLICE_HELD, 1);
+    d->pending_sampled =
+        lw__freezer_integer(w, name, "sample behind the register", LW_SLICE_HELD, 1);
+    d->late_sampled =
+        lw__freezer_integer(w, name, "sample behind the register after", LW_SLICE_HELD, 1);
     d->latch_count = lw__freezer_integer(w, name, "edges so far", LW_SLICE_SCHEDULE, 1);
     return d->latch_count >= 0 ? LW_OK : LW_ERR_MEMORY;
 }

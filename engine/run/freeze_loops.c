@@ -259,6 +259,8 @@ static lw_status loop_cells(lw__freezer *w, lw__loop *l, const char *name)
                                          LW_SLICE_IN_FLIGHT, l->capacity);
     l->flight_job =
         lw__freezer_integer(w, name, "jobs of writes in flight", LW_SLICE_IN_FLIGHT, l->capacity);
+    l->flight_sampled = lw__freezer_integer(w, name, "samples of writes in flight",
+                                            LW_SLICE_IN_FLIGHT, l->capacity);
     l->head = lw__freezer_integer(w, name, "first write in flight", LW_SLICE_IN_FLIGHT, 1);
     l->count = lw__freezer_integer(w, name, "writes in flight", LW_SLICE_IN_FLIGHT, 1);
     l->stepped_at = lw__freezer_integer(w, name, "sample of the last step", LW_SLICE_LAW, 1);

@@ -425,8 +425,8 @@ static int plain_dac(const lw__dac *d)
     if (d == NULL || d->drives.n != 1)
         return 0;
     const lw__group *g = d->drives.list[0].group;
-    return d->n_phases == 0 && d->plain && d->tripped < 0 && d->log < 0 && !d->newest &&
-           d->observers.words == NULL && d->drives.list[0].delay == 0 &&
+    return d->n_phases == 0 && d->plain && !d->observed && !d->gaps && d->tripped < 0 &&
+           d->log < 0 && !d->newest && d->observers.words == NULL && d->drives.list[0].delay == 0 &&
            g->observers.words == NULL && g->n_generators == 0 && g->motion == NULL;
 }
 

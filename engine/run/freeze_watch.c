@@ -27,11 +27,14 @@ static int needs_of(lw_metric_kind kind)
     case LW_METRIC_PEAK:
     case LW_METRIC_PEAK_TIME:
     case LW_METRIC_OVERSHOOT:
+    case LW_METRIC_RIPPLE:
+    case LW_METRIC_UNDERSHOOT:
         return LW__NEED_EXTREMES;
     case LW_METRIC_MEAN:
     case LW_METRIC_SATURATION_TIME:
         return LW__NEED_MEAN;
     case LW_METRIC_RMS:
+    case LW_METRIC_EFFORT:
         return LW__NEED_SQUARE;
     case LW_METRIC_IAE:
         return LW__NEED_ABSOLUTE;
@@ -43,23 +46,50 @@ static int needs_of(lw_metric_kind kind)
     case LW_METRIC_ERROR_PEAK:
         return LW__NEED_ERROR_PEAK;
     case LW_METRIC_SETTLING:
-        return LW__NEED_SETTLING;
     case LW_METRIC_RISE:
-        return LW__NEED_RISE;
+    case LW_METRIC_ITSE:
+    case LW_METRIC_MEAN_ERROR:
+    case LW_METRIC_STEADY_ERROR:
+    case LW_METRIC_VARIATION:
+    case LW_METRIC_REVERSALS:
+    case LW_METRIC_CHATTER:
+    case LW_METRIC_MASK_VIOLATION:
+    case LW_METRIC_MASK_TIME:
+    case LW_METRIC_MASK_FIRST:
+        return LW__NEED_OWN;
     default:
         return 0;
     }
 }
 
-static int needs_level(lw_metric_kind kind)
+static int needs_level(const lw_metric_def *def)
 {
-    return kind != LW_METRIC_MAXIMUM && kind != LW_METRIC_MINIMUM && kind != LW_METRIC_MEAN &&
-           kind != LW_METRIC_RMS && kind != LW_METRIC_FINAL && kind != LW_METRIC_SATURATION_TIME;
+    switch (def->kind) {
+    case LW_METRIC_PEAK:
+    case LW_METRIC_PEAK_TIME:
+    case LW_METRIC_OVERSHOOT:
+    case LW_METRIC_UNDERSHOOT:
+    case LW_METRIC_SETTLING:
+    case LW_METRIC_IAE:
+    case LW_METRIC_ISE:
+    case LW_METRIC_ITAE:
+    case LW_METRIC_ITSE:
+    case LW_METRIC_ERROR_RMS:
+    case LW_METRIC_ERROR_PEAK:
+    case LW_METRIC_MEAN_ERROR:
+    case LW_METRIC_STEADY_ERROR:
+        return 1;
+    case LW_METRIC_RISE:
+        return isnan(def->low_value);
+    default:
+        return 0;
+    }
 }
 
-static int level_first(lw_metric_kind kind)
+static int level_first(const lw_metric_def *def)
 {
-    return kind == LW_METRIC_SETTLING || kind == LW_METRIC_RISE;
+    return def->kind == LW_METRIC_SETTLING ||
+           (def->kind == LW_METRIC_RISE && isnan(def->low_value));
 }
 
 static lw_status metric_error(lw__freezer *w, const lw_metric_def *def, const char *text)
@@ -88,6 +118,29 @@ static lw_status loop_metric(lw__freezer *w, lw__metric *m)
     int cells = m->def.kind == LW_METRIC_LATENCY_PERCENTILE ? LW__CELLS : 0;
     m->cells = lw__freezer_integer(w, m->def.name, "histogram", LW_SLICE_METRIC, cells);
     return m->cells >= 0 ? LW_OK : LW_ERR_MEMORY;
+}
+
+// ---- of a dac's output
+
+static int of_output(lw_metric_kind kind)
+{
+    return kind == LW_METRIC_OUTPUT_AGE || kind == LW_METRIC_OUTPUT_AGE_MEAN;
+}
+
+static lw_status output_metric(lw__freezer *w, lw__metric *m)
+{
+    lw_frozen *z = w->z;
+    m->track = m->loop = -1;
+    for (int i = 0; i < z->n_dacs; i++)
+        if (strcmp(z->dacs[i].item->def.name, m->def.of) == 0) {
+            z->dacs[i].observed = 1;
+            m->aged = &z->dacs[i];
+        }
+    if (m->aged == NULL)
+        return lw__fail_at(m->def.origin, w->err, LW_ERR_NAME, "metric \"%s\": of: no dac \"%s\"",
+                           m->def.name, m->def.of);
+    m->own = lw__freezer_double(w, m->def.name, "sum, weight, largest", LW_SLICE_METRIC, LW__N_OWN);
+    return m->own >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
 // ---- of a track
@@ -269,13 +322,17 @@ static lw_status track_metric(lw__freezer *w, lw__metric *m)
     lw__track t = {.from = def->from,
                    .until = def->until == LW_NEVER ? z->lasts : def->until,
                    .base = def->base};
+    if (def->kind == LW_METRIC_STEADY_ERROR) {
+        lw_tick last = def->last > 0 ? def->last : (t.until - t.from) / 10;
+        t.from = t.until - t.from > last ? t.until - last : t.from;
+    }
     m->loop = -1;
     LW__TRY(track_signal(w, &t, def));
     LW__TRY(track_level(w, &t, def));
     LW__TRY(track_motion(w, &t, def));
-    if (needs_level(def->kind) && isnan(def->level) && def->against == NULL)
+    if (needs_level(def) && isnan(def->level) && def->against == NULL)
         return metric_error(w, def, "level or against is missing; it is measured against one");
-    if (level_first(def->kind) && isnan(t.level))
+    if (level_first(def) && isnan(t.level))
         return metric_error(w, def,
                             "level is missing; what it is taken against is not known "
                             "before the end of the run");
@@ -346,6 +403,24 @@ lw_status lw__track_watch(lw__freezer *w, lw__track *t, int op)
     return LW_OK;
 }
 
+// The mask in the frozen rig's own memory: the watch may be gone before the run.
+static lw_status keep_mask(lw__freezer *w, lw_metric_def *def)
+{
+    size_t n = (size_t)def->n_mask;
+    double *own = n > 0 ? lw__freezer_get(w, sizeof *own * 3 * n) : NULL;
+    if (n == 0)
+        return LW_OK;
+    if (own == NULL)
+        return LW_ERR_MEMORY;
+    memcpy(own, def->mask_time, sizeof *own * n);
+    memcpy(own + n, def->mask_low, sizeof *own * n);
+    memcpy(own + 2 * n, def->mask_high, sizeof *own * n);
+    def->mask_time = own;
+    def->mask_low = own + n;
+    def->mask_high = own + 2 * n;
+    return LW_OK;
+}
+
 lw_status lw__freeze_watch(lw__freezer *w)
 {
     lw_frozen *z = w->z;
@@ -371,9 +446,11 @@ lw_status lw__freeze_watch(lw__freezer *w)
         m->def.of = texts[1];
         m->def.against = texts[2];
         m->task = m->dac = -1;
-        LW__TRY(lw__job_metric_concerns(w, &m->def) ? lw__job_metric_freeze(w, m)
-                : of_loop(m->def.kind)              ? loop_metric(w, m)
-                                                    : track_metric(w, m));
+        LW__TRY(keep_mask(w, &m->def));
+        LW__TRY(of_output(m->def.kind)                ? output_metric(w, m)
+                : lw__job_metric_concerns(w, &m->def) ? lw__job_metric_freeze(w, m)
+                : of_loop(m->def.kind)                ? loop_metric(w, m)
+                                                      : track_metric(w, m));
         z->n_metrics = i + 1;
     }
     return list_watchers(w);

@@ -170,9 +170,11 @@ typedef struct lw__adc {
 
 typedef struct lw__dac {
     const lw__dac_item *item;
-    int asked, limited, held, code, saturated; // double cells
-    int pending, late;                         // double cells: registers before a latch
-    int fresh, late_fresh, job, changed_at;    // integer cells
+    int asked, limited, held, code, saturated;  // double cells
+    int pending, late;                          // double cells: registers before a latch
+    int fresh, late_fresh, job, changed_at;     // integer cells
+    int sampled, pending_sampled, late_sampled; // of values at the output and in the registers
+    int observed;                               // a metric wants to know of each output
     int latch_count, timer;
     int tripped;          // integer cell: trips that hold the output; -1: none can
     lw__event latched_by; // an event that latches, in place of a clock
@@ -230,9 +232,10 @@ typedef struct lw__loop {
     int capacity; // power of two
     double nominal;
     // cells
-    int state, outs, memory;                        // doubles: law state, outputs, timing state
-    int flight_out;                                 // doubles: capacity * n_out
-    int flight_tick, flight_job, head, count;       // integers
+    int state, outs, memory;                  // doubles: law state, outputs, timing state
+    int flight_out;                           // doubles: capacity * n_out
+    int flight_tick, flight_job, head, count; // integers
+    int flight_sampled;
     int stepped_at, missed, jobs, n_lost, n_missed; // integers; stepped_at < 0: never
     int timer;
     lw__set observers;

@@ -232,7 +232,7 @@ LW__INLINE int task_write(LW__CONTEXT, const lw__task *t, int64_t out, int64_t j
     }
     if (t->observed)
         lw__task_wrote(s, t);
-    write_outputs(LW__HERE, l, out, job);
+    write_outputs(LW__HERE, l, out, job, LW__I(l->stepped_at));
     return 1;
 }
 

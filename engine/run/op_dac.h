@@ -3,6 +3,7 @@
 #define LATEWOOD_RUN_OP_DAC_H
 
 #include "run/op_group.h"
+#include "run/track.h"
 
 #include <math.h>
 
@@ -42,7 +43,7 @@ static inline double slew_and_band(const lw__dac *d, double v, double from, doub
 }
 
 // A value reaches the output: range, slew, dead band, quantise.
-LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked)
+LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked, lw_tick sampled)
 {
     double limited = clamp(asked, d->ladder.lo, d->ladder.hi), v = limited, code;
     if (d->tripped >= 0 && LW__I(d->tripped) > 0) { // a trip holds the output
@@ -58,7 +59,10 @@ LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked)
     LW__F(d->held) = v;
     LW__F(d->code) = code;
     LW__F(d->saturated) = limited != asked;
+    if (d->observed)
+        lw__track_output(s, d, LW__I(d->changed_at), LW__I(d->sampled));
     LW__I(d->changed_at) = s->now;
+    LW__I(d->sampled) = sampled;
     if (d->log >= 0)
         lw__table_add(s, d->log,
                       (double[]){lw__seconds(s->now), asked, limited, v, code, limited != asked});
@@ -68,18 +72,20 @@ LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked)
     drive(LW__HERE, &d->drives, v);
 }
 
-LW__INLINE void dac_write(LW__CONTEXT, const lw__dac *d, double value, int64_t job)
+LW__INLINE void dac_write(LW__CONTEXT, const lw__dac *d, double value, int64_t job, lw_tick sampled)
 {
     if (d->newest && job < LW__I(d->job))
         return;
     LW__I(d->job) = job;
     if (d->n_phases == 0) {
-        dac_output(LW__HERE, d, value);
+        dac_output(LW__HERE, d, value, sampled);
     } else if (d->timer < 0 || s->now + d->set_up <= LW__I(s->z->due + d->timer)) {
         LW__F(d->pending) = value;
+        LW__I(d->pending_sampled) = sampled;
         LW__I(d->fresh) = 1;
     } else {
         LW__F(d->late) = value;
+        LW__I(d->late_sampled) = sampled;
         LW__I(d->late_fresh) = 1;
     }
 }
@@ -98,10 +104,11 @@ LW__INLINE void op_latch(LW__CONTEXT, const lw__dac *d)
         LW__I(s->z->due + d->timer) = latch_edge(d, k);
     if (LW__I(d->fresh)) {
         LW__I(d->fresh) = 0;
-        dac_output(LW__HERE, d, LW__F(d->pending));
+        dac_output(LW__HERE, d, LW__F(d->pending), LW__I(d->pending_sampled));
     }
     if (LW__I(d->late_fresh)) {
         LW__F(d->pending) = LW__F(d->late);
+        LW__I(d->pending_sampled) = LW__I(d->late_sampled);
         LW__I(d->fresh) = 1;
         LW__I(d->late_fresh) = 0;
     }

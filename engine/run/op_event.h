@@ -144,7 +144,7 @@ LW__INLINE void end_trip(LW__CONTEXT, const lw__trip *t)
     LW__I(t->active) = 0;
     LW__I(d->tripped) -= 1;
     if (LW__I(d->tripped) == 0)
-        dac_output(LW__HERE, d, LW__F(d->asked));
+        dac_output(LW__HERE, d, LW__F(d->asked), LW__I(d->sampled));
 }
 
 // The comparator clears, or the time is over: the later of both ends the trip.

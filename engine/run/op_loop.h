@@ -24,12 +24,13 @@ LW__INLINE void value_write(LW__CONTEXT, const lw__loop *l, const lw__value *v, 
 }
 
 // `out`: cell of the first output.
-LW__INLINE void write_outputs(LW__CONTEXT, const lw__loop *l, int64_t out, int64_t job)
+LW__INLINE void write_outputs(LW__CONTEXT, const lw__loop *l, int64_t out, int64_t job,
+                              lw_tick sampled)
 {
     for (const lw__target *to = l->targets, *end = to + l->n_targets; to < end; to++) {
         double value = LW__F(out + to->output);
         if (to->dac != NULL)
-            dac_write(LW__HERE, to->dac, value, job);
+            dac_write(LW__HERE, to->dac, value, job, sampled);
         else
             value_write(LW__HERE, l, to->value, value, job);
     }
@@ -39,7 +40,8 @@ LW__INLINE void op_arrive(LW__CONTEXT, const lw__loop *l)
 {
     int64_t head = LW__I(l->head), count = LW__I(l->count);
     do {
-        write_outputs(LW__HERE, l, l->flight_out + head * l->n_out, LW__I(l->flight_job + head));
+        write_outputs(LW__HERE, l, l->flight_out + head * l->n_out, LW__I(l->flight_job + head),
+                      LW__I(l->flight_sampled + head));
         head = (head + 1) & (l->capacity - 1);
         count--;
     } while (count > 0 && LW__I(l->flight_tick + head) == s->now);
@@ -52,12 +54,14 @@ LW__INLINE void copy_flight(lw__lane *s, const lw__loop *l, int64_t to, int64_t 
 {
     LW__I(l->flight_tick + to) = LW__I(l->flight_tick + from);
     LW__I(l->flight_job + to) = LW__I(l->flight_job + from);
+    LW__I(l->flight_sampled + to) = LW__I(l->flight_sampled + from);
     for (int o = 0; o < l->n_out; o++)
         LW__F(l->flight_out + to * l->n_out + o) = LW__F(l->flight_out + from * l->n_out + o);
 }
 
 // Put a write in flight, in order of instant, then job.
-LW__INLINE void send(lw__lane *s, const lw__loop *l, lw_tick at, int64_t job, int W, int L)
+LW__INLINE void send(lw__lane *s, const lw__loop *l, lw_tick at, int64_t job, lw_tick sampled,
+                     int W, int L)
 {
     int64_t head = LW__I(l->head), count = LW__I(l->count), k = count, mask = l->capacity - 1;
     if (count == l->capacity) {
@@ -69,6 +73,7 @@ LW__INLINE void send(lw__lane *s, const lw__loop *l, lw_tick at, int64_t job, in
     int64_t slot = (head + k) & mask;
     LW__I(l->flight_tick + slot) = at;
     LW__I(l->flight_job + slot) = job;
+    LW__I(l->flight_sampled + slot) = sampled;
     int o = 0;
     do
         LW__F(l->flight_out + slot * l->n_out + o) = LW__F(l->outs + o);
@@ -156,7 +161,7 @@ LW__INLINE void miss(LW__CONTEXT, const lw__loop *l, int64_t job)
     for (int t = 0; t < l->n_targets; t++) {
         const lw__dac *d = l->targets[t].dac;
         if (d != NULL && d->item->def.on_missed)
-            dac_write(LW__HERE, d, d->item->def.missed, job);
+            dac_write(LW__HERE, d, d->item->def.missed, job, -1);
     }
 }
 
@@ -226,9 +231,9 @@ LW__INLINE void op_step(LW__CONTEXT, const lw__loop *l)
     if (l->observed)
         lw__track_latency(s, l->index, o.at - sampled);
     if (o.at <= s->now)
-        write_outputs(LW__HERE, l, l->outs, job);
+        write_outputs(LW__HERE, l, l->outs, job, sampled);
     else
-        send(s, l, o.at, job, W, L);
+        send(s, l, o.at, job, sampled, W, L);
 }
 
 #endif

@@ -82,6 +82,7 @@ static void start_converters(lw__lane *s, int W, int L)
         LW__F(d->asked) = LW__F(d->limited) = LW__F(d->held) = d->item->def.start;
         LW__F(d->code) = (double)NAN;
         LW__I(d->job) = -1;
+        LW__I(d->sampled) = -1;
         if (d->timer >= 0)
             LW__I(z->due + d->timer) = d->latch_offset + d->phase[0];
     }
@@ -104,8 +105,8 @@ static void start_loops(lw__lane *s, int W, int L)
     for (int i = 0; i < z->n_metrics; i++)
         if (z->metrics[i].task >= 0 || z->metrics[i].dac >= 0)
             lw__job_metric_start(s, &z->metrics[i]);
-        else if (z->metrics[i].def.kind == LW_METRIC_RISE)
-            LW__F(z->metrics[i].own) = LW__F(z->metrics[i].own + 1) = -1;
+        else
+            lw__metric_start(s, &z->metrics[i]);
 }
 
 void lw__lane_start(lw__lane *s)
@@ -255,6 +256,7 @@ void lw_run_finish(lw_run *run)
         lw__observe_end(&run->lanes[k]);
         for (int t = 0; t < run->z->n_tracks; t++)
             lw__track_finish(&run->lanes[k], t);
+        lw__outputs_finish(&run->lanes[k]);
     }
 }
 

@@ -24,7 +24,7 @@ typedef struct dash {
     const lw__sprint *c;
     double *x, *u_anchor, *u_now;
     double *outs, *flight_out;
-    int64_t *flight_tick, *flight_job;
+    int64_t *flight_tick, *flight_job, *flight_sampled;
     int64_t mask, head, count; // writes in flight
     lw_tick sample, arrive;    // due
     lw_tick limit;             // first tick that is not ours
@@ -60,6 +60,7 @@ LW__INLINE dash begin_dash(const lw__lane *s, const lw__sprint *c, lw_tick until
               .flight_out = &s->f[l->flight_out],
               .flight_tick = &s->i[l->flight_tick],
               .flight_job = &s->i[l->flight_job],
+              .flight_sampled = &s->i[l->flight_sampled],
               .mask = l->capacity - 1,
               .head = LW__I(l->head),
               .count = LW__I(l->count),
@@ -111,7 +112,7 @@ LW__INLINE void dash_anchor(lw__lane *s, dash *d)
 }
 
 // A value reaches the plant through the dac.
-LW__INLINE void dash_output(lw__lane *s, dash *d, double asked, int64_t job)
+LW__INLINE void dash_output(lw__lane *s, dash *d, double asked, int64_t job, lw_tick sampled)
 {
     const lw__dac *dac = d->c->dac;
     const lw__group *g = d->c->group;
@@ -124,6 +125,7 @@ LW__INLINE void dash_output(lw__lane *s, dash *d, double asked, int64_t job)
     LW__F(dac->saturated) = limited != asked;
     LW__I(dac->changed_at) = s->now;
     LW__I(dac->job) = job;
+    LW__I(dac->sampled) = sampled;
     if (du == 0)
         return;
     d->u_now[d->c->channel] = v;
@@ -144,7 +146,8 @@ LW__INLINE void dash_arrive(lw__lane *s, dash *d)
     d->head = (slot + 1) & d->mask;
     d->count = 0;
     d->arrive = LW_NEVER;
-    dash_output(s, d, d->flight_out[slot * d->n_out + d->c->output], d->flight_job[slot]);
+    dash_output(s, d, d->flight_out[slot * d->n_out + d->c->output], d->flight_job[slot],
+                d->flight_sampled[slot]);
 }
 
 LW__INLINE void dash_convert(lw__lane *s, dash *d)
@@ -204,11 +207,12 @@ LW__INLINE void dash_step(lw__lane *s, dash *d, const double *const *from)
     d->stepped_at = s->now;
     LW__I(l->missed) = 0;
     if (at <= s->now) {
-        dash_output(s, d, d->outs[d->c->output], job);
+        dash_output(s, d, d->outs[d->c->output], job, s->now);
         return;
     }
     d->flight_tick[slot] = d->arrive = at;
     d->flight_job[slot] = job;
+    d->flight_sampled[slot] = s->now;
     d->count = 1;
     double *flight = d->flight_out + slot * d->n_out;
     o = 0;

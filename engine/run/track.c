@@ -22,14 +22,6 @@
 #include <math.h>
 #include <string.h>
 
-#define NOT_YET (-1.0)
-
-typedef struct piece {
-    double y[LW__POLY_MAX + 1], e[LW__POLY_MAX + 1]; // signal, and signal less wanted
-    int degree;
-    double begin, length; // since `from` [s]
-} piece;
-
 // ---- pieces
 
 // Coefficients of a signal over the stretch that began at `began`, from tick t on.
@@ -76,7 +68,7 @@ static void note_extreme(lw__lane *s, const lw__track *t, double value, double a
     }
 }
 
-static int turning_points(int degree, const double *c, double *roots)
+int lw__turning_points(int degree, const double *c, double *roots)
 {
     double d[LW__POLY_MAX + 1];
     for (int k = 1; k <= degree; k++)
@@ -84,33 +76,33 @@ static int turning_points(int degree, const double *c, double *roots)
     return degree > 0 ? lw__poly_roots(degree - 1, d, roots) : 0;
 }
 
-static void extremes(lw__lane *s, const lw__track *t, const piece *p)
+static void extremes(lw__lane *s, const lw__track *t, const lw__piece *p)
 {
     double swing = lw__poly_swing(p->degree, p->y), roots[LW__POLY_MAX];
     if (p->y[0] + swing <= *sum_of(s, t, LW__SUM_MAXIMUM) &&
         p->y[0] - swing >= *sum_of(s, t, LW__SUM_MINIMUM))
         return;
     note_extreme(s, t, p->y[0], p->begin);
-    int n = turning_points(p->degree, p->y, roots);
+    int n = lw__turning_points(p->degree, p->y, roots);
     for (int k = 0; k < n; k++)
         note_extreme(s, t, lw__poly_value(p->degree, p->y, roots[k]),
                      p->begin + roots[k] * p->length);
     note_extreme(s, t, lw__poly_value(p->degree, p->y, 1), p->begin + p->length);
 }
 
-static void error_peak(lw__lane *s, const lw__track *t, const piece *p)
+static void error_peak(lw__lane *s, const lw__track *t, const lw__piece *p)
 {
     double *peak = sum_of(s, t, LW__SUM_ERROR_PEAK), roots[LW__POLY_MAX];
     if (fabs(p->e[0]) + lw__poly_swing(p->degree, p->e) <= *peak)
         return;
     *peak = fmax(*peak, fmax(fabs(p->e[0]), fabs(lw__poly_value(p->degree, p->e, 1))));
-    int n = turning_points(p->degree, p->e, roots);
+    int n = lw__turning_points(p->degree, p->e, roots);
     for (int k = 0; k < n; k++)
         *peak = fmax(*peak, fabs(lw__poly_value(p->degree, p->e, roots[k])));
 }
 
 // Integrals of |e| and of time times |e|: between the roots of e the sign is one.
-static void absolute(lw__lane *s, const lw__track *t, const piece *p)
+static void absolute(lw__lane *s, const lw__track *t, const lw__piece *p)
 {
     double edges[LW__POLY_MAX + 2], timed[LW__POLY_MAX + 2];
     int n = lw__poly_roots(p->degree, p->e, edges), degree = p->degree;
@@ -130,56 +122,7 @@ static void absolute(lw__lane *s, const lw__track *t, const piece *p)
     }
 }
 
-// Roots of y - level on the piece.
-static int crossings(const piece *p, double level, double *roots)
-{
-    double c[LW__POLY_MAX + 1];
-    memcpy(c, p->y, sizeof(double) * (size_t)(p->degree + 1));
-    c[0] -= level;
-    return lw__poly_roots(p->degree, c, roots);
-}
-
-static void settling(lw__lane *s, const lw__metric *m, const lw__track *t, const piece *p)
-{
-    int W = s->width, L = s->lane;
-    double band = m->def.band * fabs(t->level - *sum_of(s, t, LW__SUM_BASE));
-    double off = fabs(p->y[0] - t->level), swing = lw__poly_swing(p->degree, p->y);
-    double *last = &LW__F(m->own), *outside = &LW__F(m->own + 1);
-    *outside = 0;
-    if (off + swing <= band)
-        return;
-    if (fabs(lw__poly_value(p->degree, p->y, 1) - t->level) > band) {
-        *outside = 1;
-        *last = p->begin + p->length;
-        return;
-    }
-    double roots[LW__POLY_MAX], latest = off > band ? 0 : NOT_YET;
-    for (int side = -1; side <= 1; side += 2) {
-        int n = crossings(p, t->level + side * band, roots);
-        latest = n > 0 && roots[n - 1] > latest ? roots[n - 1] : latest;
-    }
-    if (latest >= 0)
-        *last = p->begin + latest * p->length;
-}
-
-static void rising(lw__lane *s, const lw__metric *m, const lw__track *t, const piece *p)
-{
-    int W = s->width, L = s->lane;
-    double base = *sum_of(s, t, LW__SUM_BASE), span = t->level - base;
-    for (int k = 0; k < 2; k++) {
-        double *at = &LW__F(m->own + k);
-        double level = base + (k == 0 ? m->def.low : m->def.high) * span, roots[LW__POLY_MAX];
-        if (*at != NOT_YET)
-            continue;
-        if ((p->y[0] - level) * span >= 0)
-            *at = p->begin;
-        else if (fabs(p->y[0] - level) <= lw__poly_swing(p->degree, p->y) &&
-                 crossings(p, level, roots) > 0)
-            *at = p->begin + roots[0] * p->length;
-    }
-}
-
-static void take_piece(lw__lane *s, int track, const piece *p)
+static void take_piece(lw__lane *s, int track, const lw__piece *p)
 {
     const lw__track *t = &s->z->tracks[track];
     int needs = t->needs;
@@ -197,13 +140,9 @@ static void take_piece(lw__lane *s, int track, const piece *p)
         absolute(s, t, p);
     if (needs & LW__NEED_ERROR_PEAK)
         error_peak(s, t, p);
-    for (int k = 0; (needs & (LW__NEED_SETTLING | LW__NEED_RISE)) && k < s->z->n_metrics; k++) {
-        const lw__metric *m = &s->z->metrics[k];
-        if (m->track == track && m->def.kind == LW_METRIC_SETTLING)
-            settling(s, m, t, p);
-        if (m->track == track && m->def.kind == LW_METRIC_RISE)
-            rising(s, m, t, p);
-    }
+    for (int k = 0; (needs & LW__NEED_OWN) && k < s->z->n_metrics; k++)
+        if (s->z->metrics[k].track == track)
+            lw__metric_piece(s, &s->z->metrics[k], t, p);
     *sum_of(s, t, LW__SUM_SECONDS) += p->length;
     *sum_of(s, t, LW__SUM_FINAL) = lw__poly_value(p->degree, p->y, 1);
     *sum_of(s, t, LW__SUM_WANTED) =
@@ -242,7 +181,7 @@ void lw__track_stretch(lw__lane *s, int track, const lw__stretch *st)
     double most = lw_tick_seconds(t->piece), offset = lw_tick_seconds(st->anchor - t->from);
     while (lo < st->end) {
         double hi = st->end - lo > most ? lo + most : st->end, r[LW__POLY_MAX + 1];
-        piece p = {.begin = offset + lo, .length = hi - lo};
+        lw__piece p = {.begin = offset + lo, .length = hi - lo};
         part_series(s, t, &t->of, LW__F(t->held), st, lo, hi, p.y);
         part_series(s, t, &t->against, LW__F(t->wanted), st, lo, hi, r);
         for (int k = 0; k <= LW__POLY_MAX; k++) {
@@ -301,9 +240,9 @@ static void close_stretch(lw__lane *s, int track)
     while (at < s->now) {
         lw_tick end = at + t->piece < s->now ? at + t->piece : s->now;
         double r[LW__POLY_MAX + 1];
-        piece p = {.degree = t->degree,
-                   .begin = lw_tick_seconds(at - t->from),
-                   .length = lw_tick_seconds(end - at)};
+        lw__piece p = {.degree = t->degree,
+                       .begin = lw_tick_seconds(at - t->from),
+                       .length = lw_tick_seconds(end - at)};
         signal_series(s, t, &t->of, held, began, at, p.length, p.y);
         signal_series(s, t, &t->against, wanted, began, at, p.length, r);
         for (int k = 0; k <= p.degree; k++)
@@ -363,6 +302,16 @@ void lw__track_update(lw__lane *s, int track)
         begin_stretch(s, t);
     if (*due == s->now)
         *due = s->now < t->until && t->until != LW_NEVER ? t->until : LW_NEVER;
+}
+
+// What stands at outputs stood until the end.
+void lw__outputs_finish(lw__lane *s)
+{
+    int W = s->width, L = s->lane;
+    for (int k = 0; k < s->z->n_dacs; k++)
+        if (s->z->dacs[k].observed)
+            lw__track_output(s, &s->z->dacs[k], LW__I(s->z->dacs[k].changed_at),
+                             LW__I(s->z->dacs[k].sampled));
 }
 
 void lw__track_finish(lw__lane *s, int track)
@@ -428,6 +377,38 @@ static double loop_metric(const lw__lane *s, const lw__metric *m)
     }
 }
 
+// ---- the age of what stands at an output
+
+// What stands at the output of a dac from `from` to `to`, sampled at `sampled`.
+static void take_age(lw__lane *s, const lw__metric *m, lw_tick from, lw_tick to, lw_tick sampled)
+{
+    int W = s->width, L = s->lane;
+    from = from < m->def.from ? m->def.from : from;
+    to = to > m->def.until ? m->def.until : to;
+    if (to <= from || sampled < 0)
+        return;
+    double length = lw_tick_seconds(to - from), oldest = lw_tick_seconds(to - sampled);
+    LW__F(m->own) += 0.5 * (lw_tick_seconds(from - sampled) + oldest) * length;
+    LW__F(m->own + 1) += length;
+    LW__F(m->own + 2) = fmax(LW__F(m->own + 2), oldest);
+}
+
+void lw__track_output(lw__lane *s, const lw__dac *dac, lw_tick before, lw_tick sampled)
+{
+    for (int k = 0; k < s->z->n_metrics; k++)
+        if (s->z->metrics[k].aged == dac)
+            take_age(s, &s->z->metrics[k], before, s->now, sampled);
+}
+
+static double output_metric(const lw__lane *s, const lw__metric *m)
+{
+    int W = s->width, L = s->lane;
+    if (LW__F(m->own + 1) == 0)
+        return (double)NAN;
+    return m->def.kind == LW_METRIC_OUTPUT_AGE ? LW__F(m->own + 2)
+                                               : LW__F(m->own) / LW__F(m->own + 1);
+}
+
 // ---- metrics of a track
 
 typedef struct reading {
@@ -454,17 +435,13 @@ static double overshoot(const reading *r)
     return beyond > 0 ? beyond : 0;
 }
 
-static double settling_time(const lw__lane *s, const lw__metric *m)
+static double undershoot(const reading *r)
 {
-    int W = s->width, L = s->lane;
-    return LW__F(m->own + 1) != 0 ? (double)NAN : LW__F(m->own);
-}
-
-static double rise_time(const lw__lane *s, const lw__metric *m)
-{
-    int W = s->width, L = s->lane;
-    double low = LW__F(m->own), high = LW__F(m->own + 1);
-    return low == NOT_YET || high == NOT_YET ? (double)NAN : high - low;
+    double base = r->sums[LW__SUM_BASE], span = r->level - base;
+    if (span == 0)
+        return (double)NAN;
+    double beyond = span > 0 ? base - r->sums[LW__SUM_MINIMUM] : r->sums[LW__SUM_MAXIMUM] - base;
+    return beyond > 0 ? beyond / fabs(span) : 0;
 }
 
 static double track_metric(const lw__lane *s, const lw__metric *m)
@@ -488,10 +465,12 @@ static double track_metric(const lw__lane *s, const lw__metric *m)
         return at;
     case LW_METRIC_OVERSHOOT:
         return overshoot(&r);
-    case LW_METRIC_SETTLING:
-        return settling_time(s, m);
-    case LW_METRIC_RISE:
-        return rise_time(s, m);
+    case LW_METRIC_RIPPLE:
+        return r.sums[LW__SUM_MAXIMUM] - r.sums[LW__SUM_MINIMUM];
+    case LW_METRIC_UNDERSHOOT:
+        return undershoot(&r);
+    case LW_METRIC_EFFORT:
+        return r.sums[LW__SUM_SQUARE];
     case LW_METRIC_MEAN:
         return r.sums[LW__SUM_VALUE] / seconds;
     case LW_METRIC_SATURATION_TIME:
@@ -511,7 +490,7 @@ static double track_metric(const lw__lane *s, const lw__metric *m)
     case LW_METRIC_ERROR_PEAK:
         return r.sums[LW__SUM_ERROR_PEAK];
     default:
-        return (double)NAN;
+        return lw__metric_own(s, m, t, seconds);
     }
 }
 
@@ -520,5 +499,7 @@ double lw__metric_value(const lw__lane *s, int metric)
     const lw__metric *m = &s->z->metrics[metric];
     if (m->task >= 0 || m->dac >= 0)
         return lw__job_metric_value(s, m);
+    if (m->aged != NULL)
+        return output_metric(s, m);
     return m->track < 0 ? loop_metric(s, m) : track_metric(s, m);
 }

@@ -60,6 +60,17 @@ static const char *keep(lw_watch *watch, const char *text, int *failed)
     return copy;
 }
 
+static const double *keep_numbers(lw_watch *watch, int n, const double *from, int *failed)
+{
+    if (n == 0)
+        return NULL;
+    double *copy = lw__arena_get(watch->arena, sizeof *copy * (size_t)n);
+    if (copy != NULL)
+        memcpy(copy, from, sizeof *copy * (size_t)n);
+    *failed |= copy == NULL;
+    return copy;
+}
+
 static lw_status check_record(const lw_record_def *def, lw_error *err)
 {
     if (def->signal == NULL || def->signal[0] == 0)
@@ -127,6 +138,9 @@ lw_metric_def lw_metric_default(lw_metric_kind kind)
                            .high = 0.9,
                            .share = 0.99,
                            .window = 10,
+                           .band_value = (double)NAN,
+                           .low_value = (double)NAN,
+                           .high_value = (double)NAN,
                            .from = 0,
                            .until = LW_NEVER};
 }
@@ -136,6 +150,22 @@ static lw_status bad(const lw_metric_def *def, lw_error *err, const char *field,
 {
     return lw__fail_at(def->origin, err, LW_ERR_ARGUMENT, "metric \"%s\": %s is %.12g; %s",
                        def->name, field, value, range);
+}
+
+static int is_mask(lw_metric_kind kind)
+{
+    return kind == LW_METRIC_MASK_VIOLATION || kind == LW_METRIC_MASK_TIME ||
+           kind == LW_METRIC_MASK_FIRST;
+}
+
+static lw_status check_corner(const lw_metric_def *def, int k, lw_error *err)
+{
+    double t = def->mask_time[k], low = def->mask_low[k], high = def->mask_high[k];
+    if (!(t >= 0 && t < 9e6) || (k > 0 && !(t > def->mask_time[k - 1])))
+        return bad(def, err, "mask: time", t, "times rise, from 0 on");
+    if (isinf(low) || isinf(high) || low > high)
+        return bad(def, err, "mask: low", low, "at most high, and finite, is wanted");
+    return LW_OK;
 }
 
 static lw_status check_metric(const lw_metric_def *def, lw_error *err)
@@ -153,6 +183,23 @@ static lw_status check_metric(const lw_metric_def *def, lw_error *err)
         return bad(def, err, "low", def->low, "0 <= low < high <= 1 is wanted");
     if (!(def->share > 0 && def->share < 1))
         return bad(def, err, "share", def->share, "between 0 and 1 is wanted");
+    if (!isnan(def->band_value) && !(def->band_value > 0))
+        return bad(def, err, "band_value", def->band_value, "above 0 is wanted");
+    if (isnan(def->low_value) != isnan(def->high_value) || def->low_value == def->high_value)
+        return bad(def, err, "low_value", def->low_value,
+                   "two different levels, low_value and high_value, are wanted");
+    if (!(def->step >= 0) || isinf(def->step))
+        return bad(def, err, "step", def->step, "permitted from 0 on");
+    if (def->last < 0)
+        return bad(def, err, "last", lw_tick_seconds(def->last), "permitted from 0 on");
+    if (is_mask(def->kind) != (def->n_mask > 0))
+        return lw__fail_at(def->origin, err, LW_ERR_ARGUMENT, "metric \"%s\": mask %s", def->name,
+                           def->n_mask > 0 ? "has no place in this metric" : "is missing");
+    for (int k = 0; k < def->n_mask; k++) {
+        lw_status status = check_corner(def, k, err);
+        if (status != LW_OK)
+            return status;
+    }
     if (def->from < 0 || def->until <= def->from)
         return bad(def, err, "from", lw_tick_seconds(def->from),
                    "a window begins at 0 or later and ends after it begins");
@@ -170,6 +217,9 @@ lw_status lw_watch_metric(lw_watch *watch, const lw_metric_def *def, lw_error *e
     item.name = keep(watch, def->name, &failed);
     item.of = keep(watch, def->of, &failed);
     item.against = keep(watch, def->against, &failed);
+    item.mask_time = keep_numbers(watch, def->n_mask, def->mask_time, &failed);
+    item.mask_low = keep_numbers(watch, def->n_mask, def->mask_low, &failed);
+    item.mask_high = keep_numbers(watch, def->n_mask, def->mask_high, &failed);
     lw_metric_def *list = grow(watch->metrics, watch->n_metrics, sizeof item);
     if (list != NULL)
         watch->metrics = list;

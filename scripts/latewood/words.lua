@@ -20,7 +20,9 @@ function words.time(seconds)
 end
 
 -- Units of metrics; a kind that is not named has that of its signal, which nobody stated.
-words.units = { overshoot = "1", lost = "1", missed = "1", ["settling time"] = "s",
+words.units = { overshoot = "1", undershoot = "1", reversals = "1", chatter = "1/s",
+  ["time outside mask"] = "s", ["first outside mask"] = "s", ["output age"] = "s",
+  ["output age mean"] = "s", lost = "1", missed = "1", ["settling time"] = "s",
   ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
   ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
 
@@ -42,7 +44,7 @@ local never = { ["settling time"] = "never", ["rise time"] = "never" }
 -- A metric's value as a reader expects it: shares in percent, times with a unit.
 function words.metric(kind, value)
   if value ~= value then return never[kind] or "undefined" end
-  if kind == "overshoot" then return ("%.3g %%"):format(value * 100) end
+  if kind == "overshoot" or kind == "undershoot" then return ("%.3g %%"):format(value * 100) end
   if words.units[kind] == "s" then return words.time(value) end
   return ("%.5g"):format(value)
 end

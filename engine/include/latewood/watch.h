@@ -89,7 +89,21 @@ LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char
     X(ISE, "ise")                                                                                  \
     X(ITAE, "itae") /* time counts since `from` */                                                 \
     X(ERROR_RMS, "error rms")                                                                      \
-    X(ERROR_PEAK, "error peak")           /* largest |error| */                                    \
+    X(ERROR_PEAK, "error peak") /* largest |error| */                                              \
+    X(RIPPLE, "ripple")         /* largest less least value */                                     \
+    X(UNDERSHOOT, "undershoot") /* farthest beyond the base, away from the level, as overshoot */  \
+    X(ITSE, "itse")             /* integral of time since `from` and squared error */              \
+    X(MEAN_ERROR, "mean error")                                                                    \
+    X(STEADY_ERROR, "steady-state error") /* mean error over the `last` part of the window */      \
+    X(EFFORT, "control effort")           /* integral of the squared signal */                     \
+    X(VARIATION, "total variation")       /* of the signal: its way up and down, jumps included */ \
+    X(REVERSALS, "reversals")             /* turns of more than `step` */                          \
+    X(CHATTER, "chatter")                 /* reversals a second */                                 \
+    X(MASK_VIOLATION, "mask violation")   /* farthest outside the mask, 0 inside */                \
+    X(MASK_TIME, "time outside mask")     /* [s] */                                                \
+    X(MASK_FIRST, "first outside mask")   /* [s] since `from`; NAN: never */                       \
+    X(OUTPUT_AGE, "output age") /* of a dac [s]: largest age of the sample that stands there */    \
+    X(OUTPUT_AGE_MEAN, "output age mean") /* over time */                                          \
     X(SATURATION_TIME, "saturation time") /* of a dac [s] */                                       \
     /* of a loop or a task [s]: sample to write */                                                 \
     X(LATENCY_PERCENTILE, "latency percentile") /* by a histogram */                               \
@@ -113,17 +127,23 @@ LW_API int lw_metric_count(void);
 typedef struct lw_metric_def {
     const char *origin, *name;
     lw_metric_kind kind;
-    const char *of;      // a signal; for saturation time a dac; for latency, lost and
-                         // missed a loop or a task; for times and counts of jobs a task
+    const char *of; // a signal; for saturation time and output age a dac; for latency, lost and
+                    // missed a loop or a task; for times and counts of jobs a task
     const char *against; // signal the error is taken against (a source or a value), or NULL
     double level;        // level where against is NULL; NAN: none given
     double base; // level at the start; NAN: `against` at `from`, or the signal's value at `from`
                  // where that equals the level
     double band; // share of |level - base| for settling (default 0.02)
-    double low, high;    // shares for rise (default 0.1, 0.9)
-    double share;        // of a percentile, in (0, 1)
-    int64_t window;      // jobs of "misses within a window"
-    lw_tick from, until; // window; LW_NEVER: the end of the run
+    double low, high;  // shares for rise (default 0.1, 0.9)
+    double share;      // of a percentile, in (0, 1)
+    double band_value; // settling: half the band as a value, in place of the share; NAN: none
+    double low_value, high_value; // rise: levels in place of shares; NAN: none
+    double step;                  // reversals: turns no larger than this are none (default 0)
+    lw_tick last;                 // steady-state error: length of the last part; 0: a tenth
+    int n_mask;                   // mask: corners, times [s] since `from` rising from 0
+    const double *mask_time, *mask_low, *mask_high; // straight lines between; NAN: no limit there
+    int64_t window;                                 // jobs of "misses within a window"
+    lw_tick from, until;                            // window; LW_NEVER: the end of the run
 } lw_metric_def;
 LW_API lw_metric_def lw_metric_default(lw_metric_kind kind);
 LW_API lw_status lw_watch_metric(lw_watch *watch, const lw_metric_def *def, lw_error *err);
