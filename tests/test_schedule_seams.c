@@ -5,6 +5,7 @@
 #include "loops.h"
 
 #include "base/alloc.h"
+#include "run/freeze.h"
 
 #include <latewood/cpu.h>
 #include <latewood/timing.h>
@@ -307,6 +308,72 @@ START_TEST(observing_and_adding_change_no_other_byte)
 }
 END_TEST
 
+// Tasks that only take time, with handlers, overload, costs and random arrivals; in odd sets a law
+// on the same core; above 12 tasks releases stand in a tree.
+static lw_rig *background(int set)
+{
+    static char name[20][16];
+    lw_rig *rig = NULL;
+    OK(lw_rig_new("background", &rig, e));
+    add_controlled(rig);
+    lw_core_def c = lw_core_default();
+    c.name = "core";
+    c.urgent = LW_URGENT_SMALLER;
+    c.context_switch = (lw_span){set % 3 * 0.4e-6, 0};
+    c.dispatch_cost = (lw_span){set % 2 * 0.1e-6, 0};
+    OK(lw_rig_add_core(rig, &c, e));
+    int n = set < 3 ? 3 + set : 15;
+    for (int i = 0; i < n; i++) {
+        snprintf(name[i], sizeof name[i], "task %d", i);
+        double between = (20 + 13 * i) * 1e-6;
+        builder b =
+            begin_task(rig, name[i], "core", i, uniform(0.2 * between / n, 2.2 * between / n));
+        b.task.interrupt = i == 2;
+        b.task.overrun = i % 2 ? LW_OVERRUN_SKIP : LW_OVERRUN_QUEUE;
+        b.task.queue = 1 + i % 3;
+        if (i % 3 == 1)
+            b.task.arrives = b.own[1] = uniform(0.5 * between, 1.5 * between);
+        else
+            b.task.every = (lw_period){(int64_t)(between * 1e12) * 7 + 3, 7};
+        add(&b);
+    }
+    builder b = begin_task(rig, "control", "core", 100, uniform(3e-6, 20e-6));
+    b.task.released_by = "adc";
+    if (set % 2 == 1)
+        compute(&b, "asked", "adc", "dac");
+    else
+        lw_timing_free(b.own[0]);
+    return rig;
+}
+
+START_TEST(the_compiled_driver_of_cores_leaves_the_bytes_of_the_queue_driver)
+{
+    lw_rig *rig = background(_i);
+    lw_frozen *quick = NULL, *queue = NULL;
+    OK(lw__freeze(rig, NULL, 20 * MS, 0, &quick, e));
+    OK(lw__freeze(rig, NULL, 20 * MS, 1, &queue, e));
+    lw_run *a = run_of(quick, 1, 4, 0), *b = run_of(queue, 1, 4, 0);
+    for (int k = 1; k <= 40; k++) {
+        lw_tick until = k * 500 * US + k % 7 * 3 * US;
+        ck_assert_int_eq(lw_run_advance(a, until), LW_OK);
+        ck_assert_int_eq(lw_run_advance(b, until), LW_OK);
+        for (int i = 0; i < lw_frozen_n_slices(quick); i++) {
+            lw_slice s = lw_frozen_slice(quick, i);
+            const void *mine = cells(a, quick, &s, 0), *other = cells(b, queue, &s, 0);
+            ck_assert_msg(memcmp(mine, other, (size_t)(8 * s.count)) == 0, "%s of %s differs at %d",
+                          s.name, s.owner, k);
+        }
+        ck_assert(memcmp(lw_run_block(a), lw_run_block(b), lw_run_block_size(a)) == 0);
+        ck_assert_int_eq(lw_run_n_instants(a, 0), lw_run_n_instants(b, 0));
+    }
+    lw_run_free(a);
+    lw_run_free(b);
+    lw_frozen_free(quick);
+    lw_frozen_free(queue);
+    lw_rig_free(rig);
+}
+END_TEST
+
 START_TEST(a_copied_block_goes_on_as_the_run)
 {
     lw_frozen *z = freeze((extras){0, 1, 0});
@@ -435,6 +502,7 @@ int main(void)
     tcase_add_loop_test(t, runs_side_by_side_are_runs_alone, 0, 1);
     tcase_add_loop_test(t, runs_side_by_side_are_runs_alone, 70, 71);
     tcase_add_loop_test(t, observing_and_adding_change_no_other_byte, 0, 4);
+    tcase_add_loop_test(t, the_compiled_driver_of_cores_leaves_the_bytes_of_the_queue_driver, 0, 6);
     tcase_add_test(t, a_copied_block_goes_on_as_the_run);
     tcase_add_test(t, reading_in_between_changes_nothing);
     tcase_add_test(t, a_drained_run_has_no_job_left_in_any_lane);

@@ -21,6 +21,7 @@
 // 4. What an operation does depends on cells, the frozen rig and the present tick only.
 
 #include "run/driver.h"
+#include "run/dash.h"
 
 #include "run/op_adc.h"
 #include "run/op_cpu.h"
@@ -198,6 +199,16 @@ LW__INLINE void instant(LW__CONTEXT)
     p->op = -1;
 }
 
+// Cores whose next instants are theirs alone go on by themselves.
+LW__INLINE int64_t dash_all(lw__lane *s, lw_tick until)
+{
+    int64_t handled = 0;
+    for (int i = 0; i < s->z->n_cores; i++)
+        if (s->z->cores[i].quick != 0)
+            handled += lw__dash_run(s, &s->z->cores[i], until);
+    return handled;
+}
+
 LW__INLINE int64_t drive_lane(lw__lane *s, lw_tick until, int W, int L, int N)
 {
     lw__pass own = {.due_words = s->due, .next_words = s->next, .op = -1}, *p = &own;
@@ -206,6 +217,8 @@ LW__INLINE int64_t drive_lane(lw__lane *s, lw_tick until, int W, int L, int N)
     while (s->status == LW_OK) {
         if (N == 1 && W == 1 && s->z->sprint != NULL)
             handled += lw__sprint_run(s, s->z->sprint, until);
+        if (W == 1)
+            handled += dash_all(s, until);
         lw_tick next = s->status == LW_OK ? look_ahead(s, p, W, L, N) : LW_NEVER;
         if (s->status != LW_OK)
             break;

@@ -3,6 +3,7 @@
 // An operation's number is its place in the order: phase, kind, place of declaration, part. A set
 // of operations is a row of bits, so that the next operation due is the lowest bit.
 
+#include "run/dash.h"
 #include "run/event.h"
 #include "run/freezer.h"
 
@@ -500,6 +501,8 @@ lw_status lw__freeze_order(lw__freezer *w)
     LW__TRY(order_of_events(w));
     LW__TRY(watchers(w));
     LW__TRY(find_sprint(w));
+    for (int i = 0; i < z->n_cores && !w->general; i++)
+        z->cores[i].quick = lw__dash_tasks(&z->cores[i]);
     LW__TRY(lw__set_put(w, &z->no_ops, -1));
     LW__TRY(lw__set_put(w, &z->phase_8, -1));
     for (int i = 0; i < z->n_ops; i++)

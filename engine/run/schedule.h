@@ -110,6 +110,7 @@ typedef struct lw__core {
     const int *numbers;    // of the tasks in the rig, by rank
     uint64_t handlers;     // ranks of interrupt handlers
     const uint64_t *peers; // by rank: equal priority
+    uint64_t quick;        // ranks that the compiled driver of cores serves (dash.h)
     int plain;             // strict order of ranks, no resources: the lowest rank runs
     lw_tick switch_cost, dispatch_cost, release_cost;
     lw_period timer_tick;
