@@ -144,7 +144,7 @@ static lw_watch *observe(extras x)
         OK(lw_watch_events(watch, NULL, "bridge", 0, e));
         OK(lw_watch_events(watch, NULL, "speed loop", 0, e));
     }
-    for (int kind = 0; x.metrics && kind < lw_metric_count(); kind++) {
+    for (int kind = 0; x.metrics && kind <= LW_METRIC_MISSED; kind++) {
         lw_metric_def m = lw_metric_default((lw_metric_kind)kind);
         int of_loop = strstr(lw_metric_words(m.kind), "latency") != NULL ||
                       m.kind == LW_METRIC_LOST || m.kind == LW_METRIC_MISSED;
