@@ -13,6 +13,7 @@
 #include "io/source.h"
 
 #include <latewood/elementary.h>
+#include <latewood/quantity.h>
 
 #include <math.h>
 #include <stdint.h>
@@ -555,16 +556,42 @@ static double row(const lw__lane *s, const lw__group *g, int number)
     return form_outputs(&c.b, since, c.x) ? (double)NAN : c.b.y[number];
 }
 
+// "atol 1e-10", or "atol 1e-10 to 1e-06".
+static void tolerance_words(const lw__flow_group *m, char words[64])
+{
+    double most = 0, least = (double)INFINITY;
+    for (int i = 0; i < m->n_x; i++) {
+        most = fmax(most, m->atol[i]);
+        least = fmin(least, m->atol[i]);
+    }
+    if (most > least)
+        snprintf(words, 64, "atol %.3g to %.3g", least, most);
+    else
+        snprintf(words, 64, "atol %.3g", most);
+}
+
 static void describe(const lw__group *g, void (*say)(void *context, const char *text),
                      void *context)
 {
     const lw__flow_group *m = g->moves;
-    char text[400];
+    const char *quote = g->grid_adc >= 0 ? "\"" : "";
+    char text[480], words[64];
+    tolerance_words(m, words);
     snprintf(text, sizeof text,
-             "group of \"%s\": %d state%s, %d switching%s, integrated by Dormand-Prince 5(4) with "
-             "its step size carried on, rtol %.3g, atol %.3g; kinks are located",
-             g->name, m->n_x, m->n_x == 1 ? "" : "s", m->n_switches, m->n_switches == 1 ? "" : "s",
-             m->rtol, m->n_x > 0 ? m->atol[0] : 0.0);
+             "group of \"%s\": %d plant%s, %d state%s, nonlinear: Dormand-Prince 5(4), Radau IIA "
+             "where it is stiff; a step holds its error within atol + rtol |x|, rtol %.3g, %s",
+             g->name, m->n_parts, m->n_parts == 1 ? "" : "s", m->n_x, m->n_x == 1 ? "" : "s",
+             m->rtol, words);
+    say(context, text);
+    if (g->grid.den == 1)
+        lw_tick_format(g->grid.num, words);
+    else
+        snprintf(words, sizeof words, "%.9g Hz", 1e12 * (double)g->grid.den / (double)g->grid.num);
+    snprintf(text, sizeof text,
+             "  it moves at its samples and input changes, and at the instants of %s%s%s%s, every "
+             "%s; %d kink%s and event%s located on the way",
+             g->grid_adc >= 0 ? "adc " : "", quote, g->grid_of, quote, words, m->n_switches,
+             m->n_switches == 1 ? "" : "s", m->n_switches == 1 ? "" : "s");
     say(context, text);
 }
 
