@@ -14,13 +14,25 @@
 
 #define FRICTION 0.015
 #define HANG 0.05
+#define DRAG 0.002
 
 static int tube(void *context, double t, const double *x, const double *u, double *dx)
 {
     (void)context;
     (void)t;
     dx[0] = x[1];
-    dx[1] = (u[0] - FRICTION * lw_tanh(x[1] / 0.4) - HANG * lw_sin(x[0] + 0.3) + u[1]) / 0.0012;
+    double drag = DRAG * x[1] * fabs(x[1]) + FRICTION * lw_tanh(x[1] / 0.4);
+    dx[1] = (u[0] - drag - HANG * lw_sin(x[0] + 0.3) + u[1]) / 0.0012;
+    return 0;
+}
+
+// The drag has a kink where the tube turns round.
+static int turns_round(void *context, double t, const double *x, const double *u, double *g)
+{
+    (void)context;
+    (void)t;
+    (void)u;
+    g[0] = x[1];
     return 0;
 }
 
@@ -50,6 +62,8 @@ static lw_plant *tube_plant(double rtol)
     def.output_names = outputs;
     def.flow = tube;
     def.outputs = tube_outputs;
+    def.n_switches = 1;
+    def.switches = turns_round;
     def.direct = 0;
     return flow_plant(def, rtol > 0 ? rtol : 1e-8);
 }
@@ -424,6 +438,8 @@ static double speed_of(int mixed)
         def.state_names = states;
         def.input_names = inputs;
         def.flow = whole;
+        def.n_switches = 1;
+        def.switches = turns_round;
         lw_plant *plant = flow_plant(def, 1e-12);
         OK(lw_rig_add_plant(rig, NULL, "tube", plant, e));
         lw_plant_free(plant);
