@@ -175,26 +175,40 @@ static void add_records(lw_watch *watch)
     OK(lw_watch_events(watch, NULL, "speed adc", 0, e));
 }
 
+// Metrics of signals and loops; those of tasks have nothing here.
+static void add_metric(lw_watch *watch, lw_metric_kind kind)
+{
+    static const char *const of[] = {"tube.height", "tube.speed", "motor.torque"};
+    static const double corners[] = {0, 1e-3}, low[] = {-1, 0}, high[] = {1, 0};
+    lw_metric_def m = lw_metric_default(kind);
+    m.name = lw_metric_words(kind);
+    int of_loop =
+        strstr(m.name, "latency") != NULL || kind == LW_METRIC_LOST || kind == LW_METRIC_MISSED;
+    int of_dac = kind == LW_METRIC_SATURATION_TIME || strstr(m.name, "gap") != NULL ||
+                 strstr(m.name, "output age") != NULL;
+    if (kind >= LW_METRIC_LATENESS_MEAN && kind != LW_METRIC_GAP && kind != LW_METRIC_GAP_MEAN)
+        return;
+    m.of = of_loop ? "speed" : of_dac ? "speed dac" : of[kind % 3];
+    if (strstr(m.name, "mask") != NULL) {
+        m.n_mask = 2;
+        m.mask_time = corners;
+        m.mask_low = low;
+        m.mask_high = high;
+    }
+    m.against = of_loop ? NULL : "speed wanted";
+    m.from = 123 * US;
+    m.step = strstr(m.name, "reversals") || strstr(m.name, "chatter") ? 1e-6 : m.step;
+    OK(lw_watch_metric(watch, &m, e));
+}
+
 static lw_watch *observe(extras x)
 {
     lw_watch *watch = NULL;
     OK(lw_watch_new(&watch, e));
     if (x.records)
         add_records(watch);
-    for (int kind = 0; x.metrics && kind <= LW_METRIC_MISSED; kind++) {
-        static const char *const of[] = {"tube.height", "tube.speed", "motor.torque"};
-        lw_metric_def m = lw_metric_default((lw_metric_kind)kind);
-        int of_loop = strstr(lw_metric_words(m.kind), "latency") != NULL ||
-                      m.kind == LW_METRIC_LOST || m.kind == LW_METRIC_MISSED;
-        m.name = lw_metric_words(m.kind);
-        m.of = of_loop ? "speed" : of[kind % 3];
-        if (m.kind == LW_METRIC_SATURATION_TIME)
-            m.of = "speed dac";
-        m.against = of_loop ? NULL : "speed wanted";
-        m.from = 123 * US;
-        if (lw_metric_default(m.kind).kind == m.kind)
-            OK(lw_watch_metric(watch, &m, e));
-    }
+    for (int kind = 0; x.metrics && kind <= LW_METRIC_MISSED; kind++)
+        add_metric(watch, (lw_metric_kind)kind);
     return watch;
 }
 
