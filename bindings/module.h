@@ -29,7 +29,7 @@
 #define LW__LUA_STATISTICS(X) X(sample) X(proportion) X(rate) X(tolerance_runs)
 
 #define LW__LUA_RIG_METHODS(X)                                                                     \
-    X(plant) X(connect) X(source) X(value) X(adc) X(dac) X(loop)                                   \
+    X(plant) X(connect) X(source) X(value) X(adc) X(dac) X(pwm) X(loop)                                   \
     X(core) X(task) X(bus) X(frame) X(comparator) X(trip)                                          \
     X(freeze) X(describe) X(slices) X(start) X(run) X(close)
 #define LW__LUA_RUN_METHODS(X)                                                                     \

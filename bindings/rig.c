@@ -194,6 +194,8 @@ static const lw__lua_field adc_fields[] = {
     OPTIONAL(adc, range, "range", FIELD_RANGE, NULL),
     CHOICE(adc, rounding, "rounding", roundings),
     NUMBER(nominal, "nominal", "s"),
+    OTHER("at"),
+    OTHER("phase"),
     NUMBER(gain, "gain", NULL),
     NUMBER(bias, "bias", NULL),
     NUMBER(noise, "noise", NULL),
@@ -249,6 +251,7 @@ int lw__lua_rig_adc(lua_State *L)
     lw__lua_texts of = signals(&r, "of");
     if (p.skew.v != NULL && p.skew.n != of.n)
         lw__lua_bad(&r, "skew has %d times; one for each of %d channels is wanted", p.skew.n, of.n);
+    lw__lua_carrier_clock(&r, &p.def.every, &p.def.offset);
     double period = p.def.every.num > 0 ? lw_period_seconds(p.def.every) : 0;
     p.def.origin = r.origin;
     p.def.n_channels = of.n;

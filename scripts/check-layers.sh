@@ -24,7 +24,7 @@ BEGIN {
     owner["rig"] = "io"     # definitions of converters and loops, which io reads
     owner["watch"] = "run"
     owner["modes"] = "plant"
-    owner["event"] = "io"    # definitions of comparators and trips
+    owner["event"] = owner["pwm"] = "io"    # definitions of comparators and trips
     owner["statistics"] = owner["ledger"] = owner["crew"] = "batch"
 }
 

@@ -2,6 +2,7 @@
 // at one tick, how each group is propagated.
 
 #include "run/describe.h"
+#include "run/pwm.h"
 
 #include "io/source.h"
 #include "run/comparator.h"
@@ -120,6 +121,8 @@ static void describe_dacs(writer *w, const lw_frozen *z)
 {
     for (int i = 0; i < z->n_dacs; i++) {
         const lw__dac *d = &z->dacs[i];
+        if (d->item->is_pwm)
+            continue; // in its own words
         const lw_dac_def *def = &d->item->def;
         say(w, "dac \"%s\": drives %s%s%s; %s; starts at %s", def->name,
             def->to != NULL ? "\"" : "", def->to != NULL ? def->to : "nothing",
@@ -268,6 +271,7 @@ void lw_frozen_describe(const lw_frozen *frozen, int (*line)(void *context, cons
     describe_adcs(&w, frozen);
     describe_dacs(&w, frozen);
     describe_loops(&w, frozen);
+    lw__pwms_describe(frozen, say_plain, &w);
     lw__events_describe(frozen, say_plain, &w);
     lw__describe_cpu(&w, frozen);
     describe_groups(&w, frozen);

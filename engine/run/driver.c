@@ -29,6 +29,7 @@
 #include "run/op_event.h"
 #include "run/op_group.h"
 #include "run/op_loop.h"
+#include "run/op_pwm.h"
 #include "run/op_signal.h"
 #include "run/op_source.h"
 #include "run/record.h"
@@ -108,6 +109,15 @@ LW__INLINE void perform(LW__CONTEXT, int op)
         return;
     case LW__OP_LATCH:
         op_latch(LW__HERE, o->thing);
+        return;
+    case LW__OP_PWM_STRETCH:
+        op_pwm_stretch(LW__HERE, o->thing);
+        return;
+    case LW__OP_PWM_EDGE:
+        op_pwm_edge(LW__HERE, o->thing);
+        return;
+    case LW__OP_PWM_WRITTEN:
+        op_pwm_written(LW__HERE, o->thing);
         return;
     case LW__OP_SAMPLE:
         op_sample(LW__HERE, o->thing);

@@ -11,6 +11,7 @@
 
 #include "run/comparator.h"
 #include "run/freezer.h"
+#include "run/pwm.h"
 #include "run/schedule.h"
 
 #include <stdint.h>
@@ -36,6 +37,7 @@ static lw_status begin_frozen(lw__freezer *w, lw_tick lasts)
     z->n_tasks = rig->n_tasks;
     z->n_comparators = rig->n_comparators;
     z->n_trips = rig->n_trips;
+    z->n_pwms = rig->n_pwms;
     z->plants = lw__freezer_get(w, sizeof *z->plants * (size_t)(z->n_plants + 1));
     z->sources = lw__freezer_get(w, sizeof *z->sources * (size_t)(z->n_sources + 1));
     z->values = lw__freezer_get(w, sizeof *z->values * (size_t)(z->n_values + 1));
@@ -46,7 +48,8 @@ static lw_status begin_frozen(lw__freezer *w, lw_tick lasts)
     z->tasks = lw__freezer_get(w, sizeof *z->tasks * (size_t)(z->n_tasks + 1));
     z->comparators = lw__freezer_get(w, sizeof *z->comparators * (size_t)(z->n_comparators + 1));
     z->trips = lw__freezer_get(w, sizeof *z->trips * (size_t)(z->n_trips + 1));
-    if (!z->comparators || !z->trips)
+    z->pwms = lw__freezer_get(w, sizeof *z->pwms * (size_t)(z->n_pwms + 1));
+    if (!z->comparators || !z->trips || !z->pwms)
         return LW_ERR_MEMORY;
     if (!z->plants || !z->sources || !z->values || !z->adcs || !z->dacs || !z->loops || !z->cores ||
         !z->tasks)
@@ -76,6 +79,7 @@ static lw_status freeze_parts(lw__freezer *w)
     LW__TRY(lw__freeze_clocks(w));
     LW__TRY(lw__freeze_event_cells(w));
     LW__TRY(lw__freeze_converters(w));
+    LW__TRY(lw__freeze_pwms(w));
     LW__TRY(lw__freeze_loops(w));
     LW__TRY(lw__freeze_cores(w));
     LW__TRY(lw__freeze_events(w));

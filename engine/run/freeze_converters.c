@@ -39,8 +39,7 @@ static lw__drive feed_drive(const lw__freezer *w, const lw__feed *f)
     return (lw__drive){g, f->channel, g->channels[f->channel].delay};
 }
 
-// Groups and channels that a driver feeds; a moving source reaches them by its generators.
-static lw_status find_drives(lw__freezer *w, lw__driver_kind kind, int index, lw__drives *out)
+lw_status lw__find_drives(lw__freezer *w, lw__driver_kind kind, int index, lw__drives *out)
 {
     lw__drive *list = lw__freezer_get(w, sizeof *list * (size_t)(w->n_feeds + 1));
     if (list == NULL)
@@ -64,7 +63,7 @@ static lw_status freeze_source(lw__freezer *w, int index)
     snprintf(stream, sizeof stream, "%s.noise", name);
     s->stream = lw_stream(stream);
     if (!s->moving)
-        LW__TRY(find_drives(w, LW__DRIVER_SOURCE, index, &s->drives));
+        LW__TRY(lw__find_drives(w, LW__DRIVER_SOURCE, index, &s->drives));
     s->timer = lw__source_change(&s->item->def, 0) != LW_NEVER ? lw__freezer_timer(w) : -1;
     return s->count >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
@@ -77,7 +76,7 @@ static lw_status freeze_value(lw__freezer *w, int index)
     v->start = item->start;
     v->held = lw__freezer_double(w, v->name, "value", LW_SLICE_HELD, 1);
     v->job = lw__freezer_integer(w, v->name, "job that wrote it", LW_SLICE_HELD, 1);
-    LW__TRY(find_drives(w, LW__DRIVER_VALUE, index, &v->drives));
+    LW__TRY(lw__find_drives(w, LW__DRIVER_VALUE, index, &v->drives));
     return v->job >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
@@ -283,11 +282,11 @@ static lw_status dac_latch(lw__freezer *w, lw__dac *d, const lw_dac_def *def)
                            near ? "\"" : "");
     }
     int by_event = d->latched_by.kind != LW__EVENT_NONE;
-    d->n_phases = d->latch.num > 0 ? def->n_phases : by_event;
+    d->n_phases = d->latch.num > 0 ? def->n_phases : by_event || d->item->is_pwm == 1;
     d->set_up = ticks(def->set_up);
     for (int i = 0; i < d->n_phases; i++)
         d->phase[i] = ticks(def->phase[i]);
-    if (d->n_phases > 0 && !by_event)
+    if (d->latch.num > 0)
         d->timer = lw__freezer_timer(w);
     return LW_OK;
 }
@@ -303,7 +302,7 @@ static lw_status freeze_dac(lw__freezer *w, int index)
     d->plain = isinf(d->slew) && def->dead_band == 0;
     LW__TRY(dac_cells(w, d, def->name));
     LW__TRY(dac_latch(w, d, def));
-    return find_drives(w, LW__DRIVER_DAC, index, &d->drives);
+    return lw__find_drives(w, LW__DRIVER_DAC, index, &d->drives);
 }
 
 lw_status lw__freeze_converters(lw__freezer *w)

@@ -6,6 +6,7 @@
 #include "run/dash.h"
 #include "run/event.h"
 #include "run/freezer.h"
+#include "run/pwm.h"
 
 #include "io/source.h"
 #include "run/comparator.h"
@@ -169,6 +170,12 @@ static void list_ops(const lw_frozen *z, order *o)
     for (int i = 0; i < z->n_dacs; i++)
         if (z->dacs[i].n_phases > 0)
             add_op(o, LW__OP_LATCH, 2, z->dacs[i].item->place, i, 0);
+    for (int i = 0; i < z->n_pwms; i++) {
+        int place = z->pwms[i].item->place;
+        add_op(o, LW__OP_PWM_STRETCH, 2, place, i, 0);
+        add_op(o, LW__OP_PWM_EDGE, 1, place, i, 0);
+        add_op(o, LW__OP_PWM_WRITTEN, 1, place, i, 0);
+    }
     for (int i = 0; i < z->n_loops; i++) {
         int place = z->loops[i].item->place;
         add_op(o, LW__OP_ARRIVE, 1, place, i, 0);
@@ -197,6 +204,10 @@ static const void *thing_of(const lw_frozen *z, const lw__op *op)
         return &z->adcs[op->index];
     case LW__OP_LATCH:
         return &z->dacs[op->index];
+    case LW__OP_PWM_STRETCH:
+    case LW__OP_PWM_EDGE:
+    case LW__OP_PWM_WRITTEN:
+        return &z->pwms[op->index];
     case LW__OP_ARRIVE:
     case LW__OP_STEP:
         return &z->loops[op->index];
@@ -294,6 +305,15 @@ static lw_status timers_of_parts(lw__freezer *w)
     }
     for (int i = 0; i < z->n_dacs; i++)
         LW__TRY(make_due(w, z->dacs[i].timer, LW__OP_LATCH, i, 0));
+    for (int i = 0; i < z->n_pwms; i++) {
+        const lw__pwm *m = &z->pwms[i];
+        lw__dac *dac = &z->dacs[m->item->dac];
+        LW__TRY(make_due(w, m->timer, LW__OP_PWM_STRETCH, i, 0));
+        for (int k = 0; k < m->n_legs; k++)
+            LW__TRY(make_due(w, m->edge[k], LW__OP_PWM_EDGE, i, 0));
+        dac->acts_at_once = m->item->def.reload == LW_PWM_AT_ONCE;
+        LW__TRY(lw__set_put(w, &dac->written, op_number(z, LW__OP_PWM_WRITTEN, i, 0)));
+    }
     for (int i = 0; i < z->n_loops; i++)
         LW__TRY(make_due(w, z->loops[i].timer, LW__OP_ARRIVE, i, 0));
     for (int i = 0; i < z->n_records; i++)

@@ -5,6 +5,7 @@
 // 1. What is chosen for a group depends on the group and what drives or samples it only.
 
 #include "run/freeze_plants.h"
+#include "run/pwm.h"
 
 #include "base/alloc.h"
 #include "io/source.h"
@@ -118,8 +119,8 @@ static lw_status find_driver(lw__freezer *w, const lw__connection_item *item, lw
 static lw_status collect_feeds(lw__freezer *w)
 {
     const lw_rig *rig = w->rig;
-    w->feeds =
-        lw__freezer_get(w, sizeof *w->feeds * (size_t)(rig->n_connections + rig->n_dacs + 1));
+    w->feeds = lw__freezer_get(w, sizeof *w->feeds *
+                                      (size_t)(rig->n_connections + rig->n_dacs + rig->n_pwms + 1));
     if (w->feeds == NULL)
         return LW_ERR_MEMORY;
     for (int i = 0; i < rig->n_connections; i++) {
@@ -133,6 +134,12 @@ static lw_status collect_feeds(lw__freezer *w)
         snprintf(what, sizeof what, "dac \"%s\"", def->name);
         if (def->to != NULL)
             LW__TRY(add_feed(w, what, def->to, (lw__driver){LW__DRIVER_DAC, i, 0, def->origin}));
+    }
+    for (int i = 0; i < rig->n_pwms; i++) {
+        const lw_pwm_def *def = &rig->pwms[i].def;
+        char what[240];
+        snprintf(what, sizeof what, "pwm \"%s\"", def->name);
+        LW__TRY(add_feed(w, what, def->to, (lw__driver){LW__DRIVER_PWM, i, 0, def->origin}));
     }
     return LW_OK;
 }
@@ -334,6 +341,8 @@ double lw__first_of(const lw__freezer *w, const lw__driver *driver)
         return w->rig->values[driver->index].start;
     case LW__DRIVER_DAC:
         return w->rig->dacs[driver->index].def.start;
+    case LW__DRIVER_PWM:
+        return lw__pwm_first(&w->rig->pwms[driver->index]);
     default:
         return 0;
     }
@@ -507,6 +516,13 @@ lw_status lw__choose_grid(lw__freezer *w, lw__group *g, int group)
             g->grid_of = def->name;
         }
     }
+    for (int i = 0; g->grid.num == 0 && i < w->n_feeds; i++)
+        if (w->group_of[w->feeds[i].plant] == group && w->feeds[i].driver.kind == LW__DRIVER_PWM) {
+            const lw_pwm_def *def = &rig->pwms[w->feeds[i].driver.index].def;
+            g->grid = def->carrier;
+            offset = def->offset;
+            g->grid_of = def->name;
+        }
     return lw_tick_from_seconds(offset, &g->grid_offset);
 }
 

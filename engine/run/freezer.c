@@ -2,6 +2,7 @@
 // name.
 
 #include "run/freezer.h"
+#include "run/pwm.h"
 
 #include "run/comparator.h"
 #include "run/schedule.h"
@@ -139,6 +140,17 @@ static int dac_signal(const lw__dac *d, const char *rest, lw_signal *out)
     return 0;
 }
 
+// "bridge.level": the output of the pwm that a dac came with.
+static int pwm_signal(const lw_frozen *z, const lw__dac *d, const char *rest, lw_signal *out)
+{
+    for (int i = 0; i < z->n_pwms; i++)
+        if (z->pwms[i].dac == d && same(rest, "level")) {
+            *out = cell(z->pwms[i].level);
+            return 1;
+        }
+    return 0;
+}
+
 static int loop_signal(const lw__loop *l, const char *rest, lw_signal *out)
 {
     for (int i = 0; i < l->law->n_out; i++)
@@ -176,7 +188,7 @@ static int find_signal(const lw_frozen *z, const char *name, lw_signal *out)
             return adc_signal(&z->adcs[i], rest, out);
     for (int i = 0; i < z->n_dacs; i++)
         if (owns(z->dacs[i].item->def.name, name, &rest))
-            return dac_signal(&z->dacs[i], rest, out);
+            return dac_signal(&z->dacs[i], rest, out) || pwm_signal(z, &z->dacs[i], rest, out);
     for (int i = 0; i < z->n_loops; i++)
         if (z->loops[i].law != NULL && owns(z->loops[i].item->def.name, name, &rest))
             return loop_signal(&z->loops[i], rest, out);

@@ -12,6 +12,7 @@ typedef enum lw__driver_kind {
     LW__DRIVER_SOURCE,
     LW__DRIVER_VALUE,
     LW__DRIVER_DAC,
+    LW__DRIVER_PWM,
     LW__DRIVER_PLANT
 } lw__driver_kind;
 
@@ -63,6 +64,8 @@ int lw__freezer_timer(lw__freezer *w);
 // Parts, in this order.
 lw_status lw__freeze_plants(lw__freezer *w);     // groups, rows, channels, kernels, anchors
 lw_status lw__freeze_converters(lw__freezer *w); // sources, values, adcs, dacs
+// Groups and channels that a driver feeds; a moving source reaches them by its generators.
+lw_status lw__find_drives(lw__freezer *w, lw__driver_kind kind, int index, lw__drives *out);
 lw_status lw__freeze_loops(lw__freezer *w);
 lw_status lw__freeze_clocks(lw__freezer *w); // of cores and tasks; before the converters
 lw_status lw__freeze_cores(lw__freezer *w);

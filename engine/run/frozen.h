@@ -175,6 +175,8 @@ typedef struct lw__dac {
     int fresh, late_fresh, job, changed_at;     // integer cells
     int sampled, pending_sampled, late_sampled; // of values at the output and in the registers
     int observed;                               // a metric wants to know of each output
+    int acts_at_once;                           // a fresh output makes `written` due
+    lw__set written;
     int latch_count, timer;
     int tripped;          // integer cell: trips that hold the output; -1: none can
     lw__event latched_by; // an event that latches, in place of a clock
@@ -276,6 +278,9 @@ typedef enum lw__op_kind {
     LW__OP_RELEASE_TRIP, // phase 1
     LW__OP_LATCH_TRIP,   // phase 2, before the edge latches
     LW__OP_LATCH,        // phase 2
+    LW__OP_PWM_STRETCH,  // phase 2: of pulse-width modulated outputs
+    LW__OP_PWM_EDGE,     // phase 1
+    LW__OP_PWM_WRITTEN,  // phase 1
     LW__OP_SAMPLE,       // phase 3
     LW__OP_RELEASES,     // phase 5: releases of a core's tasks by clock, arrival and slot; stalls
     LW__OP_RELEASE,      // phase 5: release of a task by an event
@@ -318,6 +323,8 @@ struct lw_frozen {
     lw__value *values;
     lw__adc *adcs;
     lw__dac *dacs;
+    int n_pwms;
+    struct lw__pwm *pwms;
     lw__loop *loops;
     struct lw__core *cores;
     struct lw__task *tasks;

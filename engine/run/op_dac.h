@@ -69,6 +69,8 @@ LW__INLINE void dac_output(LW__CONTEXT, const lw__dac *d, double asked, lw_tick 
     if (d->gaps)
         lw__dac_changed(s, d);
     lw__tell(p, &d->observers, N);
+    if (d->acts_at_once)
+        lw__make_all_due(p, &d->written, N);
     drive(LW__HERE, &d->drives, v);
 }
 

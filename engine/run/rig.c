@@ -60,6 +60,7 @@ void lw_rig_free(lw_rig *rig)
     lw__free(rig->values);
     lw__free(rig->adcs);
     lw__free(rig->dacs);
+    lw__free(rig->pwms);
     lw__free(rig->loops);
     lw__rig_free_cpu(rig);
     lw__rig_free_events(rig);
@@ -401,7 +402,7 @@ lw_status lw_rig_add_dac(lw_rig *rig, const lw_dac_def *def, lw_error *err)
     lw__subject s = {def->origin, "dac", def->name, err};
     LW__TRY(check_dac(&s, def));
     lw__copier c = {rig->arena, 0};
-    lw__dac_item item = {*def, rig->n_places};
+    lw__dac_item item = {.def = *def, .place = rig->n_places};
     item.def.origin = lw__copy_text(&c, def->origin);
     item.def.name = lw__copy_text(&c, def->name);
     item.def.to = lw__copy_text(&c, def->to);

@@ -6,6 +6,7 @@
 
 #include <latewood/cpu.h>
 #include <latewood/event.h>
+#include <latewood/pwm.h>
 #include <latewood/rig.h>
 
 typedef struct lw__plant_item {
@@ -38,7 +39,13 @@ typedef struct lw__adc_item {
 typedef struct lw__dac_item {
     lw_dac_def def;
     int place;
+    int is_pwm; // 0: no; 1: the register of a pwm, taken over at reloads; 2: at once
 } lw__dac_item;
+
+typedef struct lw__pwm_item {
+    lw_pwm_def def;
+    int dac, place; // dac: the one that came with it
+} lw__pwm_item;
 
 typedef struct lw__loop_item {
     lw_loop_def def;
@@ -87,6 +94,8 @@ struct lw_rig {
     lw__value_item *values;
     lw__adc_item *adcs;
     lw__dac_item *dacs;
+    int n_pwms;
+    lw__pwm_item *pwms;
     lw__loop_item *loops;
     lw__core_item *cores;
     lw__task_item *tasks;

@@ -9,6 +9,7 @@
 #include "run/driver.h"
 #include "run/job_metric.h"
 #include "run/motion.h"
+#include "run/pwm.h"
 #include "run/record.h"
 #include "run/schedule.h"
 #include "run/track.h"
@@ -88,6 +89,12 @@ static void start_converters(lw__lane *s, int W, int L)
     }
 }
 
+static void start_pwms(lw__lane *s)
+{
+    for (int i = 0; i < s->z->n_pwms; i++)
+        lw__pwm_start(s, &s->z->pwms[i]);
+}
+
 static void start_loops(lw__lane *s, int W, int L)
 {
     const lw_frozen *z = s->z;
@@ -122,6 +129,7 @@ void lw__lane_start(lw__lane *s)
     s->status = LW_OK;
     start_plants(s, W, L);
     start_converters(s, W, L);
+    start_pwms(s);
     start_loops(s, W, L);
     lw__cores_start(s);
     lw__events_start(s);

@@ -1,0 +1,38 @@
+// A frozen pwm: carrier, legs, cells.
+#ifndef LATEWOOD_RUN_PWM_H
+#define LATEWOOD_RUN_PWM_H
+
+#include "run/freezer.h"
+#include "run/state.h"
+
+#define LW__PWM_LEGS 2
+
+typedef struct lw__pwm {
+    const lw__pwm_item *item;
+    const char *name;
+    const lw__dac *dac; // its register and what was taken over
+    lw__drives drives;
+    lw_period stretch; // grid: a period, of a triangle half of one
+    lw_tick offset;
+    double seconds;         // of the carrier's period
+    int n_legs, per_period; // stretches in a period
+    lw_tick dead;
+    double least; // share of a period
+    lw__reference supply, current;
+    // cells
+    int level;                     // double
+    int count;                     // integers: stretches so far
+    int state, wanted, moved;      // integers, a leg each: high; what it goes to; 1:
+                                   // it has switched in this stretch
+    int timer, edge[LW__PWM_LEGS]; // timers
+    int written_op;
+} lw__pwm;
+
+lw_status lw__freeze_pwms(lw__freezer *w);
+// Level at time zero, and the plant input it drives.
+double lw__pwm_first(const lw__pwm_item *item);
+void lw__pwm_start(lw__lane *s, const lw__pwm *m);
+void lw__pwms_describe(const lw_frozen *z, void (*say)(void *context, const char *text),
+                       void *context);
+
+#endif
