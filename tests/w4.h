@@ -35,6 +35,12 @@ static inline double w4_control(double *state, double wanted, double measured)
     return u;
 }
 
+// Elementary functions of the plain C, unless stated before.
+#ifndef W4_TANH
+#define W4_TANH tanh
+#define W4_SIN sin
+#endif
+
 // Current, motor speed, twist, load speed, load angle; TANH and SIN are those of the caller.
 #define W4_FLOW(x, u, dx, TANH, SIN)                                                               \
     do {                                                                                           \
@@ -75,7 +81,7 @@ static inline double w4_step(const double *x, double u, double h, double k[7][5]
                     a += w4_a[s][m] * k[m][j];
             y[j] = x[j] + h * a;
         }
-        W4_FLOW(y, u, k[s], tanh, sin);
+        W4_FLOW(y, u, k[s], W4_TANH, W4_SIN);
     }
     for (int j = 0; j < 5; j++) {
         double e = 0, m = fmax(fabs(x[j]), fabs(y[j]));
@@ -90,7 +96,7 @@ static inline double w4_step(const double *x, double u, double h, double k[7][5]
 static inline void w4_integrate(double *carried, double *x, double u, double length)
 {
     double t = 0, k[7][5], y[5];
-    W4_FLOW(x, u, k[0], tanh, sin);
+    W4_FLOW(x, u, k[0], W4_TANH, W4_SIN);
     for (;;) {
         int last = *carried >= (length - t) * 0.999999;
         double h = last ? length - t : *carried;

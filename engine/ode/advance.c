@@ -7,6 +7,7 @@
 #include <string.h>
 
 #define MOST_STEPS 5000000
+#define MOST_CUTS 3           // of one step, each nearer to its switching
 #define MOST_SWITCHINGS 20000 // in one call
 #define MOST_IN_PLACE 100     // switchings in a row between which the function hardly left zero
 #define HARDLY 1e-5           // of the largest value it had
@@ -29,7 +30,7 @@ static int method_work(int n)
 
 int lw__ode_work_size(int n, int n_switches)
 {
-    return 3 * n + (LW__ODE_DEGREE + 1) * n + method_work(n) + 2 * n + 5 * n_switches;
+    return 3 * n + (LW__ODE_DEGREE + 1) * n + method_work(n) + 2 * n + 7 * n_switches;
 }
 
 void lw__ode_piece_value(const lw__ode_piece *p, double s, double *x)
@@ -58,7 +59,7 @@ typedef struct course {
     lw__ode_sink sink;
     void *context;
     int n_g, dense; // dense: o.c is of the step at hand
-    double *g, *g_new, *g_mid, *x_mid;
+    double *g, *g_new, *g_mid, *g_lo, *g_hi, *x_mid;
     double *largest, *since; // of each switching function: in this call, since it switched
     int in_place;
     const char *text;
@@ -117,6 +118,14 @@ static int side(double g)
     return g > 0;
 }
 
+static int all_finite(int n, const double *x)
+{
+    for (int i = 0; i < n; i++)
+        if (!(fabs(x[i]) < 1e300))
+            return 0;
+    return 1;
+}
+
 static int any_changed(const course *c, const double *g)
 {
     for (int k = 0; k < c->n_g; k++)
@@ -154,32 +163,81 @@ static int far_from_zero(const course *c)
     return 1;
 }
 
-// The share of the step by which the first switching has happened; 1 where none does before the
-// end. g_new holds the values at the end. Bisection on whether anything changed, which needs no
-// continuity; the last half digit by regula falsi would be lost in rounding anyway.
-static int first_switching(course *c, double h, double *share)
+// Between which shares of the step at hand the first switching lies, and the functions there.
+typedef struct bracket {
+    double lo, hi; // nothing has changed at lo, something has at hi; hi > 1: nothing does
+} bracket;
+
+// By quarters of the step: two switchings within one that undo each other would hide otherwise.
+static int first_quarter(course *c, double h, bracket *b)
 {
-    double lo = 0, hi = 1;
-    *share = 1;
+    *b = (bracket){0, 2};
+    memcpy(c->g_lo, c->g, sizeof(double) * (size_t)c->n_g);
     if (!any_changed(c, c->g_new) && far_from_zero(c))
         return 0;
     make_dense(c, h);
-    if (look_inside(c, h, 0.5, c->g_mid))
-        return 1;
-    if (any_changed(c, c->g_mid))
-        hi = 0.5;
-    else if (!any_changed(c, c->g_new))
-        return 0;
-    else
-        lo = 0.5;
-    double resolution = fmax(2 * DBL_EPSILON * fabs(c->o.t) / h, 1e-16);
-    while (hi - lo > resolution && hi - lo > 4 * DBL_EPSILON * hi) {
-        double middle = lo + 0.5 * (hi - lo);
-        if (look_inside(c, h, middle, c->g_mid))
+    for (int quarter = 1; quarter <= 4; quarter++) {
+        memcpy(c->g_mid, c->g_new, sizeof(double) * (size_t)c->n_g);
+        if (quarter < 4 && look_inside(c, h, quarter / 4.0, c->g_mid))
             return 1;
-        *(any_changed(c, c->g_mid) ? &hi : &lo) = middle;
+        if (any_changed(c, c->g_mid)) {
+            b->hi = quarter / 4.0;
+            memcpy(c->g_hi, c->g_mid, sizeof(double) * (size_t)c->n_g);
+            return 0;
+        }
+        b->lo = quarter / 4.0;
+        memcpy(c->g_lo, c->g_mid, sizeof(double) * (size_t)c->n_g);
     }
-    *share = hi;
+    return 0;
+}
+
+static int narrow(course *c, double h, double s, bracket *b)
+{
+    if (!(s > b->lo && s < b->hi))
+        return 0;
+    if (look_inside(c, h, s, c->g_mid))
+        return 1;
+    int changed = any_changed(c, c->g_mid);
+    *(changed ? &b->hi : &b->lo) = s;
+    memcpy(changed ? c->g_hi : c->g_lo, c->g_mid, sizeof(double) * (size_t)c->n_g);
+    return 0;
+}
+
+// Where the earliest of the functions that change would be zero if they were straight.
+static double straight_zero(const course *c, const bracket *b)
+{
+    double first = 1;
+    for (int k = 0; k < c->n_g; k++)
+        if (side(c->g_hi[k]) != side(c->g[k])) {
+            double share = c->g_lo[k] / (c->g_lo[k] - c->g_hi[k]);
+            first = share < first ? share : first;
+        }
+    return b->lo + first * (b->hi - b->lo);
+}
+
+// Down to a few roundings of t: looks on both sides of where straight functions would be zero,
+// nearer each time, and halves where that was no help (a jump, a kink).
+static int locate(course *c, double h, bracket *b)
+{
+    if (first_quarter(c, h, b))
+        return 1;
+    double t = fabs(c->o.t) + fabs(h), near = 1.0 / 64;
+    double resolution = fmax(2 * DBL_EPSILON * t / fabs(h), 1e-16);
+    while (b->hi <= 1 && b->hi - b->lo > resolution) {
+        double width = b->hi - b->lo, s = straight_zero(c, b);
+        double w = fmax(0.4 * resolution, near * width);
+        if (narrow(c, h, s + w, b) || narrow(c, h, s - w, b))
+            return 1;
+        int helped = b->hi - b->lo <= 0.5 * width;
+        near = helped ? near * near : 1.0 / 64;
+        if (helped)
+            continue;
+        double middle = b->lo + 0.5 * (b->hi - b->lo);
+        if (!(middle > b->lo && middle < b->hi))
+            break; // no number lies between
+        if (narrow(c, h, middle, b))
+            return 1;
+    }
     return 0;
 }
 
@@ -200,22 +258,55 @@ static lw_status tell_switchings(course *c)
     return LW_OK;
 }
 
-static void accept(course *c, double h)
+// The step at hand ends just before a switching: its end is carried along the flow there until
+// something changes. Returns by how much; 0 where nothing does within a hundred millionth of the
+// step, over which a straight line is as good as rounding.
+static double cross(course *c, double h, double room)
 {
     lw__ode_state *o = &c->o;
-    if (c->sink != NULL) {
-        make_dense(c, h);
-        lw__ode_piece p = {o->t, h, o->n, o->degree, o->c};
-        if (o->degree == 4) {
-            // a flow that fails at a point between is none of the run's: the step had it not
-            lw_status failed = o->failed;
-            p.degree = lw__ode_explicit_refine(o, h) == 0 ? 5 : 4;
-            o->failed = failed;
-        }
-        c->sink(c->context, &p);
+    double most = fmin(1e-8 * h, room), gap = 2 * DBL_EPSILON * (fabs(o->t) + h);
+    for (; gap <= most; gap *= 2) {
+        for (int i = 0; i < o->n; i++)
+            c->x_mid[i] = o->x_new[i] + gap * o->f_new[i];
+        if (look_at_switches(c, o->t + h + gap, c->x_mid, c->g_mid))
+            return 0;
+        if (!any_changed(c, c->g_mid))
+            continue;
+        memcpy(c->g_new, c->g_mid, sizeof(double) * (size_t)c->n_g);
+        return gap;
     }
-    o->t += h;
-    memcpy(o->x, o->x_new, sizeof(double) * (size_t)o->n);
+    return 0;
+}
+
+// The piece of the step at hand, lengthened by `gap`.
+static void give_piece(course *c, double h, double gap)
+{
+    lw__ode_state *o = &c->o;
+    make_dense(c, h);
+    lw__ode_piece p = {o->t, h + gap, o->n, o->degree, o->c};
+    if (o->degree == 4) {
+        // a flow that fails at a point between is none of the run's: the step had it not
+        lw_status failed = o->failed;
+        p.degree = lw__ode_explicit_refine(o, h) == 0 ? 5 : 4;
+        o->failed = failed;
+    }
+    double longer = 1 + gap / h, power = 1;
+    for (int k = 1; gap > 0 && k <= p.degree; k++) {
+        power *= longer;
+        for (int i = 0; i < o->n; i++)
+            o->c[k * o->n + i] *= power;
+    }
+    c->sink(c->context, &p);
+}
+
+static void accept(course *c, double h, double gap)
+{
+    lw__ode_state *o = &c->o;
+    if (c->sink != NULL)
+        give_piece(c, h, gap);
+    o->t += h + gap;
+    for (int i = 0; i < o->n; i++)
+        o->x[i] = gap > 0 ? o->x_new[i] + gap * o->f_new[i] : o->x_new[i];
     memcpy(o->f, o->f_new, sizeof(double) * (size_t)o->n);
     o->jacobian_known = 0;
 }
@@ -227,51 +318,89 @@ static lw__ode_outcome try_step(course *c, double h, int last, double *next)
                             : lw__ode_explicit(&c->o, c->m, h, last, c->m->h, next);
 }
 
+// A trial step: what came of it, and what it asks for.
+typedef struct trial {
+    double h, natural; // its size, that of the following one
+    int last, cuts;    // shortened; how often, by a switching
+    double was_stiff;
+} trial;
+
+// The step was refused. If it goes over a switching, that may be why: it is tried once up to there.
+static lw_status refused(course *c, trial *y, double wanted)
+{
+    lw__ode_state *o = &c->o;
+    bracket b = {0, 2};
+    if (wanted < least_step(c))
+        return fail(c, LW_ERR_STEP,
+                    "the step size collapsed: the solution ends there, or jumps without end");
+    if (c->n_g > 0 && y->cuts == 0 && c->m->stiff == 0 && all_finite(o->n, o->x_new)) {
+        if (look_at_switches(c, o->t + y->h, o->x_new, c->g_new) || locate(c, y->h, &b))
+            return fail(c, LW_ERR_LAW, "a function of the plant failed");
+        if (b.hi <= 1 && b.lo * y->h > wanted) {
+            y->cuts = 1;
+            y->natural = b.lo * y->h;
+            return LW_OK;
+        }
+    }
+    y->cuts = 0;
+    c->m->h = y->natural = wanted;
+    return LW_OK;
+}
+
+// The step holds the tolerance: 1 where it is to be taken again up to a switching, -1 failed.
+static int goes_over(course *c, trial *y)
+{
+    lw__ode_state *o = &c->o;
+    bracket b;
+    if (look_at_switches(c, o->t + y->h, o->x_new, c->g_new) || locate(c, y->h, &b))
+        return -1;
+    double least = least_step(c), target = b.lo * y->h;
+    target = target < least ? fmax(b.hi * y->h, least) : target;
+    if (b.hi > 1 || y->cuts == MOST_CUTS || !(target < (1 - 4 * DBL_EPSILON) * y->h))
+        return 0;
+    y->cuts++;
+    y->natural = target;
+    c->m->stiff = y->was_stiff;
+    return 1;
+}
+
 // One accepted step, at most up to t1. *switched: it ends at a switching.
 static lw_status one_step(course *c, int *switched)
 {
     lw__ode_state *o = &c->o;
-    double next = c->m->h;
-    *switched = 0;
-    for (int cut = 0;;) {
-        double left = c->t1 - o->t, h = cut ? next : c->m->h;
-        int last = cut || h >= 0.999999 * left;
-        if (h >= 0.999999 * left)
-            h = left;
-        double was_stiff = c->m->stiff, wanted;
-        lw__ode_outcome outcome = try_step(c, h, last, &wanted);
+    trial y = {.natural = c->m->h};
+    double wanted;
+    for (;;) {
+        double left = c->t1 - o->t;
+        int whole = y.natural >= 0.999999 * left;
+        y.last = y.cuts > 0 || whole;
+        y.h = whole && y.cuts == 0 ? left : fmin(y.natural, left);
+        y.was_stiff = c->m->stiff;
+        lw__ode_outcome outcome = try_step(c, y.h, y.last, &wanted);
         if (outcome == LW__ODE_FAILED)
             return fail(c, LW_ERR_LAW, "a function of the plant failed");
         if (outcome == LW__ODE_REJECTED) {
-            if (wanted < least_step(c))
-                return fail(c, LW_ERR_STEP,
-                            "the step size collapsed: the solution ends there, or jumps without "
-                            "end");
-            cut = 0;
-            c->m->h = wanted;
+            lw_status status = refused(c, &y, wanted);
+            if (status != LW_OK)
+                return status;
             continue;
         }
-        double share = 1;
-        if (c->n_g > 0 &&
-            (look_at_switches(c, o->t + h, o->x_new, c->g_new) || first_switching(c, h, &share)))
+        int over = c->n_g > 0 ? goes_over(c, &y) : 0;
+        if (over < 0)
             return fail(c, LW_ERR_LAW, "a function of the plant failed");
-        double first = fmax(share * h, least_step(c));
-        if (first < h && !cut) {
-            cut = 1; // again, to end there
-            next = first;
-            c->m->stiff = was_stiff;
-            continue;
-        }
-        if (!last || was_stiff != 0)
-            c->m->h = last && wanted < c->m->h ? c->m->h : wanted;
-        else
-            c->m->h = wanted;
-        accept(c, h);
-        *switched = c->n_g > 0 && any_changed(c, c->g_new);
-        if (!*switched && c->n_g > 0)
-            memcpy(c->g, c->g_new, sizeof(double) * (size_t)c->n_g);
-        return LW_OK;
+        if (over == 0)
+            break;
     }
+    double gap = y.cuts > 0 && !any_changed(c, c->g_new) ? cross(c, y.h, c->t1 - o->t - y.h) : 0;
+    if (o->failed != LW_OK)
+        return fail(c, LW_ERR_LAW, "a function of the plant failed");
+    if (!y.last || wanted > c->m->h || y.was_stiff == 0)
+        c->m->h = wanted;
+    accept(c, y.h, gap);
+    *switched = c->n_g > 0 && any_changed(c, c->g_new);
+    if (!*switched && c->n_g > 0)
+        memcpy(c->g, c->g_new, sizeof(double) * (size_t)c->n_g);
+    return LW_OK;
 }
 
 // Chatter: a function that is driven back to zero from both sides. Its swings are as small as the
@@ -307,9 +436,8 @@ static lw_status begin(course *c)
         c->m->h = first_size(c);
     if (o->failed != LW_OK)
         return fail(c, LW_ERR_LAW, "a function of the plant failed");
-    for (int i = 0; i < o->n; i++)
-        if (!(fabs(o->x[i]) < 1e300) || !(fabs(o->f[i]) < 1e300))
-            return fail(c, LW_ERR_NOT_FINITE, "a state or its derivative is not finite");
+    if (!all_finite(o->n, o->x) || !all_finite(o->n, o->f))
+        return fail(c, LW_ERR_NOT_FINITE, "a state or its derivative is not finite");
     return c->m->h > 0 ? LW_OK : fail(c, LW_ERR_NOT_FINITE, "no step size can be found");
 }
 
@@ -360,7 +488,9 @@ lw_status lw__ode_advance(const lw__ode_system *s, double rtol, const double *at
     c.g = c.x_mid + 2 * n;
     c.g_new = c.g + c.n_g;
     c.g_mid = c.g_new + c.n_g;
-    c.largest = c.g_mid + c.n_g;
+    c.g_lo = c.g_mid + c.n_g;
+    c.g_hi = c.g_lo + c.n_g;
+    c.largest = c.g_hi + c.n_g;
     c.since = c.largest + c.n_g;
     c.o.k = c.since + c.n_g;
     memset(c.largest, 0, sizeof(double) * 2 * (size_t)c.n_g);

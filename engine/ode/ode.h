@@ -3,15 +3,21 @@
 //
 // Methods
 //   explicit  J. Dormand, P. Prince, J. Comp. Appl. Math. 6 (1980) 19-26: order 5(4), seven stages,
-//             the last of which is the first of the next step; dense output of order 4 after
+//             the last of which is the first of the next step. Dense output of order 4 after
 //             E. Hairer, S. Norsett, G. Wanner, Solving Ordinary Differential Equations I (1993)
-//             II.6
+//             II.6, raised to order 5 by two further flows where there is a sink
 //   stiff     Radau IIA of order 5 (E. Hairer, G. Wanner, Solving Ordinary Differential Equations
-//   II
-//             (1996) IV.8): three stages by simplified Newton iteration, error estimate of order 3,
-//             dense output by its collocation polynomial
+//             II (1996) IV.8): three stages by simplified Newton iteration, error estimate of
+//             order 3, dense output by its collocation polynomial
 // The explicit method notes stiffness where the step is bounded by stability (ibid. IV.2) and hands
 // over; the stiff one hands back where its steps have become small against the Jacobian.
+//
+// Switchings are found on the dense output, to a few roundings of t, the earliest first; the step
+// is taken again to just before one and carried across it along the flow. A step refused because
+// the flow jumps within it is taken again in the same way. Motion along a border which the flows of
+// both sides drive towards (A. Filippov, Differential Equations with Discontinuous Righthand
+// Sides, 1988) is left to the plant: it states a mode of its own for it; without one the
+// integration ends with LW_ERR_CHATTER.
 //
 // Workload: two to four calls a period of a loop, each a step or two; up to 64 states.
 //
@@ -67,10 +73,12 @@ int lw__ode_piece_series(const lw__ode_piece *p, int state, double *c);
 //             atol + rtol |x|, state by state
 //   returns   LW_OK
 //             LW_ERR_LAW         a function failed
-//             LW_ERR_NOT_FINITE  values overflow; LW_ERR_STEP the step size collapsed, or
-//             switchings
-//                                follow one another without end; *t_failed and *text say where and
-//                                why, and x stands at the last accepted step
+//             LW_ERR_NOT_FINITE  values overflow
+//             LW_ERR_STEP        the step size collapsed, or switchings follow one another without
+//                                end
+//             LW_ERR_CHATTER     a switching is driven back to its border from both sides
+//                                *t_failed and *text say where and why; x stands at the last
+//                                accepted step
 lw_status lw__ode_advance(const lw__ode_system *s, double rtol, const double *atol, double *memory,
                           double t0, double t1, double *x, lw__ode_sink sink, void *context,
                           double *work, double *t_failed, const char **text);
