@@ -16,26 +16,33 @@
 #include "run/op_cpu.h"
 
 #include <math.h>
+#include <string.h>
 
 enum { W = 1, L = 0 };
 
 #define LOOK_AHEAD 16 // instants after which draws are made ahead
 #define LINEAR 12     // releases looked through in a row; a tree of winners above
 
+// What changes within a call. Its address stays within inlined functions, so that it can live in
+// registers.
 typedef struct dash {
     const lw__core *c;
     int64_t *i;
-    uint64_t ready;
+    uint64_t ready, quick;
     int64_t running, last, holder;
     lw_tick now, work_at, since, point, release, limit;
+    int next;        // rank of the next release
+    int looks_ahead; // draws are made ahead
+} dash;
+
+typedef struct calendar {
     // the next draw of each task, made ahead so that nothing waits for it; -1: not made
     int64_t ahead_job[LW_CORE_MAX_TASKS];
     lw_tick ahead[LW_CORE_MAX_TASKS];
-    int looks_ahead;
     int n_tree;                         // leaves, 0: no tree
     lw_tick due[2 * LW_CORE_MAX_TASKS]; // winners: least due of each subtree
     int16_t rank[2 * LW_CORE_MAX_TASKS];
-} dash;
+} calendar;
 
 // ---- whether a task and a core are quick
 
@@ -62,108 +69,117 @@ uint64_t lw__dash_tasks(const lw__core *c)
 
 // ---- the calendar
 
-static inline void winner(dash *d, int node)
+static inline void winner(calendar *k, int node)
 {
-    int best = d->due[2 * node] <= d->due[2 * node + 1] ? 2 * node : 2 * node + 1;
-    d->due[node] = d->due[best];
-    d->rank[node] = d->rank[best];
+    int best = k->due[2 * node] <= k->due[2 * node + 1] ? 2 * node : 2 * node + 1;
+    k->due[node] = k->due[best];
+    k->rank[node] = k->rank[best];
 }
 
-static void plant_tree(dash *d, uint64_t quick)
+static void plant_tree(calendar *k, int n_tasks, const int64_t *due, uint64_t quick)
 {
     int n = 1;
-    while (n < d->c->n_tasks)
+    while (n < n_tasks)
         n *= 2;
-    d->n_tree = n;
+    k->n_tree = n;
     for (int r = 0; r < n; r++) {
-        int here = r < d->c->n_tasks && (quick >> r & 1) != 0;
-        d->due[n + r] = here ? d->i[d->c->due + r] : LW_NEVER;
-        d->rank[n + r] = (int16_t)r;
+        int here = r < n_tasks && (quick >> r & 1) != 0;
+        k->due[n + r] = here ? due[r] : LW_NEVER;
+        k->rank[n + r] = (int16_t)r;
     }
     for (int node = n - 1; node > 0; node--)
-        winner(d, node);
+        winner(k, node);
 }
 
-// The rank of the next release of a quick task; d->release is its instant.
-static inline int next_rank(dash *d, uint64_t quick)
+// The next release of a quick task.
+LW__INLINE void find_next(dash *d, const calendar *k)
 {
-    if (d->n_tree > 0) {
-        d->release = d->due[1];
-        return d->rank[1];
+    if (k->n_tree > 0) {
+        d->release = k->due[1];
+        d->next = k->rank[1];
+        return;
     }
     const int64_t *due = &d->i[d->c->due];
     lw_tick least = LW_NEVER;
-    int best = -1;
-    for (int r = 0; r < d->c->n_tasks; r++)
-        if (due[r] < least && (quick >> r & 1) != 0) {
-            least = due[r];
-            best = r;
-        }
+    int best = 0;
+    for (int r = 0, n = d->c->n_tasks; r < n; r++) {
+        lw_tick t = (d->quick >> r & 1) != 0 ? due[r] : LW_NEVER;
+        best = t < least ? r : best;
+        least = t < least ? t : least;
+    }
     d->release = least;
-    return best;
+    d->next = best;
 }
 
-static inline void move_release(dash *d, int r, lw_tick due)
+LW__INLINE void move_release(dash *d, calendar *k, int r, lw_tick due)
 {
     d->i[d->c->due + r] = due;
-    if (d->n_tree == 0)
+    if (k->n_tree == 0)
         return;
-    int node = d->n_tree + r;
-    d->due[node] = due;
+    int node = k->n_tree + r;
+    k->due[node] = due;
     for (node /= 2; node > 0; node /= 2)
-        winner(d, node);
+        winner(k, node);
 }
 
 // ---- jobs
 
-static inline void first_of_ring(dash *d, const lw__task *t)
+// The ring of a task's jobs: nominal instants, releases, execution times, numbers.
+typedef struct ring {
+    int64_t *at;
+    int64_t n;
+} ring;
+
+LW__INLINE ring ring_of(const dash *d, const lw__task *t)
 {
-    int64_t *i = d->i, head = i[t->head];
+    return (ring){&d->i[t->ring_nominal], t->mask + 1};
+}
+
+LW__INLINE void first_of_ring(dash *d, const lw__task *t, int64_t *own)
+{
+    ring g = ring_of(d, t);
+    int64_t head = own[LW__OWN_HEAD];
     const lw__core *c = d->c;
     int r = t->rank;
-    i[c->released + r] = i[t->ring_ready + head];
-    i[c->key + r] = t->level;
-    i[c->done + r] = 0;
-    i[c->at + r] = 0;
-    i[c->goal + r] = i[t->ring_work + head];
-    i[t->start] = -1;
-    i[t->preemptions] = 0;
-    i[t->written] = -1;
+    d->i[c->released + r] = g.at[g.n + head];
+    d->i[c->goal + r] = g.at[2 * g.n + head];
+    d->i[c->done + r] = 0;
+    own[LW__OWN_START] = -1;
+    own[LW__OWN_PREEMPTIONS] = 0;
 }
 
 // The job that has the core gives it away.
-static inline void leave(dash *d, const lw__task *t)
+LW__INLINE void leave(dash *d, const lw__task *t, int64_t *own)
 {
     if (d->since < d->now)
         d->since = d->now;
     if (d->now < d->work_at)
         return;
     d->i[d->c->done + t->rank] += d->now - d->work_at;
-    if (d->i[t->start] < 0)
-        d->i[t->start] = d->work_at;
+    if (own[LW__OWN_START] < 0)
+        own[LW__OWN_START] = d->work_at;
     d->work_at = d->now;
     d->last = t->rank;
 }
 
-static inline void finish(dash *d)
+LW__INLINE void finish(dash *d)
 {
     const lw__task *t = d->c->tasks[d->running];
-    int64_t *i = d->i, head = i[t->head], count = i[t->count] - 1;
-    leave(d, t);
-    i[t->finished] = i[t->ring_job + head];
+    int64_t *own = &d->i[t->jobs], count = own[LW__OWN_COUNT] - 1;
+    leave(d, t, own);
     d->running = -1;
     d->point = LW_NEVER;
     d->holder = d->holder == t->rank ? -1 : d->holder;
     d->last = -1;
-    i[t->head] = (head + 1) & t->mask;
-    i[t->count] = count;
+    own[LW__OWN_HEAD] = (own[LW__OWN_HEAD] + 1) & t->mask;
+    own[LW__OWN_COUNT] = count;
     if (count > 0)
-        first_of_ring(d, t);
+        first_of_ring(d, t, own);
     else
         d->ready &= ~LW__BIT(t->rank);
 }
 
-static inline lw_tick drawn(const lw__lane *s, const lw__use *u, int64_t job)
+LW__INLINE lw_tick drawn(const lw__lane *s, const lw__use *u, int64_t job)
 {
     if (u->timing == NULL)
         return u->constant;
@@ -172,51 +188,57 @@ static inline lw_tick drawn(const lw__lane *s, const lw__use *u, int64_t job)
 }
 
 // Execution time of a job; that of the next is drawn at once.
-static inline lw_tick work_of(const lw__lane *s, dash *d, const lw__task *t, int64_t job)
+LW__INLINE lw_tick work_of(const lw__lane *s, const dash *d, calendar *k, const lw__task *t,
+                           int64_t job)
 {
     int r = t->rank;
     if (t->takes.timing == NULL)
         return t->takes.constant;
     lw_tick work =
-        d->looks_ahead && d->ahead_job[r] == job ? d->ahead[r] : drawn(s, &t->takes, job);
+        d->looks_ahead && k->ahead_job[r] == job ? k->ahead[r] : drawn(s, &t->takes, job);
     if (d->looks_ahead) {
-        d->ahead_job[r] = job + 1;
-        d->ahead[r] = drawn(s, &t->takes, job + 1);
+        k->ahead_job[r] = job + 1;
+        k->ahead[r] = drawn(s, &t->takes, job + 1);
     }
     return work;
 }
 
-static inline lw_tick release_after(const lw__lane *s, dash *d, const lw__task *t, int64_t job)
+// Instant of the release with number `job`, the one after that at `nominal`.
+LW__INLINE lw_tick release_after(const lw__lane *s, dash *d, const lw__task *t, int64_t *own,
+                                 int64_t job)
 {
-    int64_t *i = d->i;
-    lw_tick nominal = t->release == LW__RELEASE_CLOCK
-                          ? lw__grid_at(t->period, i[t->base], job - i[t->base_job])
-                          : i[t->nominal] + drawn(s, &t->arrives, job);
-    i[t->nominal] = nominal;
-    return nominal > i[d->c->closed] ? LW_NEVER : nominal;
+    lw_tick nominal = own[LW__OWN_NOMINAL];
+    if (t->release != LW__RELEASE_CLOCK)
+        nominal += drawn(s, &t->arrives, job);
+    else if (t->period.den == 1 && nominal < LW_TICK_MAX - t->period.num)
+        nominal += t->period.num;
+    else
+        nominal = lw__grid_at(t->period, own[LW__OWN_BASE], job - own[LW__OWN_BASE_JOB]);
+    own[LW__OWN_NOMINAL] = nominal;
+    return nominal > d->i[d->c->closed] ? LW_NEVER : nominal;
 }
 
-static inline void release(const lw__lane *s, dash *d, const lw__task *t)
+LW__INLINE void release(const lw__lane *s, dash *d, calendar *k, const lw__task *t)
 {
-    int64_t *i = d->i, job = i[t->jobs], count = i[t->count];
-    i[t->jobs] = job + 1;
+    int64_t *own = &d->i[t->jobs], job = own[LW__OWN_JOBS], count = own[LW__OWN_COUNT];
+    own[LW__OWN_JOBS] = job + 1;
     if (count == 0 || (t->overrun == LW_OVERRUN_QUEUE && count <= t->queue)) {
-        int64_t slot = (i[t->head] + count) & t->mask;
-        i[t->ring_nominal + slot] = i[t->nominal];
-        i[t->ring_ready + slot] = d->now;
-        i[t->ring_work + slot] = work_of(s, d, t, job);
-        i[t->ring_job + slot] = job;
-        i[t->ring_sample + slot] = i[t->ring_read + slot] = -1;
-        i[t->count] = count + 1;
+        ring g = ring_of(d, t);
+        int64_t slot = (own[LW__OWN_HEAD] + count) & t->mask;
+        g.at[slot] = own[LW__OWN_NOMINAL];
+        g.at[g.n + slot] = d->now;
+        g.at[2 * g.n + slot] = work_of(s, d, k, t, job);
+        g.at[3 * g.n + slot] = job;
+        own[LW__OWN_COUNT] = count + 1;
         if (count == 0) {
-            first_of_ring(d, t);
+            first_of_ring(d, t, own);
             d->ready |= LW__BIT(t->rank);
         }
     }
-    move_release(d, t->rank, release_after(s, d, t, job + 1));
+    move_release(d, k, t->rank, release_after(s, d, t, own, job + 1));
 }
 
-static inline void dispatch(dash *d)
+LW__INLINE void dispatch(dash *d)
 {
     const lw__core *c = d->c;
     int64_t next = d->ready != 0 ? __builtin_ctzll(d->ready) : -1;
@@ -227,8 +249,9 @@ static inline void dispatch(dash *d)
     }
     if (d->running >= 0) {
         const lw__task *t = c->tasks[d->running];
-        leave(d, t);
-        d->i[t->preemptions] += d->i[t->start] >= 0;
+        int64_t *own = &d->i[t->jobs];
+        leave(d, t, own);
+        own[LW__OWN_PREEMPTIONS] += own[LW__OWN_START] >= 0;
     }
     d->running = next;
     d->point = LW_NEVER;
@@ -247,7 +270,7 @@ static inline void dispatch(dash *d)
 
 // The least of what is not ours: other timers, releases of tasks that are not quick, the point of
 // a job that is not.
-static lw_tick others(const lw__lane *s, const dash *d, uint64_t quick)
+LW__INLINE lw_tick others(const lw__lane *s, const dash *d)
 {
     const lw__core *c = d->c;
     lw_tick least = LW_NEVER;
@@ -255,12 +278,12 @@ static lw_tick others(const lw__lane *s, const dash *d, uint64_t quick)
         if (t != c->point_timer && t != c->release_timer && d->i[s->z->due + t] < least)
             least = d->i[s->z->due + t];
     for (int r = 0; r < c->n_tasks; r++)
-        if ((quick >> r & 1) == 0 && d->i[c->due + r] < least)
+        if ((d->quick >> r & 1) == 0 && d->i[c->due + r] < least)
             least = d->i[c->due + r];
     return least;
 }
 
-static void begin(const lw__lane *s, dash *d, uint64_t quick)
+LW__INLINE void begin(const lw__lane *s, dash *d, calendar *k)
 {
     const lw__core *c = d->c;
     int64_t *i = d->i;
@@ -272,12 +295,12 @@ static void begin(const lw__lane *s, dash *d, uint64_t quick)
     d->since = i[c->since];
     d->point = i[s->z->due + c->point_timer];
     d->now = s->now;
-    d->n_tree = d->looks_ahead = 0;
+    d->looks_ahead = k->n_tree = 0;
     if (c->n_tasks > LINEAR)
-        plant_tree(d, quick);
+        plant_tree(k, c->n_tasks, &i[c->due], d->quick);
 }
 
-static void end(lw__lane *s, const dash *d)
+LW__INLINE void end(lw__lane *s, const dash *d)
 {
     const lw__core *c = d->c;
     int64_t *i = d->i;
@@ -295,50 +318,43 @@ static void end(lw__lane *s, const dash *d)
     s->now = d->now;
 }
 
-static void look_ahead(dash *d)
-{
-    d->looks_ahead = 1;
-    for (int r = 0; r < d->c->n_tasks; r++)
-        d->ahead_job[r] = -1;
-}
-
 int64_t lw__dash_run(lw__lane *s, const lw__core *c, lw_tick until)
 {
-    dash own, *d = &own;
-    uint64_t quick = c->quick;
+    calendar own, *k = &own;
+    dash here = {.c = c, .i = s->i, .quick = c->quick}, *d = &here;
     int64_t handled = 0;
-    d->c = c;
-    d->i = s->i;
-    d->limit = others(s, d, quick);
-    lw_tick first = d->i[s->z->due + c->point_timer];
-    lw_tick next = d->i[s->z->due + c->release_timer];
+    d->limit = others(s, d);
+    lw_tick first = d->i[s->z->due + c->point_timer], next = d->i[s->z->due + c->release_timer];
     first = next < first ? next : first;
     if (first >= d->limit || first > until || d->i[c->held_until] > s->now || d->i[c->masked] > 0)
         return 0;
-    begin(s, d, quick);
-    int r = next_rank(d, quick);
+    begin(s, d, k);
+    find_next(d, k);
     for (;;) {
         lw_tick t = d->point < d->release ? d->point : d->release;
         if (t > until || t >= d->limit)
             break;
         if (t == d->point) {
-            if ((quick >> d->running & 1) == 0)
+            if ((d->quick >> d->running & 1) == 0)
                 break;
             d->now = t;
             finish(d);
         }
         d->now = t;
-        while (d->release == t) {
-            if (d->i[c->tasks[r]->jobs] > UINT32_MAX) { // the queue driver says so
+        while (d->release == t && t < d->limit) {
+            const lw__task *task = c->tasks[d->next];
+            if (d->i[task->jobs] > UINT32_MAX) { // the queue driver says so
                 d->limit = t;
                 break;
             }
-            release(s, d, c->tasks[r]);
-            r = next_rank(d, quick);
+            release(s, d, k, task);
+            find_next(d, k);
         }
         dispatch(d);
-        if (++handled == LOOK_AHEAD)
-            look_ahead(d);
+        if (++handled == LOOK_AHEAD) {
+            d->looks_ahead = 1;
+            memset(k->ahead_job, -1, sizeof k->ahead_job);
+        }
     }
     if (handled > 0)
         end(s, d);

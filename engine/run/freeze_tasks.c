@@ -347,21 +347,22 @@ static lw_status task_cells(lw__freezer *w, lw__task *t)
     while (n < t->queue + 1)
         n *= 2;
     t->mask = n - 1;
+    // side by side, in the order of lw__own (schedule.h)
     t->jobs = schedule(w, t->name, "releases so far", 1);
     t->nominal = schedule(w, t->name, "next nominal release", 1);
     t->base = schedule(w, t->name, "where its clock began", 1);
     t->base_job = schedule(w, t->name, "job at which its clock began", 1);
-    t->deferred = schedule(w, t->name, "a release waits for the finish", 1);
     t->head = schedule(w, t->name, "first job", 1);
     t->count = schedule(w, t->name, "unfinished jobs", 1);
+    t->start = schedule(w, t->name, "start of the job", 1);
+    t->preemptions = schedule(w, t->name, "preemptions of the job", 1);
+    t->deferred = schedule(w, t->name, "a release waits for the finish", 1);
     t->ring_nominal = schedule(w, t->name, "nominal releases of jobs", n);
     t->ring_ready = schedule(w, t->name, "releases of jobs", n);
     t->ring_work = schedule(w, t->name, "execution times of jobs", n);
     t->ring_job = schedule(w, t->name, "numbers of jobs", n);
     t->ring_sample = schedule(w, t->name, "samples that jobs read", n);
     t->ring_read = schedule(w, t->name, "instants at which jobs read", n);
-    t->start = schedule(w, t->name, "start of the job", 1);
-    t->preemptions = schedule(w, t->name, "preemptions of the job", 1);
     t->written = schedule(w, t->name, "instant at which the job wrote", 1);
     int pending = t->release == LW__RELEASE_EVENT && t->has_jitter ? LW__PENDING : 0;
     t->pending = schedule(w, t->name, "releases on their way", pending);

@@ -276,7 +276,8 @@ LW__INLINE void begin_job(lw__lane *s, const lw__core *c, const lw__task *t, int
     LW__I(c->goal + r) = place_of(s, t, 0, W, L);
     LW__I(t->start) = -1;
     LW__I(t->preemptions) = 0;
-    LW__I(t->written) = -1;
+    if (t->has_law)
+        LW__I(t->written) = -1;
 }
 
 static inline void tell_job(lw__lane *s, const lw__core *c, const lw__task *t, lw_job_outcome how,
@@ -400,7 +401,8 @@ LW__INLINE void release_job(LW__CONTEXT, const lw__core *c, const lw__task *t, l
     LW__I(t->ring_ready + slot) = s->now;
     LW__I(t->ring_work + slot) = use_draw(s, &t->takes, job);
     LW__I(t->ring_job + slot) = job;
-    LW__I(t->ring_sample + slot) = LW__I(t->ring_read + slot) = -1;
+    if (t->has_law)
+        LW__I(t->ring_sample + slot) = LW__I(t->ring_read + slot) = -1;
     LW__I(t->count) = count + 1;
     if (count == 0) {
         begin_job(s, c, t, W, L);
@@ -628,7 +630,8 @@ LW__INLINE int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
         task_read(LW__HERE, t, slot);
         return 1;
     case LW__POINT_FINISH:
-        LW__I(t->finished) = LW__I(t->ring_job + slot);
+        if (t->logical != LW_NEVER)
+            LW__I(t->finished) = LW__I(t->ring_job + slot);
         end_job(LW__HERE, c, t, LW_JOB_FINISHED);
         after_finish(LW__HERE, c, t);
         lw__make_all_due(p, &t->after, N);

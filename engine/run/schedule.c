@@ -40,6 +40,8 @@ static void start_task(lw__lane *s, const lw__core *c, const lw__task *t)
     int W = s->width, L = s->lane;
     LW__I(t->finished) = LW__I(t->start) = LW__I(t->written) = -1;
     LW__I(t->base) = t->offset;
+    for (int k = 0; k <= t->mask; k++)
+        LW__I(t->ring_sample + k) = LW__I(t->ring_read + k) = -1;
     if (t->has_law) {
         const lw__loop *l = &t->law;
         for (int k = 0; k < l->law->n_state; k++)
@@ -68,6 +70,8 @@ static void start_core(lw__lane *s, const lw__core *c)
     lw_tick least =
         LW__I(c->turn_due) < LW__I(c->stall_due) ? LW__I(c->turn_due) : LW__I(c->stall_due);
     for (int r = 0; r < c->n_tasks; r++) {
+        if (c->policy->by_priority)
+            LW__I(c->key + r) = c->policy->key(c->tasks[r]->level, 0, 0);
         start_task(s, c, c->tasks[r]);
         least = LW__I(c->due + r) < least ? LW__I(c->due + r) : least;
     }

@@ -55,6 +55,18 @@ typedef enum lw__release {
     LW__RELEASE_SLOT
 } lw__release;
 
+// Cells of a task that stand side by side, from `jobs` on.
+typedef enum lw__own {
+    LW__OWN_JOBS,
+    LW__OWN_NOMINAL,
+    LW__OWN_BASE,
+    LW__OWN_BASE_JOB,
+    LW__OWN_HEAD,
+    LW__OWN_COUNT,
+    LW__OWN_START,
+    LW__OWN_PREEMPTIONS
+} lw__own;
+
 typedef struct lw__task {
     const lw__task_item *item;
     const char *name;
