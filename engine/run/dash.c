@@ -16,12 +16,10 @@
 #include "run/op_cpu.h"
 
 #include <math.h>
-#include <string.h>
 
 enum { W = 1, L = 0 };
 
-#define LOOK_AHEAD 16 // instants after which draws are made ahead
-#define LINEAR 12     // releases looked through in a row; a tree of winners above
+#define LINEAR 12 // releases looked through in a row; a tree of winners above
 
 // What changes within a call. Its address stays within inlined functions, so that it can live in
 // registers.
@@ -31,14 +29,10 @@ typedef struct dash {
     uint64_t ready, quick;
     int64_t running, last, holder;
     lw_tick now, work_at, since, point, release, limit;
-    int next;        // rank of the next release
-    int looks_ahead; // draws are made ahead
+    int next; // rank of the next release
 } dash;
 
 typedef struct calendar {
-    // the next draw of each task, made ahead so that nothing waits for it; -1: not made
-    int64_t ahead_job[LW_CORE_MAX_TASKS];
-    lw_tick ahead[LW_CORE_MAX_TASKS];
     int n_tree;                         // leaves, 0: no tree
     lw_tick due[2 * LW_CORE_MAX_TASKS]; // winners: least due of each subtree
     int16_t rank[2 * LW_CORE_MAX_TASKS];
@@ -187,22 +181,6 @@ LW__INLINE lw_tick drawn(const lw__lane *s, const lw__use *u, int64_t job)
     return (lw_tick)floor(value * u->scale + 0.5);
 }
 
-// Execution time of a job; that of the next is drawn at once.
-LW__INLINE lw_tick work_of(const lw__lane *s, const dash *d, calendar *k, const lw__task *t,
-                           int64_t job)
-{
-    int r = t->rank;
-    if (t->takes.timing == NULL)
-        return t->takes.constant;
-    lw_tick work =
-        d->looks_ahead && k->ahead_job[r] == job ? k->ahead[r] : drawn(s, &t->takes, job);
-    if (d->looks_ahead) {
-        k->ahead_job[r] = job + 1;
-        k->ahead[r] = drawn(s, &t->takes, job + 1);
-    }
-    return work;
-}
-
 // Instant of the release with number `job`, the one after that at `nominal`.
 LW__INLINE lw_tick release_after(const lw__lane *s, dash *d, const lw__task *t, int64_t *own,
                                  int64_t job)
@@ -227,7 +205,7 @@ LW__INLINE void release(const lw__lane *s, dash *d, calendar *k, const lw__task 
         int64_t slot = (own[LW__OWN_HEAD] + count) & t->mask;
         g.at[slot] = own[LW__OWN_NOMINAL];
         g.at[g.n + slot] = d->now;
-        g.at[2 * g.n + slot] = work_of(s, d, k, t, job);
+        g.at[2 * g.n + slot] = drawn(s, &t->takes, job);
         g.at[3 * g.n + slot] = job;
         own[LW__OWN_COUNT] = count + 1;
         if (count == 0) {
@@ -295,7 +273,7 @@ LW__INLINE void begin(const lw__lane *s, dash *d, calendar *k)
     d->since = i[c->since];
     d->point = i[s->z->due + c->point_timer];
     d->now = s->now;
-    d->looks_ahead = k->n_tree = 0;
+    k->n_tree = 0;
     if (c->n_tasks > LINEAR)
         plant_tree(k, c->n_tasks, &i[c->due], d->quick);
 }
@@ -351,10 +329,7 @@ int64_t lw__dash_run(lw__lane *s, const lw__core *c, lw_tick until)
             find_next(d, k);
         }
         dispatch(d);
-        if (++handled == LOOK_AHEAD) {
-            d->looks_ahead = 1;
-            memset(k->ahead_job, -1, sizeof k->ahead_job);
-        }
+        handled++;
     }
     if (handled > 0)
         end(s, d);

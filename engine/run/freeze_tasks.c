@@ -135,7 +135,7 @@ static lw_status logical_time(lw__freezer *w, lw__task *t)
 // ---- points
 
 typedef struct placed {
-    lw__point point;
+    lw__job_point point;
     lw_tick at; // at the longest execution
 } placed;
 
@@ -149,7 +149,7 @@ typedef struct point_list {
 static void put_point(point_list *l, lw__point_kind kind, lw_place place, int resource)
 {
     const lw__core *c = &l->w->z->cores[l->t->core];
-    lw__point p = {kind, (double)NAN, 0, resource};
+    lw__job_point p = {kind, (double)NAN, 0, resource};
     lw_tick at;
     if (place.kind == LW_PLACE_SHARE) {
         p.share = place.value.value;
@@ -234,7 +234,7 @@ static lw_status points_of(lw__freezer *w, lw__task *t)
         put_point(&l, LW__POINT_WRITE, def->writes, -1);
     put_point(&l, LW__POINT_FINISH, (lw_place){LW_PLACE_SHARE, {1, 0}}, -1);
     qsort(l.list, (size_t)l.n, sizeof *l.list, by_place);
-    lw__point *points = lw__freezer_get(w, sizeof *points * (size_t)l.n);
+    lw__job_point *points = lw__freezer_get(w, sizeof *points * (size_t)l.n);
     if (points == NULL)
         return LW_ERR_MEMORY;
     for (int i = 0; i < l.n; i++)

@@ -57,7 +57,7 @@ LW__INLINE void cut(lw__lane *s, const lw__core *c, int64_t r, lw_stretch_end en
 // Work of the present job at which point k lies.
 LW__INLINE lw_tick place_of(lw__lane *s, const lw__task *t, int64_t k, int W, int L)
 {
-    const lw__point *p = &t->points[k];
+    const lw__job_point *p = &t->points[k];
     lw_tick work = LW__I(t->ring_work + LW__I(t->head));
     if (p->share == 1)
         return work;
@@ -595,7 +595,7 @@ LW__INLINE void op_dispatch(LW__CONTEXT, const lw__core *c)
 
 // Serve one point of the job of rank r; 0: it has the core no more.
 LW__INLINE int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
-                           const lw__point *point)
+                           const lw__job_point *point)
 {
     int64_t slot = LW__I(t->head);
     int r = t->rank;
@@ -649,7 +649,7 @@ LW__INLINE void serve_points(LW__CONTEXT, const lw__core *c, int writes_only)
     if (LW__I(t->start) < 0)
         LW__I(t->start) = LW__I(c->work_at);
     while (s->status == LW_OK) {
-        const lw__point *point = &t->points[LW__I(c->at + r)];
+        const lw__job_point *point = &t->points[LW__I(c->at + r)];
         int reads = point->kind == LW__POINT_READ || point->kind == LW__POINT_LOCK;
         if (writes_only && reads) {
             LW__I(s->z->due + c->point_timer) = LW_NEVER;

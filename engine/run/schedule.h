@@ -41,12 +41,12 @@ typedef enum lw__point_kind { // in the order of points at one place
     LW__POINT_FINISH
 } lw__point_kind;
 
-typedef struct lw__point {
+typedef struct lw__job_point {
     lw__point_kind kind;
     double share; // of the work; NAN: after `ticks` of it
     lw_tick ticks;
     int resource;
-} lw__point;
+} lw__job_point;
 
 typedef enum lw__release {
     LW__RELEASE_CLOCK,
@@ -87,7 +87,7 @@ typedef struct lw__task {
     uint32_t lost_stream;
     // within a job
     int n_points;
-    const lw__point *points;
+    const lw__job_point *points;
     int n_sections;
     const lw_section_view *sections;
     int reads_at_release;
