@@ -10,6 +10,7 @@
     X(state_space) X(transfer) X(zeros_poles) X(gain) X(integrator) X(first_order)                 \
     X(second_order) X(winding) X(dc_machine) X(two_mass_drive)                                     \
     X(series) X(parallel) X(feedback) X(connect) X(flow)                                           \
+    X(lc_filter) X(thermal_lag) X(buck) X(boost) X(magnet_machine) X(pendulum) X(tank)             \
     X(modes) X(buck_switched) X(boost_switched) X(end_stop)
 #define LW__LUA_PLANT_METHODS(X) X(states) X(inputs) X(outputs) X(matrices)
 

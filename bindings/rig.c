@@ -3,6 +3,7 @@
 #include "rig.h"
 
 #include "module.h"
+#include "plant.h"
 #include "source.h"
 
 #include <math.h>
@@ -113,7 +114,9 @@ int lw__lua_rig_plant(lua_State *L)
     lw__lua_plant *plant = second(&r, LW__LUA_PLANT, "a plant");
     if (plant->it == NULL)
         lw__lua_bad(&r, "the plant is closed");
-    if (lw_plant_look(plant->it).flow != NULL)
+    int calls_lua = lua_getiuservalue(L, -1, PLANT_CALL) == LUA_TUSERDATA; // not a ready flow
+    lua_pop(L, 1);
+    if (calls_lua)
         lw__lua_rig_keep(L, -1);
     lw_status status = lw_rig_add_plant(rig->it, r.origin, name, plant->it, &err);
     return lw__lua_rig_added(&r, status, &err);

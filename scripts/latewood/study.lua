@@ -200,7 +200,7 @@ function study:requirement(t)
     fail("requirement \"%s\": state one of at_most, at_least and at_most_per_hour", t[1])
   end
   self.requirements[#self.requirements + 1] = {
-    name = t[1], kind = def[2], 
+    name = t[1], kind = def[2],
     share = share_of(t[1], "share", t.of_runs or not percentile and t.share or nil),
     confidence = share_of(t[1], "confidence", t.confidence) or 0.95,
     per_hour = t.at_most_per_hour and rate_of(t[1], t.at_most_per_hour),
