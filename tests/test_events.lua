@@ -207,6 +207,47 @@ t.test("a_comparator_triggers_adcs_and_latches", function()
   at_or_after(run:record("flag").time[1], exact)
 end)
 
+t.test("a_comparator_releases_tasks_and_is_read_by_laws", function()
+  local rig = slope()
+  rig:dac { "flag" }
+  rig:comparator { "high", of = "x.out", above = 1, hysteresis = 2, edge = "both" }
+  rig:trip { "turn", by = "high", output = "push", to = -1, lasts = "until clear" }
+  rig:core { "mcu", clock = "100 MHz", policy = "fixed priority", urgent = "larger" }
+  rig:task { "note", on = "mcu", priority = 1, released_by = "high", takes = "1 ms",
+    nominal = "2 s", law = lw.law.own { step = function(edge) return 10 + edge end },
+    edge = "high", output = "flag" }
+  local r = rig:run { lasts = "8 s", record = { "flag" } }:record "flag"
+  t.same_list(r.time, { 1.001, 3.001, 5.001, 7.001 })
+  t.same_list(r.value, { 11, 10, 11, 10 })
+  t.equal(table.concat(rig:describe { lasts = 1 }, "\n"):find("an edge of the comparator", 1,
+    true) ~= nil, true)
+end)
+
+t.test("a_stiff_plant_keeps_its_crossings", function()
+  local rig = lw.rig "stiff"
+  rig:plant { "lag", lw.plant.first_order { gain = 1, time_constant = "1 us" } }
+  rig:source { "u", lw.source.step { at = "0.25 s", from = 0, to = 1 } }
+  rig:connect { "u", to = "lag.in" }
+  rig:adc { "slow", of = "lag.out", every = "1 ms" }
+  rig:comparator { "half", of = "lag.out", above = 0.5 }
+  local r = edges(rig, "0.3 s", "half")
+  t.equal(r.n, 1)
+  -- the instant is read as a double of 0.25 s: to 6e-17 s; the stiff method promises 1e-9
+  t.near(r.crossed[1] - 0.25, 1e-6 * lw.math.log(2), 1e-9)
+end)
+
+t.test("a_comparator_finds_its_crossing_on_a_nonlinear_plant", function()
+  local rig = lw.rig "swing"
+  rig:plant { "arm", lw.plant.flow { states = { "x", "v" }, start = { 1, 0 },
+    flow = function(x, v) return v, -x end } }
+  rig:comparator { "positive", of = "arm.x", above = 0, edge = "both" }
+  local r = edges(rig, "20 s", "positive")
+  t.equal(r.n, 6)
+  for k = 1, 6 do
+    t.near(r.crossed[k], (k - 0.5) * math.pi, 1e-8) -- rtol of the plant is 1e-8 a step
+  end
+end)
+
 t.test("a_trigger_during_a_conversion_is_passed_over", function()
   local rig = lw.rig "swing"
   rig:plant { "arm", lw.plant.state_space { A = { { 0, 2 * math.pi }, { -2 * math.pi, 0 } },

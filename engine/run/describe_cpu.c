@@ -123,7 +123,9 @@ static void describe_release(writer *w, const lw__task *t)
         say(w, "  released by arrivals, %s apart", use_words(&t->arrives).text);
     else if (t->release == LW__RELEASE_EVENT)
         say(w, "  released by \"%s\" (%s)", d->released_by,
-            t->trigger.kind == LW__EVENT_TASK ? "its finish" : "its end of conversion");
+            t->trigger.kind == LW__EVENT_TASK         ? "its finish"
+            : t->trigger.kind == LW__EVENT_COMPARATOR ? "an edge of the comparator"
+                                                      : "its end of conversion");
     else
         say(w, "  released by the slots of its core's table");
     if (t->has_jitter)

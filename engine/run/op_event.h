@@ -4,13 +4,15 @@
 //   cross    phase 0: it is here; the anchor moves, the output changes or is on its way
 //   arrive   phase 0: a delayed change reaches the output
 //   trip     phase 1: forces an output; release gives it back
+//
+// Rare next to the others, and not inlined for each context.
 #ifndef LATEWOOD_RUN_OP_EVENT_H
 #define LATEWOOD_RUN_OP_EVENT_H
 
 #include "run/comparator.h"
 #include "run/op_dac.h"
 
-LW__INLINE void op_search(LW__CONTEXT, const lw__comparator *c)
+static inline void op_search(LW__CONTEXT, const lw__comparator *c)
 {
     (void)p;
     (void)N;
@@ -32,7 +34,8 @@ static inline void log_edge(lw__lane *s, const lw__comparator *c, double value, 
         lw__table_add(s, c->log, (double[]){lw__seconds(s->now), value, crossed});
 }
 
-LW__INLINE void comparator_output(LW__CONTEXT, const lw__comparator *c, int value, double crossed)
+static inline void comparator_output(LW__CONTEXT, const lw__comparator *c, int value,
+                                     double crossed)
 {
     lw_edge edge = c->item->def.edge;
     LW__F(c->out) = value;
@@ -81,7 +84,7 @@ static inline void queue_edge(lw__lane *s, const lw__comparator *c, int W, int L
         LW__I(s->z->due + c->delay_timer) = s->now + c->delay;
 }
 
-LW__INLINE void op_cross(LW__CONTEXT, const lw__comparator *c)
+static inline void op_cross(LW__CONTEXT, const lw__comparator *c)
 {
     LW__I(s->z->due + c->timer) = LW_NEVER;
     lw__make_due(p, c->search_op, N);
@@ -100,7 +103,7 @@ LW__INLINE void op_cross(LW__CONTEXT, const lw__comparator *c)
         comparator_output(LW__HERE, c, (int)LW__I(c->beyond), LW__F(c->found));
 }
 
-LW__INLINE void op_edge_arrives(LW__CONTEXT, const lw__comparator *c)
+static inline void op_edge_arrives(LW__CONTEXT, const lw__comparator *c)
 {
     int64_t head = LW__I(c->head);
     double crossed = LW__F(c->queue_at + head);
@@ -120,7 +123,7 @@ static inline void log_forced(lw__lane *s, const lw__dac *d, double to, int W, i
                                  (double)NAN, LW__F(d->saturated)});
 }
 
-LW__INLINE void op_trip(LW__CONTEXT, const lw__trip *t)
+static inline void op_trip(LW__CONTEXT, const lw__trip *t)
 {
     const lw__dac *d = t->dac;
     double to = t->item->def.to;
@@ -138,7 +141,7 @@ LW__INLINE void op_trip(LW__CONTEXT, const lw__trip *t)
 }
 
 // A trip ends; with the last one on its output that takes what was asked for last.
-LW__INLINE void end_trip(LW__CONTEXT, const lw__trip *t)
+static inline void end_trip(LW__CONTEXT, const lw__trip *t)
 {
     const lw__dac *d = t->dac;
     LW__I(t->active) = 0;
@@ -148,7 +151,7 @@ LW__INLINE void end_trip(LW__CONTEXT, const lw__trip *t)
 }
 
 // The comparator clears, or the time is over: the later of both ends the trip.
-LW__INLINE void op_release_trip(LW__CONTEXT, const lw__trip *t)
+static inline void op_release_trip(LW__CONTEXT, const lw__trip *t)
 {
     lw_trip_until until = t->item->def.until;
     if (t->timer >= 0 && LW__I(s->z->due + t->timer) == s->now) {
@@ -161,7 +164,7 @@ LW__INLINE void op_release_trip(LW__CONTEXT, const lw__trip *t)
 }
 
 // Trips that hold until a latch edge of their output end at it.
-LW__INLINE void op_latch_trip(LW__CONTEXT, const lw__trip *t)
+static inline void op_latch_trip(LW__CONTEXT, const lw__trip *t)
 {
     if (LW__I(t->active) != 0 && LW__F(t->by->out) == 0)
         end_trip(LW__HERE, t);

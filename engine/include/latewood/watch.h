@@ -28,13 +28,16 @@ typedef struct lw_record_def {
 } lw_record_def;
 LW_API lw_status lw_watch_record(lw_watch *watch, const lw_record_def *def, lw_error *err);
 
-// Record every event of an adc, a dac or a loop, by its name. Columns [s where a time]:
+// Record every event of an adc, a dac, a loop or a comparator, by its name. Columns [s where a time]:
 //   adc   sample, time (end of conversion), then for each channel input, value, code (input1,
 //         value1, code1, ... where there are several)
 //   dac   time, asked, limited, value, code, saturated - one row a write that reaches the output
 //         (each latch edge with fresh data; each write where there is no latch)
 //   loop  sample, time (of the step), written (NAN: lost), latency, job, then each output of the
 //         law, then each state after the step
+//   comparator  time (of the output's change), value (0 or 1), crossed (the instant of the crossing
+//         itself, not rounded to a tick)
+// A trip's begin and end are rows of its dac.
 LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char *name,
                                  int64_t limit, lw_error *err);
 
