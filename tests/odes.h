@@ -23,7 +23,7 @@ typedef struct problem {
     double scale; // an absolute scale of the comparison; 0: each entry's own
 } problem;
 
-#define FLOW(name) static int name(void *z, double t, const double *y, double *d)
+#define FLOW(name) static inline int name(void *z, double t, const double *y, double *d)
 
 FLOW(a1)
 {
@@ -169,7 +169,7 @@ FLOW(ten)
     d[0] = t - 10;
     return 0;
 }
-static double even(double t)
+static inline int even(double t)
 {
     return fmod(floor(t), 2) == 0;
 }

@@ -12,6 +12,10 @@ int lw__ode_explicit_work(int n)
     return (STAGES + 2) * n;
 }
 
+// Weights of order 5 less those of order 4.
+const double lw__ode_pair_error[STAGES] = {71. / 57600,      0,         -71. / 16695, 71. / 1920,
+                                           -17253. / 339200, 22. / 525, -1. / 40};
+
 // Sum of weighted stages: y = x + h (w0 k0 + w1 k1 + ...), in this order.
 INLINE void combine(int n, double h, const double *x, const double *k, int m, const double *w,
                     double *y)
@@ -29,13 +33,11 @@ INLINE void combine(int n, double h, const double *x, const double *k, int m, co
 // The error against what is permitted, worst state; not a number where anything is not.
 INLINE double error_of(const lw__ode_state *o, int n, double h, const double *k)
 {
-    static const double e[STAGES] = {71. / 57600,      0,         -71. / 16695, 71. / 1920,
-                                     -17253. / 339200, 22. / 525, -1. / 40};
     double worst = 0;
     for (int i = 0; i < n; i++) {
-        double sum = e[0] * k[i];
+        double sum = lw__ode_pair_error[0] * k[i];
         for (int j = 2; j < STAGES; j++)
-            sum += e[j] * k[j * n + i];
+            sum += lw__ode_pair_error[j] * k[j * n + i];
         double a = fabs(o->x[i]), b = fabs(o->x_new[i]);
         double ratio = fabs(h * sum) / (o->atol[i] + o->rtol * (a > b ? a : b));
         worst = ratio <= worst ? worst : ratio; // keeps what is no number

@@ -50,6 +50,8 @@ void lw__ode_stiff_dense(lw__ode_state *o, double h);
 // The same of order 5, from that of order 4 in o->c, for two flows more; nonzero: the flow failed.
 int lw__ode_explicit_refine(lw__ode_state *o, double h);
 
+extern const double lw__ode_pair_error[7];
+
 int lw__ode_explicit_work(int n);
 int lw__ode_stiff_work(int n);
 
