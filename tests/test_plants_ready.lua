@@ -117,7 +117,7 @@ test("dry_friction_takes_its_share_of_each_swing_and_then_holds", function()
   local half = math.pi * m.sqrt(0.02 / weight)
   local plant = lw.plant.pendulum { inertia = 0.02, weight_torque = weight, dry = dry,
     start = { 0.02, 0 } }
-  near(final(plant, { torque = 0 }, half, { "angle" }), -(0.02 - 2 * dry / weight), 2e-6)
+  near(final(plant, { torque = 0 }, half, { "angle" }), -(0.02 - 2 * dry / weight), 5e-5) -- sine: a^2 / 16
   local angle, speed = final(plant, { torque = 0 }, 50 * half, { "angle", "speed" })
   near(speed, 0, 0, 1)
   assert(m.abs(angle) <= dry / weight, "held within the band that friction holds")
