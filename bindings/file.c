@@ -5,6 +5,7 @@
 #include "file.h"
 
 #include "latewood_lua.h"
+#include "module.h"
 
 #include <errno.h>
 #include <latewood/quantity.h>
@@ -93,13 +94,16 @@ static char *next_line(file *f)
 
 // ---- cells
 
-static char separator_of(const char *line)
+static char separator_of(const char *line, const lw__lua_format *format)
 {
     static const char separators[] = "\t;,";
-    for (int i = 0; separators[i] != 0; i++)
+    if (format->separator != 0)
+        return format->separator;
+    int n = format->decimal == ',' ? 2 : 3; // a decimal comma separates nothing
+    for (int i = 0; i < n; i++)
         if (strchr(line, separators[i]) != NULL)
             return separators[i];
-    return ',';
+    return n == 2 ? ';' : ',';
 }
 
 // Cut `line` into cells in place, blanks and quotes around them taken away; their number.
@@ -124,12 +128,15 @@ static int cut(char *line, char separator, char **cells)
     return n;
 }
 
-static int is_number(const char *text, double *value)
+static int is_number(char *text, const lw__lua_format *format, double *value)
 {
     static const lw_dimension none = {0, 0, 0, 0, 0};
     lw_quantity q;
+    char *comma = format->decimal == ',' ? strchr(text, ',') : NULL;
+    if (comma != NULL)
+        *comma = '.';
     if (lw_quantity_parse(text, &q, NULL) != LW_OK || q.kind != LW_UNIT_SI ||
-        memcmp(&q.dimension, &none, sizeof none) != 0)
+        (!format->quantities && memcmp(&q.dimension, &none, sizeof none) != 0))
         return 0;
     *value = q.value;
     return 1;
@@ -178,10 +185,13 @@ static void append(lua_State *L, table *t, const double pair[2])
 
 // Whether the places of this line hold numbers; raises unless it may be a header.
 static int read_pair(const lw__lua_reader *r, const char *path, const file *f, int n_cells,
-                     char **cells, const int places[2], int may_be_header, double pair[2])
+                     char **cells, const int places[2], const lw__lua_format *format,
+                     int may_be_header, double pair[2])
 {
     for (int c = 0; c < 2; c++) {
-        if (places[c] < n_cells && is_number(cells[places[c]], &pair[c]))
+        if (places[c] < 0)
+            continue;
+        if (places[c] < n_cells && is_number(cells[places[c]], format, &pair[c]))
             continue;
         if (may_be_header)
             return 0;
@@ -202,7 +212,8 @@ static void split(lua_State *L, const table *t, lw__lua_list out[2])
 }
 
 void lw__lua_read_columns(const lw__lua_reader *r, const char *path,
-                          const lw__lua_column columns[2], lw__lua_list out[2])
+                          const lw__lua_column columns[2], const lw__lua_format *format,
+                          lw__lua_list out[2])
 {
     lua_State *L = r->L;
     char **cells = lw__lua_room(L, MOST_COLUMNS, sizeof *cells);
@@ -214,13 +225,13 @@ void lw__lua_read_columns(const lw__lua_reader *r, const char *path,
     int n_lines = 0;
     char separator = ',';
     for (char *line = next_line(f); line != NULL; line = next_line(f), n_lines++) {
-        double pair[2];
+        double pair[2] = {t.n, t.n}; // a column that counts rows keeps this
         if (n_lines == 0)
-            separator = separator_of(line);
+            separator = separator_of(line, format);
         int n_cells = cut(line, separator, cells);
         if (n_lines == 0 && by_name)
             find_columns(r, path, columns, n_cells, cells, places);
-        else if (read_pair(r, path, f, n_cells, cells, places, n_lines == 0, pair))
+        else if (read_pair(r, path, f, n_cells, cells, places, format, n_lines == 0, pair))
             append(L, &t, pair);
     }
     if (ferror(f->stream))
@@ -231,4 +242,61 @@ void lw__lua_read_columns(const lw__lua_reader *r, const char *path,
     if (t.n == 0)
         lw__lua_bad(r, "%s holds no numbers", path);
     split(L, &t, out);
+}
+
+lw__lua_column lw__lua_column_field(const lw__lua_reader *r, const char *field)
+{
+    lw__lua_column c = {NULL, 0};
+    int type = lw__lua_push_field(r, field);
+    if (type == LUA_TNIL)
+        lw__lua_bad(r, "%s is missing", field);
+    if (type == LUA_TNUMBER)
+        c.number = (int)lw__lua_whole(r, field, -1, 1, 1000);
+    else if (type == LUA_TSTRING)
+        c.name = lw__lua_field_text(r, field, -1);
+    else
+        lw__lua_bad_type(r, field, -1, "a column's name or number");
+    return c;
+}
+
+// ---- for the modules written in Lua
+
+static void push_list(lua_State *L, const lw__lua_list *list)
+{
+    lua_createtable(L, list->n, 0);
+    for (int i = 0; i < list->n; i++) {
+        lua_pushnumber(L, list->v[i]);
+        lua_rawseti(L, -2, i + 1);
+    }
+}
+
+typedef struct named_file {
+    const char *decimal, *separator;
+} named_file;
+
+// lw.columns { file, time = , value = , decimal = , separator = }: two lists of numbers, in SI
+// where cells have units; the first is nil where no column is named time.
+int lw__lua_columns(lua_State *L)
+{
+    static const lw__lua_field wanted[] = {
+        OTHER("time"), OTHER("value"), OPTIONAL(named_file, decimal, "decimal", FIELD_TEXT, NULL),
+        OPTIONAL(named_file, separator, "separator", FIELD_TEXT, NULL)};
+    named_file p = {".", ""};
+    lw__lua_reader r = lw__lua_read(L, 1, "measured");
+    const char *path = lw__lua_read_name(&r, "measured");
+    LW__LUA_FIELDS(&r, wanted, 1, &p);
+    lw__lua_column columns[2] = {{NULL, 0}, lw__lua_column_field(&r, "value")};
+    int timed = lw__lua_push_field(&r, "time") != LUA_TNIL;
+    if (timed)
+        columns[0] = lw__lua_column_field(&r, "time");
+    lw__lua_format format = {p.decimal[0], strcmp(p.separator, "tab") == 0 ? '\t' : p.separator[0],
+                             1};
+    lw__lua_list out[2];
+    lw__lua_read_columns(&r, lw__lua_resolve(&r, "file", path), columns, &format, out);
+    if (timed)
+        push_list(L, &out[0]);
+    else
+        lua_pushnil(L);
+    push_list(L, &out[1]);
+    return 2;
 }

@@ -57,6 +57,7 @@ static const luaL_Reg module_functions[] = {{"rig", lw__lua_rig_new},
                                             {"number_text", lw__lua_number_text},
                                             {"nearest", lw__lua_nearest},
                                             {"metric_kinds", lw__lua_metric_kinds},
+                                            {"columns", lw__lua_columns},
                                             {"fail", lw__lua_fail_here},
                                             END};
 
@@ -150,7 +151,7 @@ static void make_class(lua_State *L, const char *name, const luaL_Reg *methods,
 
 // ---- the parts written in Lua
 
-static const char *const parts[] = {"study", "spread", "sweep", "worst_phase", NULL};
+static const char *const parts[] = {"study", "spread", "sweep", "worst_phase", "measured", NULL};
 
 static int is_part(const char *name)
 {

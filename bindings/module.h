@@ -11,7 +11,7 @@
     X(second_order) X(winding) X(dc_machine) X(two_mass_drive)                                     \
     X(series) X(parallel) X(feedback) X(connect) X(flow)                                           \
     X(lc_filter) X(thermal_lag) X(buck) X(boost) X(magnet_machine) X(pendulum) X(tank)             \
-    X(modes) X(buck_switched) X(boost_switched) X(end_stop)
+    X(modes) X(buck_switched) X(boost_switched) X(end_stop) X(fit)
 #define LW__LUA_PLANT_METHODS(X) X(states) X(inputs) X(outputs) X(matrices)
 
 #define LW__LUA_SOURCES(X)                                                                         \
@@ -78,6 +78,7 @@ int lw__lua_quantity(lua_State *L);
 int lw__lua_number_text(lua_State *L);
 int lw__lua_nearest(lua_State *L);
 int lw__lua_metric_kinds(lua_State *L);
+int lw__lua_columns(lua_State *L);
 int lw__lua_fail_here(lua_State *L);
 int lw__lua_push_math(lua_State *L);
 

@@ -139,21 +139,6 @@ static const lw__lua_field table_fields[] = {OTHER("time"), OTHER("value"),
                                              OPTIONAL(points, file, "file", FIELD_TEXT, NULL),
                                              CHOICE(points, lines, "between", betweens)};
 
-static lw__lua_column column(const lw__lua_reader *r, const char *field)
-{
-    lw__lua_column c = {NULL, 0};
-    int type = lw__lua_push_field(r, field);
-    if (type == LUA_TNIL)
-        lw__lua_bad(r, "%s is missing", field);
-    if (type == LUA_TNUMBER)
-        c.number = (int)lw__lua_whole(r, field, -1, 1, 1000);
-    else if (type == LUA_TSTRING)
-        c.name = lw__lua_field_text(r, field, -1);
-    else
-        lw__lua_bad_type(r, field, -1, "a column's name or number");
-    return c;
-}
-
 static lw__lua_list list_field(const lw__lua_reader *r, const char *field, const char *unit)
 {
     if (lw__lua_push_field(r, field) == LUA_TNIL)
@@ -178,8 +163,10 @@ int lw__lua_source_table(lua_State *L)
     lw__lua_reader r = lw__lua_read(L, 1, "source table");
     LW__LUA_FIELDS(&r, table_fields, 0, &p);
     if (p.file != NULL) {
-        lw__lua_column wanted[2] = {column(&r, "time"), column(&r, "value")};
-        lw__lua_read_columns(&r, lw__lua_resolve(&r, "file", p.file), wanted, columns);
+        lw__lua_column wanted[2] = {lw__lua_column_field(&r, "time"),
+                                    lw__lua_column_field(&r, "value")};
+        static const lw__lua_format usual = {'.', 0, 0};
+        lw__lua_read_columns(&r, lw__lua_resolve(&r, "file", p.file), wanted, &usual, columns);
     } else {
         columns[0] = list_field(&r, "time", "s");
         columns[1] = list_field(&r, "value", NULL);

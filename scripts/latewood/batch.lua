@@ -7,6 +7,7 @@
 
 local lw = require "latewood"
 local judge = require "latewood.judge"
+local own = require "latewood.own_metric"
 local points = require "latewood.points"
 local spread = require "latewood.spread"
 local trial = require "latewood.trial"
@@ -76,15 +77,19 @@ local function computer(host, study, plan)
     host.again()
     local rig = trial.rig(study, point.parameters, plan.seed, point.varies and run or nil)
     return trial.checked(study, rig.start, rig, { lasts = study.lasts, seed = plan.seed, run = run,
-      metrics = study.metrics })
+      metrics = own.engine(study), record = own.records(study) })
+  end
+  local function row_of(started_run, run)
+    if not own.any(study) then return started_run:row(run) end
+    return own.row(study, started_run, table.pack(started_run:row(run)))
   end
   return function(number, run)
     local point = plan.points[number + 1]
     if point.varies then
-      local own = started(point, run)
+      local alone = started(point, run)
       host.again()
-      local row = table.pack(own:row(run))
-      own:close()
+      local row = table.pack(row_of(alone, run))
+      alone:close()
       return table.unpack(row, 1, row.n)
     end
     if not cache[number] then
@@ -97,7 +102,7 @@ local function computer(host, study, plan)
       order[#order + 1] = number
     end
     host.again()
-    return cache[number]:row(run)
+    return row_of(cache[number], run)
   end
 end
 

@@ -118,7 +118,7 @@ local function metric_lines(study, plan, ledger)
         cells = { words.metric(m[2], s.mean) }
         for k, q in ipairs(s.quantiles) do cells[k + 1] = words.metric(m[2], q.value) end
       end
-      lines[#lines + 1] = ("    %s%11s%11s%11s%11s"):format(words.pad(words.cut(
+      lines[#lines + 1] = ("    %s %10s %10s %10s %10s"):format(words.pad(words.cut(
         words.plain(point.name), 29), 29), table.unpack(cells))
     end
   end

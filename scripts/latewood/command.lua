@@ -13,6 +13,7 @@ local lw = require "latewood"
 local batch_command = require "latewood.batch_command"
 local figure = require "latewood.figure"
 local json = require "latewood.json"
+local own_metric = require "latewood.own_metric"
 local report = require "latewood.report"
 local starter = require "latewood.starter"
 local study = require "latewood.study"
@@ -309,9 +310,12 @@ local function describe_variant(s, pairs_, variant)
   local parameters, message = trial.parameters(s, pairs_, variant.own)
   if not parameters then return nil, message end
   local rig = trial.rig(s, parameters)
-  trial.checked(s, rig.freeze, rig, { lasts = s.lasts, metrics = s.metrics,
-    record = trial.records(s) })
-  return rig:describe { lasts = s.lasts, metrics = s.metrics }
+  local metrics = own_metric.engine(s)
+  trial.checked(s, rig.freeze, rig, { lasts = s.lasts, metrics = metrics,
+    record = own_metric.records(s, trial.records(s)) })
+  local lines = rig:describe { lasts = s.lasts, metrics = metrics }
+  for _, line in ipairs(own_metric.describe(s)) do lines[#lines + 1] = line end
+  return lines
 end
 
 local function describe(host, p)

@@ -1,5 +1,6 @@
 -- Figures of a study: responses of the variants over one another, and latencies as histograms.
 
+local measured = require "latewood.measured"
 local svg = require "latewood.svg"
 local words = require "latewood.words"
 
@@ -126,14 +127,81 @@ local function legend_of(f, result, is_bar)
   return legend
 end
 
+-- ---- measured data
+
+local MEASURED = 3
+
+-- Measured data over the first panel, a panel of what they have more than each variant, and notes.
+local function overlay(f, result, panels, legend, size, unit)
+  local notes, data, last = {}, f.data, result.variants[#result.variants]
+  if f.align then
+    local by = measured.align(data, last.traces[f.index][f.of[1]], f.align)
+    data = measured.within(data:shifted(by), f.from, f.till)
+    notes[1] = ("Measured data moved by %s to lie closest."):format(words.time(by))
+  end
+  local rest = { x = { f.from, f.till }, traces = {}, limits = {}, x_label = "time / " .. unit,
+    x_marks = marks_in(size, f.from, f.till), y_label = "measured less run" .. unit_of(f, 1) }
+  for v = #result.variants, 1, -1 do
+    local variant = result.variants[v]
+    local values = f.align and measured.sampled(data, variant.traces[f.index][f.of[1]]) or
+      variant.traces[f.index][measured.ROWS].value
+    local residual = measured.residuals(data, values)
+    rest.traces[#rest.traces + 1] = { name = "measured less " .. variant.name, v = v,
+      style = style_of(result, v), x = table.move(data.time, 1, #residual, 1, {}), y = residual }
+    local fit = measured.compare("fit", data, values)
+    notes[#notes + 1] = ("%s: fit %s, 1 - |y - x| / |y - mean y| over %d rows."):format(variant.name,
+      fit and words.metric("fit", fit) or "undefined", data.n)
+  end
+  local first = panels[1]
+  table.insert(first.traces, { name = "measured: " .. data.name, style = MEASURED, x = data.time,
+    y = data.value })
+  first.y, rest.y = range_of(first, result), range_of(rest, result)
+  table.insert(panels, 2, rest)
+  legend[#legend + 1] = { name = "measured", style = MEASURED }
+  return notes
+end
+
 local function response(f, result)
   local size, unit = words.time_unit(f.till)
-  local panels = {}
+  local panels, legend, notes = {}, legend_of(f, result), nil
   for i, signal in ipairs(f.of) do
     panels[i] = response_panel(f, i, signal, result, size, unit)
   end
-  return svg.page { title = words.plain(f.title), legend = legend_of(f, result), panels = panels,
-    notes = notes_of(f, result) }
+  if f.data then notes = overlay(f, result, panels, legend, size, unit) end
+  return svg.page { title = words.plain(f.title), legend = legend, panels = panels,
+    notes = notes_of(f, result, notes) }
+end
+
+local units = { time_constant = " s", delay = " s", natural_frequency = " rad/s" }
+
+-- A fitted plant beside the data: no run.
+local function fitted(f)
+  local fit, panels, notes = f.fit, {}, {}
+  local time = fit.measured.time
+  local from, till = time[1], time[#time]
+  local size, unit = words.time_unit(math.max(math.abs(from), math.abs(till)))
+  local function panel(label, traces)
+    local p = { x = { from, till }, traces = traces, limits = {}, x_label = "time / " .. unit,
+      x_marks = marks_in(size, from, till), y_label = label .. unit_of(f, 1) }
+    p.y = range_of(p)
+    panels[#panels + 1] = p
+  end
+  panel("step response", { { name = "measured", style = MEASURED, x = time,
+    y = fit.measured.value }, { name = fit.kind, style = 2, x = time, y = fit.model } })
+  panel("measured less model", { { name = "residual", style = 2, x = time, y = fit.residual } })
+  for _, name in ipairs { "gain", "time_constant", "natural_frequency", "damping", "delay",
+                          "offset" } do
+    if fit.parameters[name] then
+      notes[#notes + 1] = ("%s %.6g%s, standard error %.2g"):format((name:gsub("_", " ")),
+        fit.parameters[name], units[name] or "", fit.errors[name])
+    end
+  end
+  notes[#notes + 1] = ("fit %s, R squared %.6g, residual %.4g rms, %d rows"):format(
+    words.metric("fit", fit.fit), fit.r_squared, fit.residual_rms, fit.n)
+  if f.note then notes[#notes + 1] = words.plain(f.note) end
+  notes[#notes + 1] = "A result of the model, not of the machine."
+  return svg.page { title = words.plain(f.title), panels = panels, notes = notes, legend = {
+    { name = "measured", style = MEASURED }, { name = words.plain(fit.kind), style = 2 } } }
 end
 
 -- ---- latencies
@@ -287,7 +355,8 @@ function figure.all(study, result)
     f.index = i
     local name = figure.free_name(title_name(f.title), taken)
     out[i] = { name = name, file = name .. ".svg",
-      text = f.latency_of and latencies(f, result) or response(f, result) }
+      text = f.fit and fitted(f) or f.latency_of and latencies(f, result) or
+        response(f, result) }
   end
   return out
 end

@@ -14,6 +14,8 @@
 --   title   one line for the head of the report
 --
 -- study:metric { "name", "kind", of = , ... }       the fields of a rig's metrics
+-- study:metric { "name", of = , compute = , unit = }    of the study's own: latewood.own_metric
+-- study:metric { "name", "fit", of = , measured = }      against measured data: latewood.measured
 -- study:requirement { "name", "kind", of = , at_most = | at_least = , ... }
 --   share, confidence   the share of runs that must meet the limit, shown at that confidence (95 %);
 --           without a share every run must. Of a percentile, whose own share it is: of_runs
@@ -27,10 +29,16 @@
 --   from, to   window; to may be called until, as elsewhere
 --   every   time between the points, where those of the figure are too far apart
 --   note    printed on the figure
+--   measured   what lw.measured gives, drawn with the first signal, later by `shift`; a further panel
+--           shows measured less run, and a note the fit. align: the time by which the data may be
+--           moved further to lie closest to the last variant
+-- study:figure { "title", fit = , note = }    what lw.plant.fit gives: data, model, residual
 -- study:figure { "title", latency_of = loop, from = , to = , note = }
 --   a histogram of a loop's times from sample to write
 
 local lw = require "latewood"
+local measured = require "latewood.measured"
+local own = require "latewood.own_metric"
 local sweep = require "latewood.sweep"
 local trial = require "latewood.trial"
 local words = require "latewood.words"
@@ -43,7 +51,7 @@ study.__metatable = false
 local study_fields = { "lasts", "runs", "seed", "given", "before", "after", "called", "title", "sweep",
   "keep", "stop_early" }
 local figure_fields = { "of", "wanted", "band", "unit", "from", "to", "until", "every", "note",
-  "latency_of" }
+  "latency_of", "measured", "shift", "align", "fit" }
 
 local function fail(format, ...)
   lw.fail(format:format(...))
@@ -133,6 +141,7 @@ end
 local function limit_of(kind, value)
   if value == nil then return nil end
   local unit = words.units[kind]
+  if type(value) == "number" then return lw.quantity(value) end
   if not unit and type(value) == "string" and value:find("%%%s*$") then unit = "1" end
   return lw.quantity(value, unit)
 end
@@ -143,9 +152,8 @@ local function origin()
   return message:gsub(":%s*$", "")
 end
 
--- Two positional entries: a name and a kind in words; one serves as both.
-local function add_metric(self, what, t, skip)
-  if type(t) ~= "table" or type(t[1]) ~= "string" then fail("%s: its name is missing", what) end
+-- A metric of the engine. Two positional entries: a name and a kind in words; one serves as both.
+local function engine_metric(what, t, skip)
   local kinds, def = lw.metric_kinds(), {}
   for k, v in pairs(t) do
     if not skip[k] then def[k] = v end
@@ -158,6 +166,13 @@ local function add_metric(self, what, t, skip)
     fail("%s \"%s\": no metric is called \"%s\"%s", what, t[1], tostring(def[2]),
       near and ("; nearest \"%s\""):format(near) or "; there are: " .. table.concat(kinds, ", "))
   end
+  return def
+end
+
+local function add_metric(self, what, t, skip)
+  if type(t) ~= "table" or type(t[1]) ~= "string" then fail("%s: its name is missing", what) end
+  local def = own.is(t) and own.new(('%s "%s"'):format(what, t[1]), t, skip) or
+    engine_metric(what, t, skip)
   for _, m in ipairs(self.metrics) do
     if m[1] == def[1] then fail("%s \"%s\": the name is taken", what, t[1]) end
   end
@@ -265,18 +280,51 @@ local function every_of(what, every, from, till)
   return seconds
 end
 
+-- Measured data under a figure, and how far they may be moved.
+local function overlay_of(f, what, t)
+  if t.measured == nil then
+    if t.shift ~= nil or t.align ~= nil then fail("%s: shift and align move measured data", what) end
+    return
+  end
+  if not measured.is(t.measured) then
+    fail("%s: measured is a %s; what lw.measured gives is wanted", what, type(t.measured))
+  end
+  local data = t.measured:shifted(t.shift or 0)
+  f.data = measured.within(data, f.from, f.till)
+  if f.data.n < 2 then
+    fail("%s: %d rows of the measured data lie in its window; at least 2 are wanted", what, f.data.n)
+  end
+  if t.align ~= nil then
+    f.align = lw.quantity(t.align, "s")
+    if not (f.align > 0) then fail("%s: align is %.6g s; above 0 is wanted", what, f.align) end
+  end
+end
+
+local function fitted_of(what, t)
+  for _, field in ipairs { "wanted", "band", "every", "measured", "shift", "align", "from", "to",
+                           "until" } do
+    if t[field] ~= nil then fail("%s: %s has no place beside fit", what, field) end
+  end
+  local fit = t.fit
+  if type(fit) ~= "table" or type(fit.residual) ~= "table" or type(fit.measured) ~= "table" then
+    fail("%s: fit is a %s; what lw.plant.fit gives is wanted", what, type(fit))
+  end
+  return { fit = fit, unit = t.unit, note = text_of(what, "note", t.note) }
+end
+
 local function response_of(self, what, t)
   local f = { of = signals_of(what, t.of), wanted = t.wanted, bands = bands_of(what, t.band),
     unit = t.unit, note = text_of(what, "note", t.note) }
   f.from, f.till = window_of(self, what, t)
   f.every = every_of(what, t.every, f.from, f.till)
   if f.wanted ~= nil and type(f.wanted) ~= "string" then f.wanted = lw.quantity(f.wanted) end
+  overlay_of(f, what, t)
   if f.unit ~= nil and type(f.unit) ~= "table" then text_of(what, "unit", f.unit) end
   return f
 end
 
 local function latency_of(self, what, t)
-  for _, field in ipairs { "wanted", "band", "unit", "every" } do
+  for _, field in ipairs { "wanted", "band", "unit", "every", "measured", "shift", "align" } do
     if t[field] ~= nil then fail("%s: %s has no place beside latency_of", what, field) end
   end
   local f = { latency_of = text_of(what, "latency_of", t.latency_of),
@@ -289,10 +337,10 @@ function study:figure(t)
   if type(t) ~= "table" or type(t[1]) ~= "string" then fail("figure: its title is missing") end
   local what = ("figure \"%s\""):format(t[1])
   known(what, t, figure_fields)
-  if (t.of == nil) == (t.latency_of == nil) then
-    fail("%s: state one of of and latency_of", what)
-  end
-  local f = (t.of and response_of or latency_of)(self, what, t)
+  local n = (t.of ~= nil and 1 or 0) + (t.latency_of ~= nil and 1 or 0) + (t.fit ~= nil and 1 or 0)
+  if n ~= 1 then fail("%s: state one of of, latency_of and fit", what) end
+  local f = t.fit ~= nil and fitted_of(what, t) or
+    (t.of and response_of or latency_of)(self, what, t)
   f.title = t[1]
   self.figures[#self.figures + 1] = f
   return self

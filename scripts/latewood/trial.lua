@@ -7,6 +7,8 @@
 -- 3. A requirement is met when every run meets it; a run that ended early meets none.
 
 local lw = require "latewood"
+local measured = require "latewood.measured"
+local own = require "latewood.own_metric"
 local spread = require "latewood.spread"
 
 local trial = {}
@@ -130,6 +132,7 @@ local function wanted_records(study)
       add(i, signal, trace_record(f, signal))
       seen[signal] = true
     end
+    if f.data and not f.align then add(i, measured.ROWS, measured.entry(f.data, f.of[1])) end
     if type(f.wanted) == "string" and not seen[f.wanted] then
       add(i, f.wanted, trace_record(f, f.wanted))
     end
@@ -172,24 +175,26 @@ function trial.checked(study, f, ...)
   error((where and where ~= "" and where .. ": " or "") .. results[2], 0)
 end
 
+-- Returns run, status, why, and the values of the study's own metrics by name.
 local function one_run(study, rig, seed, number, records)
   local run = trial.checked(study, rig.run, rig, { lasts = study.lasts, seed = seed, run = number,
-    metrics = study.metrics, record = records })
+    metrics = own.engine(study), record = own.records(study, records) })
   local status, why = run:status()
   if status == "LW_ERR_LAW" then error(why, 0) end -- the study is wrong, not the loop
-  return run, status, why
+  local values = status == "done" and own.values(study, run, records) or {}
+  return run, status, why, values
 end
 
--- Run 0 with what the figures need. Returns run, status, why, the traces, and where these end too
--- early the time at which they do.
+-- Run 0 with what the figures need. Returns what one_run does, then the traces, and where these end
+-- too early the time at which they do.
 local function first_run(study, rig, seed)
   local records = trial.records(study)
-  local run, status, why = one_run(study, rig, seed, 0, #records > 0 and records or nil)
+  local run, status, why, values = one_run(study, rig, seed, 0, records)
   local traces = traces_of(study, run)
-  if status ~= "LW_ERR_CAPACITY" or #records == 0 then return run, status, why, traces end
+  if status ~= "LW_ERR_CAPACITY" or #records == 0 then return run, status, why, values, traces end
   local cut = run:now()
-  run, status, why = one_run(study, rig, seed, 0, nil)
-  return run, status, why, traces, status == "done" and cut or nil
+  run, status, why, values = one_run(study, rig, seed, 0, nil)
+  return run, status, why, values, traces, status == "done" and cut or nil
 end
 
 -- What the figures show of a batch: run 0 of each variant at the first point, as a result without
@@ -200,7 +205,7 @@ function trial.shown(study, points, seed)
     if not seen[point.variant] then
       seen[point.variant] = true
       local rig = trial.rig(study, point.parameters, seed, 0)
-      local run, status, why, traces, cut = first_run(study, rig, seed)
+      local run, status, why, _, traces, cut = first_run(study, rig, seed)
       out.variants[#out.variants + 1] = { name = point.variant, parameters = point.parameters,
         values = {}, traces = traces, cut = cut, ended = status ~= "done" and { { run = 0,
           status = status, message = why, at = run:now() } } or {} }
@@ -223,18 +228,18 @@ local function run_variant(study, variant, arguments, options)
       if rig then options.again() end
       rig = trial.rig(study, p, options.seed, i)
     end
-    local run, status, why
+    local run, status, why, values
     if i == 0 then
-      run, status, why, result.traces, result.cut = first_run(study, rig, options.seed)
+      run, status, why, values, result.traces, result.cut = first_run(study, rig, options.seed)
     else
-      run, status, why = one_run(study, rig, options.seed, i, nil)
+      run, status, why, values = one_run(study, rig, options.seed, i, nil)
     end
     if status ~= "done" then
       result.ended[#result.ended + 1] = { run = i, status = status, message = why,
         at = run:now() }
     end
     for _, m in ipairs(study.metrics) do
-      result.values[m[1]][i + 1] = status == "done" and run:metric(m[1]) or 0 / 0
+      result.values[m[1]][i + 1] = status == "done" and (values[m[1]] or run:metric(m[1])) or 0 / 0
     end
   end
   return result

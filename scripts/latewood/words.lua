@@ -39,14 +39,31 @@ for _, count in ipairs { "jobs", "skipped jobs", "aborted jobs", "misses in a ro
   words.units[count] = "1"
 end
 
+words.units.fit = "1"
+
+-- The kind of a metric of a study's own, which tells its unit.
+function words.own_kind(unit)
+  return unit == "" and "own metric" or "own metric in " .. unit
+end
+
+local function own_unit(kind)
+  return type(kind) == "string" and kind:match("^own metric in (.+)$") or nil
+end
+setmetatable(words.units, { __index = function(_, kind)
+  local unit = own_unit(kind)
+  return unit == "%" and "1" or unit
+end })
+
 local never = { ["settling time"] = "never", ["rise time"] = "never" }
 
 -- A metric's value as a reader expects it: shares in percent, times with a unit.
 function words.metric(kind, value)
   if value ~= value then return never[kind] or "undefined" end
   if kind == "overshoot" or kind == "undershoot" then return ("%.3g %%"):format(value * 100) end
+  if kind == "fit" or own_unit(kind) == "%" then return ("%.4g %%"):format(value * 100) end
   if words.units[kind] == "s" then return words.time(value) end
-  return ("%.5g"):format(value)
+  local unit = own_unit(kind)
+  return ("%.5g"):format(value) .. (unit and " " .. unit or "")
 end
 
 -- Valid UTF-8: bytes that are none become U+FFFD.

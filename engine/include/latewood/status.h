@@ -46,7 +46,8 @@ extern "C" {
     X(LW_ERR_INTERNAL, -15, "an invariant of the engine does not hold")                            \
     X(LW_ERR_STEP, -16, "an integration cannot go on: its step size collapsed")                    \
     X(LW_ERR_PROCESS, -20, "a process was lost, or could not be started")                          \
-    X(LW_ERR_CHATTER, -21, "something switches to and fro while hardly any time passes")
+    X(LW_ERR_CHATTER, -21, "something switches to and fro while hardly any time passes")           \
+    X(LW_ERR_FIT, -22, "data do not determine what is fitted to them")
 
 typedef enum lw_status {
 #define LW_STATUS_ENUM(name, value, text) name = value,
