@@ -23,8 +23,7 @@ BEGIN {
     for (j = 1; j <= n; j++) owner[name[j]] = "base"
     owner["rig"] = "io"     # definitions of converters and loops, which io reads
     owner["watch"] = "run"
-    owner["ready"] = "plant"
-    owner["modes"] = "plant"
+    owner["ready"] = owner["modes"] = owner["fit"] = "plant"
     owner["event"] = owner["pwm"] = "io"    # definitions of comparators and trips
     owner["statistics"] = owner["ledger"] = owner["crew"] = "batch"
 }

@@ -249,6 +249,23 @@ local cases = {
   { "a_window_that_ends_before_it_begins",
     { requirement = 'study:requirement { "maximum", of = "coil.current", from = "2 ms", ' ..
     '["until"] = "1 ms", at_most = 1 }' }, DATA, ':13: metric "maximum": from' },
+  { "a_metric_of_no_records", { requirement = 'study:requirement { "x", at_most = 1, ' ..
+    "compute = function() return 1 end }" }, DATA, ':13: requirement "x": of is missing' },
+  { "a_metric_of_unknown_records", { requirement = 'study:requirement { "x", of = "curent", ' ..
+    "at_most = 1, compute = function() return 1 end }" }, DATA, ':13: metric "x": .*curent' },
+  { "a_metric_that_computes_text", { requirement = 'study:requirement { "x", of = "current", ' ..
+    "at_most = 1, compute = function() return 'high' end }" }, DATA, 'compute returned a string' },
+  { "a_mask_of_one_corner", { requirement = 'study:requirement { "mask violation", at_most = 0, ' ..
+    'of = "coil.current", mask = { { 0, -1, 1 } } }' }, DATA, ':13: metric .*mask has 1 corners' },
+  { "measured_data_without_a_file", { requirement = 'study:requirement { "fit", at_least = 1, ' ..
+    'of = "coil.current", measured = lw.measured { "none.csv", time = 1, value = 2 } }' }, DATA,
+    ':13: .*none.csv' },
+  { "a_file_outside_the_folder", { requirement = 'study:requirement { "fit", at_least = 1, ' ..
+    'of = "coil.current", measured = lw.measured { "../../x.csv", time = 1, value = 2 } }' }, DATA,
+    ':13: .*x.csv' },
+  { "a_fit_of_an_unknown_kind", { requirement = 'lw.plant.fit { measured = lw.measured { ' ..
+    'time = { 0, 1, 2 }, value = { 0, 1, 2 } }, kind = "first ordr", input = 1 }' }, DATA,
+    ':13: plant fit: kind is "first ordr".*first order' },
   { "no_length", { study = "lw.study { build }" }, DATA, ":12: study: lasts is missing" },
   { "a_length_of_zero", { study = "lw.study { build, lasts = 0 }" }, DATA, ":12: study: lasts is 0" },
   { "half_a_run", { study = 'lw.study { build, lasts = "1 ms", runs = 1.5 }' }, DATA,

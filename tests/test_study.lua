@@ -381,7 +381,7 @@ local function test_figures()
       raises(function() s:figure(t) end, ...)
     end
     refuses({ of = "x" }, "title is missing")
-    refuses({ "f" }, "state one of of and latency_of")
+    refuses({ "f" }, "state one of of, latency_of and fit")
     refuses({ "f", of = "x", latency_of = "y" }, "state one of")
     refuses({ "f", off = "x" }, 'no field "off"; nearest "of"')
     refuses({ "f", of = {} }, "of is no signal")

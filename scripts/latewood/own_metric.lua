@@ -183,6 +183,16 @@ function own.row(study, run, row)
   return table.unpack(out, 1, 3 + #study.metrics)
 end
 
+-- The metric for which a record of this name is kept, or nil.
+function own.asker(study, name)
+  for _, m in ipairs(study.metrics) do
+    for _, e in ipairs(m.records or {}) do
+      if (type(e) == "string" and e or e[1]) == name then return m end
+    end
+  end
+  return nil
+end
+
 -- Lines for a person.
 function own.describe(study)
   local lines = {}

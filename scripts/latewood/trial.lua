@@ -171,8 +171,11 @@ function trial.checked(study, f, ...)
   local results = table.pack(pcall(f, ...))
   if results[1] then return table.unpack(results, 2, results.n) end
   if type(results[2]) ~= "string" then error(results[2], 0) end
-  local where = study.origins[results[2]:match('^metric "(.-)":') or ""]
-  error((where and where ~= "" and where .. ": " or "") .. results[2], 0)
+  local message = results[2]
+  local asker = own.asker(study, message:match('^record[^"]*"(.-)"'))
+  if asker then message = ('metric "%s": %s'):format(asker[1], message) end
+  local where = study.origins[message:match('^metric "(.-)":') or ""]
+  error((where and where ~= "" and where .. ": " or "") .. message, 0)
 end
 
 -- Returns run, status, why, and the values of the study's own metrics by name.
