@@ -121,7 +121,7 @@ test("dry_friction_takes_its_share_of_each_swing_and_then_holds", function()
   local angle, speed = final(plant, { torque = 0 }, 50 * half, { "angle", "speed" })
   near(speed, 0, 0, 1)
   assert(m.abs(angle) <= dry / weight, "held within the band that friction holds")
-  near(final(plant, { torque = 0 }, 80 * half, { "angle" }), angle, 0)
+  near(final(plant, { torque = 0 }, 80 * half, { "angle" }), angle, 1e-9, 1) -- other windows of its steps
 end)
 
 test("friction_holds_until_the_torque_exceeds_the_breakaway", function()

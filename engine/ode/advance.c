@@ -62,6 +62,8 @@ typedef struct course {
     double *g, *g_new, *g_mid, *g_lo, *g_hi, *x_mid;
     double *largest, *since; // of each switching function: in this call, since it switched
     int in_place;
+    double
+        creep; // the least step up to a switching, against least_step: grows where x stands still
     const char *text;
 } course;
 
@@ -354,7 +356,7 @@ static int goes_over(course *c, trial *y)
     bracket b;
     if (look_at_switches(c, o->t + y->h, o->x_new, c->g_new) || locate(c, y->h, &b))
         return -1;
-    double least = least_step(c), target = b.lo * y->h;
+    double least = c->creep * least_step(c), target = b.lo * y->h;
     target = target < least ? fmax(b.hi * y->h, least) : target;
     if (b.hi > 1 || y->cuts == MOST_CUTS || !(target < (1 - 4 * DBL_EPSILON) * y->h))
         return 0;
@@ -398,6 +400,9 @@ static lw_status one_step(course *c, int *switched)
         c->m->h = wanted;
     accept(c, y.h, gap);
     *switched = c->n_g > 0 && any_changed(c, c->g_new);
+    // steps so short that no state moves would never come to a switching just ahead
+    int crept = y.cuts > 0 && !*switched && y.h <= 4 * c->creep * least_step(c);
+    c->creep = crept ? 4 * c->creep : 1;
     if (!*switched && c->n_g > 0)
         memcpy(c->g, c->g_new, sizeof(double) * (size_t)c->n_g);
     return LW_OK;
@@ -477,6 +482,7 @@ lw_status lw__ode_advance(const lw__ode_system *s, double rtol, const double *at
                 .t1 = t1,
                 .sink = sink,
                 .context = context,
+                .creep = 1,
                 .n_g = s->n_switches};
     if (!(t1 > t0) || n == 0)
         return LW_OK;
