@@ -36,7 +36,7 @@ endif
 .DELETE_ON_ERROR:
 .SUFFIXES:
 .PHONY: all demo check check-long bench sanitize lint format install uninstall clean help
-.PHONY: check-layers check-words run-tests run-long-tests test-programs FORCE
+.PHONY: check-layers check-words run-tests run-long-tests setup-long test-programs FORCE
 all:
 
 # ---- what this machine has (flags of the libraries), seen to before anything is built
@@ -190,6 +190,11 @@ $(B)/tests/bench_lua.o: test_flags += $(call as_system,$(LUA_CFLAGS))
 $(B)/tests/bench_lua: $(B)/tests/bench_lua.o $(module_objects) $(library)
 	@echo "link $@"
 	@$(link) -o $@ $^ $(libraries) $(LUA_LIBS)
+# Compiled once the library it compares with is there; without it, it says so.
+$(long_programs:%=%.o): | setup-long
+$(B)/tests/long_ode_sundials: private libraries += $(if $(shell test -e \
+  /usr/include/cvode/cvode.h && echo yes),-lsundials_cvode -lsundials_nvecserial \
+  -lsundials_sunmatrixdense -lsundials_sunlinsoldense)
 .SECONDARY: $(test_programs:%=%.o) $(long_programs:%=%.o) $(bench_programs:%=%.o)
 
 test-programs: $(test_programs)
@@ -201,8 +206,9 @@ runner = B="$(B)" LUA="$(LUA)" CC="$(CC)" \
 
 run-tests: all $(test_programs)
 	@$(runner) $(TESTS)
-run-long-tests: all $(long_programs) run-tests
+setup-long:
 	@scripts/setup.sh long
+run-long-tests: all $(long_programs) run-tests setup-long
 	@$(runner) $(LONG_TESTS)
 
 check-layers:

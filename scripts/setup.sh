@@ -86,9 +86,13 @@ need_tests() {
 
 have_python_module() { python3 -c "import $1" 2>/dev/null || /usr/bin/python3 -c "import $1" 2>/dev/null; }
 
+have_header() { printf '#include <%s>\n' "$1" | ${CC:-cc} -E -x c - >/dev/null 2>&1; }
+
 need_long() {
   need_tests
   have_python_module mpmath || missing python3-mpmath "Python's module mpmath"
+  # the one test that compares with it does without where it cannot be installed
+  have_header cvode/cvode.h || ! have_command apt-get || missing libsundials-dev "the library SUNDIALS"
   have_python_module scipy || missing python3-scipy "Python's module SciPy"
 }
 
