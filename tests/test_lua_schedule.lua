@@ -243,6 +243,20 @@ test("a_finish_releases_the_next_task_of_a_chain_on_another_core", function()
     "30 130 230 / 50 150 250")
 end)
 
+test("a_comparator_releases_an_interrupt_handler", function()
+  local rig = lw.rig "trip"
+  rig:plant { "ramp", lw.plant.integrator { gain = 1 } }
+  rig:source { "push", lw.source.constant(2) }
+  rig:connect { "push", to = "ramp.in" }
+  rig:comparator { "over", of = "ramp.out", above = 1e-3 }
+  rig:core { "mcu", urgent = "larger" }
+  rig:task { "off", on = "mcu", interrupt = 1, released_by = "over", takes = "5 us" }
+  local run = jobs(rig, "2 ms", "off") -- 2 t reaches 1e-3 at 500 us
+  equal(us(run:record "off".ready) .. " / " .. us(run:record "off".finish), "500 / 505")
+  local text = table.concat(rig:describe(), "\n")
+  equal(text:find('released by "over" (an edge of the comparator)', 1, true) ~= nil, true)
+end)
+
 test("releases_are_rounded_up_to_the_timer_and_lateness_counts_from_the_clock", function()
   local rig = bare({ timer_tick = "50 us" }, { { "t", priority = 1, every = "80 us",
     takes = "1 us" } })
