@@ -190,6 +190,30 @@ t.test("a_trip_until_the_latch_ends_at_the_first_edge_that_is_clear", function()
   end
 end)
 
+t.test("a_trip_holds_the_level_of_a_pwm_until_its_next_period", function()
+  local rig = lw.rig "limited"
+  rig:plant { "coil", lw.plant.winding { resistance = 0.5, inductance = "1 mH" } }
+  rig:pwm { "leg", to = "coil.voltage", carrier = "10 kHz", shape = "trailing", supply = 24,
+    start = 0.8 }
+  rig:comparator { "peak", of = "coil.current", above = 3 }
+  rig:trip { "cut", by = "peak", output = "leg", to = 0, lasts = "until latch" }
+  local run = rig:run { lasts = "5 ms", record = { "peak" }, metrics = {
+    { "top", "maximum", of = "coil.current" } } }
+  t.equal(run:status(), "done")
+  t.near(run:metric "top", 3, 1e-7) -- a picosecond at 22000 A/s
+  -- common practice: peak current, on until 3 A: i1 = I + (3 - I) e^(-on/tau), off decays to i0;
+  -- each rise of the comparator lies in a period of its own, from the second on
+  local r = run:record "peak"
+  local rises = {}
+  for k = 1, r.n do
+    rises[#rises + 1] = r.value[k] == 1 and r.crossed[k] or nil
+  end
+  t.equal(#rises > 40, true)
+  for k = 2, #rises do
+    t.equal(math.floor(rises[k] / 1e-4) - math.floor(rises[k - 1] / 1e-4), 1)
+  end
+end)
+
 t.test("a_comparator_triggers_adcs_and_latches", function()
   local rig = coil()
   rig:comparator { "over", of = "coil.current", above = 8 }

@@ -3,6 +3,7 @@
 #define LATEWOOD_RUN_COMPARATOR_H
 
 #include "run/crossing.h"
+#include "run/pwm.h"
 
 #define LW__EDGES_IN_FLIGHT 64 // crossings within the delay of a comparator
 #define LW__CHATTER_EDGES 1000 // in a row, each within LW__CHATTER_TIME of the one before
@@ -35,6 +36,7 @@ typedef struct lw__trip {
     const char *name;
     const lw__comparator *by;
     lw__dac *dac;
+    lw__pwm *pwm; // where the output is one; dac is then its register
     lw_tick time;
     int timer;   // LW_TRIP_TIME, else -1
     int active;  // integer cell: 1 while it holds the output, 2 past its time

@@ -104,12 +104,15 @@ static lw_status find_output(lw__freezer *w, lw__trip *t, const lw_trip_def *def
     int found = find_name(names, n, def->output);
     if (found >= 0) {
         t->dac = &w->z->dacs[found];
+        for (int i = 0; i < w->z->n_pwms; i++)
+            if (w->rig->pwms[i].dac == found)
+                t->pwm = &w->z->pwms[i];
         return LW_OK;
     }
     const char *near = lw_nearest_name(def->output, names, n);
-    return lw__fail_at(def->origin, w->err, LW_ERR_NAME, "trip \"%s\": output: no dac \"%s\"%s%s%s",
-                       def->name, def->output, near ? "; nearest \"" : "", near ? near : "",
-                       near ? "\"" : "");
+    return lw__fail_at(def->origin, w->err, LW_ERR_NAME,
+                       "trip \"%s\": output: no dac or pwm \"%s\"%s%s%s", def->name, def->output,
+                       near ? "; nearest \"" : "", near ? near : "", near ? "\"" : "");
 }
 
 static lw_status freeze_trip(lw__freezer *w, int index)
@@ -121,7 +124,7 @@ static lw_status freeze_trip(lw__freezer *w, int index)
     t->timer = -1;
     LW__TRY(find_comparator(w, t, def));
     LW__TRY(find_output(w, t, def));
-    if (def->until == LW_TRIP_LATCH && t->dac->n_phases == 0)
+    if (def->until == LW_TRIP_LATCH && t->pwm == NULL && t->dac->n_phases == 0)
         return lw__fail_at(def->origin, w->err, LW_ERR_ARGUMENT,
                            "trip \"%s\": lasts is until its latch, but dac \"%s\" has no latch: it "
                            "changes when written",
@@ -130,12 +133,12 @@ static lw_status freeze_trip(lw__freezer *w, int index)
         t->time = ticks(def->time);
         t->timer = lw__freezer_timer(w);
     }
-    if (t->dac->tripped < 0)
-        t->dac->tripped =
-            lw__freezer_integer(w, def->output, "trips that hold it", LW_SLICE_HELD, 1);
+    int *held = t->pwm != NULL ? &t->pwm->tripped : &t->dac->tripped;
+    if (*held < 0)
+        *held = lw__freezer_integer(w, def->output, "trips that hold it", LW_SLICE_HELD, 1);
     t->active = lw__freezer_integer(w, t->name, "holds the output", LW_SLICE_HELD, 1);
     t->n_trips = lw__freezer_integer(w, t->name, "trips", LW_SLICE_HELD, 1);
-    return t->n_trips >= 0 && t->dac->tripped >= 0 ? LW_OK : LW_ERR_MEMORY;
+    return t->n_trips >= 0 && *held >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
 // Cells of all comparators first: one may be the level of another.

@@ -395,6 +395,8 @@ static lw_status order_of_trip(lw__freezer *w, int index)
     if (t->item->def.until != LW_TRIP_LATCH)
         return LW_OK;
     int at_edge = op_number(z, LW__OP_LATCH_TRIP, index, 0);
+    if (t->pwm != NULL)
+        return make_due(w, t->pwm->timer, LW__OP_LATCH_TRIP, index, 0);
     if (d->timer >= 0)
         return make_due(w, d->timer, LW__OP_LATCH_TRIP, index, 0);
     return lw__set_put(w, lw__event_set(z, d->latched_by), at_edge);

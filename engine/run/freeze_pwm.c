@@ -61,6 +61,7 @@ static lw_status freeze_pwm(lw__freezer *w, int index)
     m->item = &w->rig->pwms[index];
     m->name = m->item->def.name;
     m->dac = &w->z->dacs[m->item->dac];
+    m->tripped = -1;
     m->n_legs = m->item->def.bridge == LW_PWM_UNIPOLAR ? 2 : 1;
     lw_tick_from_seconds(m->item->def.dead_time, &m->dead);
     carrier(m);

@@ -11,6 +11,7 @@
 
 #include "run/comparator.h"
 #include "run/op_dac.h"
+#include "run/op_pwm.h"
 
 static inline void op_search(LW__CONTEXT, const lw__comparator *c)
 {
@@ -123,15 +124,8 @@ static inline void log_forced(lw__lane *s, const lw__dac *d, double to, int W, i
                                  (double)NAN, LW__F(d->saturated)});
 }
 
-static inline void op_trip(LW__CONTEXT, const lw__trip *t)
+static inline void force_dac(LW__CONTEXT, const lw__dac *d, double to)
 {
-    const lw__dac *d = t->dac;
-    double to = t->item->def.to;
-    LW__I(t->n_trips) += 1;
-    LW__I(d->tripped) += LW__I(t->active) == 0;
-    LW__I(t->active) = 1;
-    if (t->timer >= 0)
-        LW__I(s->z->due + t->timer) = s->now + t->time;
     LW__F(d->held) = to;
     LW__F(d->code) = (double)NAN;
     LW__I(d->changed_at) = s->now;
@@ -140,14 +134,43 @@ static inline void op_trip(LW__CONTEXT, const lw__trip *t)
     drive(LW__HERE, &d->drives, to);
 }
 
-// A trip ends; with the last one on its output that takes what was asked for last.
+static inline void force_pwm(LW__CONTEXT, const lw__pwm *m, double to)
+{
+    LW__F(m->level) = to;
+    lw__tell(p, &m->dac->observers, N);
+    drive(LW__HERE, &m->drives, to);
+}
+
+static inline void op_trip(LW__CONTEXT, const lw__trip *t)
+{
+    int held = t->pwm != NULL ? t->pwm->tripped : t->dac->tripped;
+    LW__I(t->n_trips) += 1;
+    LW__I(held) += LW__I(t->active) == 0;
+    LW__I(t->active) = 1;
+    if (t->timer >= 0)
+        LW__I(s->z->due + t->timer) = s->now + t->time;
+    if (t->pwm != NULL)
+        force_pwm(LW__HERE, t->pwm, t->item->def.to);
+    else
+        force_dac(LW__HERE, t->dac, t->item->def.to);
+}
+
+// A trip ends; with the last one on its output that takes what was asked for last, or what the
+// legs of a pwm are at.
 static inline void end_trip(LW__CONTEXT, const lw__trip *t)
 {
-    const lw__dac *d = t->dac;
+    const lw__pwm *m = t->pwm;
+    int held = m != NULL ? m->tripped : t->dac->tripped;
     LW__I(t->active) = 0;
-    LW__I(d->tripped) -= 1;
-    if (LW__I(d->tripped) == 0)
-        dac_output(LW__HERE, d, LW__F(d->asked), LW__I(d->sampled));
+    LW__I(held) -= 1;
+    if (LW__I(held) != 0)
+        return;
+    if (m == NULL)
+        dac_output(LW__HERE, t->dac, LW__F(t->dac->asked), LW__I(t->dac->sampled));
+    else if (m->item->def.averaged)
+        pwm_mean(LW__HERE, m);
+    else
+        pwm_legs(LW__HERE, m);
 }
 
 // The comparator clears, or the time is over: the later of both ends the trip.
@@ -163,9 +186,11 @@ static inline void op_release_trip(LW__CONTEXT, const lw__trip *t)
         end_trip(LW__HERE, t);
 }
 
-// Trips that hold until a latch edge of their output end at it.
+// Trips that hold until a latch edge of their output, or a period of the pwm, end with it.
 static inline void op_latch_trip(LW__CONTEXT, const lw__trip *t)
 {
+    if (t->pwm != NULL && LW__I(t->pwm->count) % t->pwm->per_period != 0)
+        return; // the middle of a triangle
     if (LW__I(t->active) != 0 && LW__F(t->by->out) == 0)
         end_trip(LW__HERE, t);
 }

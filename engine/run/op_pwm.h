@@ -44,6 +44,8 @@ LW__INLINE void pwm_level(LW__CONTEXT, const lw__pwm *m, double level)
 {
     if (!isfinite(level))
         lw__end_lane(s, LW_ERR_NOT_FINITE, m->name, "its level is not finite");
+    if (m->tripped >= 0 && LW__I(m->tripped) > 0) // a trip holds it
+        return;
     LW__F(m->level) = level;
     lw__tell(p, &m->dac->observers, N);
     drive(LW__HERE, &m->drives, level);

@@ -26,6 +26,7 @@ typedef struct lw__pwm {
                                    // it has switched in this stretch
     int timer, edge[LW__PWM_LEGS]; // timers
     int written_op;
+    int tripped; // integer cell: trips that hold its level; -1: none can
 } lw__pwm;
 
 lw_status lw__freeze_pwms(lw__freezer *w);

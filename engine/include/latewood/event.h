@@ -40,14 +40,15 @@ LW_API lw_status lw_rig_add_comparator(lw_rig *rig, const lw_comparator_def *def
 // is still 1.
 typedef enum lw_trip_until {
     LW_TRIP_CLEAR, // the comparator's output falls
-    LW_TRIP_LATCH, // the output's next latch edge
+    LW_TRIP_LATCH, // the output's next latch edge; of a pwm the next period
     LW_TRIP_TIME,  // `time` after it began
     LW_TRIP_RUN    // the end of the run
 } lw_trip_until;
 
-// From the rise of comparator `by` on, `output` (a dac) takes the value `to`: at once, past its
-// range, slew, dead band and quantiser. Writes meanwhile are kept in its register; when the trip
-// ends, the output takes the last of them.
+// From the rise of comparator `by` on, `output` takes the value `to`: at once, past range, slew, dead
+// band and quantiser of a dac, whatever the legs of a pwm are at (its level then, in the plant's
+// unit). Writes meanwhile are kept in its register; when the trip ends, a dac takes the last of
+// them, a pwm what its legs are at by then.
 typedef struct lw_trip_def {
     const char *origin, *name;
     const char *by, *output;
