@@ -126,6 +126,15 @@ START_TEST(second_order_overshoot_and_rise_table)
 }
 END_TEST
 
+START_TEST(second_order_damping_of_small_overshoots)
+{
+    // M-06, from memory: 2 % at 0.7797, 5 % at 0.6901; 5e-5 of damping are 2.1e-5 of overshoot
+    ck_assert(fabs(of_second(LW_METRIC_OVERSHOOT, 0.7797) - 0.02) < 2.1e-5);
+    ck_assert(fabs(of_second(LW_METRIC_OVERSHOOT, 0.6901) - 0.05) < 2.1e-5);
+    ck_assert(fabs(of_second(LW_METRIC_OVERSHOOT, 0.70) - 0.05) > 1e-3); // the twin
+}
+END_TEST
+
 START_TEST(second_order_settling)
 {
     // M-05, derived: exact 2 % settling, normalised
@@ -243,6 +252,7 @@ int main(void)
     tcase_add_test(tests, first_order_integrals_of_the_error);
     tcase_add_loop_test(tests, second_order_overshoot_and_rise_table, 0,
                         (int)(sizeof table / sizeof table[0]));
+    tcase_add_test(tests, second_order_damping_of_small_overshoots);
     tcase_add_test(tests, second_order_settling);
     tcase_add_test(tests, second_order_integral_criteria);
     tcase_add_test(tests, time_counts_from_the_window);

@@ -124,7 +124,8 @@ static lw_status loop_metric(lw__freezer *w, lw__metric *m)
 
 static int of_output(lw_metric_kind kind)
 {
-    return kind == LW_METRIC_OUTPUT_AGE || kind == LW_METRIC_OUTPUT_AGE_MEAN;
+    return kind == LW_METRIC_OUTPUT_AGE || kind == LW_METRIC_OUTPUT_AGE_MEAN ||
+           kind == LW_METRIC_OUTPUT_AGE_PERCENTILE;
 }
 
 static lw_status output_metric(lw__freezer *w, lw__metric *m)
@@ -140,7 +141,9 @@ static lw_status output_metric(lw__freezer *w, lw__metric *m)
         return lw__fail_at(m->def.origin, w->err, LW_ERR_NAME, "metric \"%s\": of: no dac \"%s\"",
                            m->def.name, m->def.of);
     m->own = lw__freezer_double(w, m->def.name, "sum, weight, largest", LW_SLICE_METRIC, LW__N_OWN);
-    return m->own >= 0 ? LW_OK : LW_ERR_MEMORY;
+    int cells = m->def.kind == LW_METRIC_OUTPUT_AGE_PERCENTILE ? LW__TIME_CELLS : 0;
+    m->cells = lw__freezer_integer(w, m->def.name, "counts", LW_SLICE_METRIC, cells);
+    return m->own >= 0 && m->cells >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
 // ---- of a track
@@ -322,10 +325,10 @@ static lw_status track_metric(lw__freezer *w, lw__metric *m)
     lw__track t = {.from = def->from,
                    .until = def->until == LW_NEVER ? z->lasts : def->until,
                    .base = def->base};
-    if (def->kind == LW_METRIC_STEADY_ERROR) {
-        lw_tick last = def->last > 0 ? def->last : (t.until - t.from) / 10;
-        t.from = t.until - t.from > last ? t.until - last : t.from;
-    }
+    lw_tick last =
+        def->last > 0 || def->kind != LW_METRIC_STEADY_ERROR ? def->last : (t.until - t.from) / 10;
+    if (last > 0 && t.until - t.from > last)
+        t.from = t.until - last;
     m->loop = -1;
     LW__TRY(track_signal(w, &t, def));
     LW__TRY(track_level(w, &t, def));
@@ -421,6 +424,15 @@ static lw_status keep_mask(lw__freezer *w, lw_metric_def *def)
     return LW_OK;
 }
 
+// Times and counts have no last part.
+static lw_status refuse_last(lw__freezer *w, const lw_metric_def *def)
+{
+    if (def->last > 0 &&
+        (of_output(def->kind) || lw__job_metric_concerns(w, def) || of_loop(def->kind)))
+        return metric_error(w, def, "last has no place in this metric");
+    return LW_OK;
+}
+
 lw_status lw__freeze_watch(lw__freezer *w)
 {
     lw_frozen *z = w->z;
@@ -446,6 +458,7 @@ lw_status lw__freeze_watch(lw__freezer *w)
         m->def.of = texts[1];
         m->def.against = texts[2];
         m->task = m->dac = -1;
+        LW__TRY(refuse_last(w, &m->def));
         LW__TRY(keep_mask(w, &m->def));
         LW__TRY(of_output(m->def.kind)                ? output_metric(w, m)
                 : lw__job_metric_concerns(w, &m->def) ? lw__job_metric_freeze(w, m)

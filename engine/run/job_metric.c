@@ -13,11 +13,6 @@
 #include <math.h>
 #include <string.h>
 
-#define FIRST_OCTAVE 10
-#define N_OCTAVES 42
-#define PER_OCTAVE 512
-#define N_CELLS (N_OCTAVES * PER_OCTAVE + 1) // the first: below 2^10 ps
-
 // Integer cells of counts: misses in a row now, the longest such row, jobs, misses, misses within
 // the window now, the most, place in the window; then the window itself.
 enum { RUN, LONGEST, JOBS, MISSES, WITHIN, MOST, PLACE, N_COUNTS };
@@ -44,6 +39,7 @@ static const kind_of kinds[] = {
     {LW_METRIC_LATENCY_PERCENTILE, LW__JOB_LATENCY, PERCENTILE},
     {LW_METRIC_GAP, LW__JOB_GAP, MAXIMUM},
     {LW_METRIC_GAP_MEAN, LW__JOB_GAP, MEAN},
+    {LW_METRIC_GAP_PERCENTILE, LW__JOB_GAP, PERCENTILE},
     {LW_METRIC_LOST, LW__JOB_NO_TIME, COUNT},
     {LW_METRIC_MISSED, LW__JOB_NO_TIME, COUNT},
     {LW_METRIC_JOBS, LW__JOB_NO_TIME, COUNT},
@@ -115,18 +111,24 @@ lw_status lw__job_metric_freeze(lw__freezer *w, lw__metric *m)
     else
         z->dacs[m->dac].gaps = 1;
     m->own = lw__freezer_double(w, m->def.name, "sum, count, largest", LW_SLICE_METRIC, LW__N_OWN);
-    int cells = k->statistic == PERCENTILE ? N_CELLS : k->time == LW__JOB_GAP ? 1 : 0;
+    int cells = (k->statistic == PERCENTILE ? LW__TIME_CELLS : 0) + (k->time == LW__JOB_GAP);
     if (k->statistic == COUNT)
         cells = N_COUNTS + (m->def.kind == LW_METRIC_MISSES_IN_WINDOW ? (int)m->def.window : 0);
     m->cells = lw__freezer_integer(w, m->def.name, "counts", LW_SLICE_METRIC, cells);
     return m->cells >= 0 ? LW_OK : LW_ERR_MEMORY;
 }
 
+// Cell of the last output's instant, behind the histogram.
+static int last_output(const lw__metric *m)
+{
+    return m->cells + (m->def.kind == LW_METRIC_GAP_PERCENTILE ? LW__TIME_CELLS : 0);
+}
+
 void lw__job_metric_start(lw__lane *s, const lw__metric *m)
 {
     int W = s->width, L = s->lane;
     if (m->job_time == LW__JOB_GAP)
-        LW__I(m->cells) = -1; // no output yet
+        LW__I(last_output(m)) = -1; // none yet
 }
 
 // ---- while it runs
@@ -135,12 +137,12 @@ static int cell_of(lw_tick t)
 {
     int exponent;
     double part = frexp((double)t, &exponent); // [1/2, 1)
-    int octave = exponent - 1 - FIRST_OCTAVE;
+    int octave = exponent - 1 - LW__TIME_FIRST_OCTAVE;
     if (octave < 0)
         return 0;
-    if (octave >= N_OCTAVES)
-        return N_CELLS - 1;
-    return 1 + octave * PER_OCTAVE + (int)((2 * part - 1) * PER_OCTAVE);
+    if (octave >= LW__TIME_OCTAVES)
+        return LW__TIME_CELLS - 1;
+    return 1 + octave * LW__TIME_PER_OCTAVE + (int)((2 * part - 1) * LW__TIME_PER_OCTAVE);
 }
 
 // Middle of a cell [s].
@@ -148,27 +150,40 @@ static double middle_of(int cell)
 {
     if (cell == 0)
         return 0;
-    int octave = (cell - 1) / PER_OCTAVE;
-    double part = 1 + ((cell - 1) % PER_OCTAVE + 0.5) / PER_OCTAVE;
-    return ldexp(part, octave + FIRST_OCTAVE) * 1e-12;
+    int octave = (cell - 1) / LW__TIME_PER_OCTAVE;
+    double part = 1 + ((cell - 1) % LW__TIME_PER_OCTAVE + 0.5) / LW__TIME_PER_OCTAVE;
+    return ldexp(part, octave + LW__TIME_FIRST_OCTAVE) * 1e-12;
 }
 
-static void take(lw__lane *s, const lw__metric *m, lw_tick time)
+static void sum_up(lw__lane *s, const lw__metric *m, lw_tick time)
 {
     int W = s->width, L = s->lane;
     double seconds = lw_tick_seconds(time);
     LW__F(m->own) += seconds;
     LW__F(m->own + 1) += 1;
     LW__F(m->own + 2) = fmax(LW__F(m->own + 2), seconds);
+}
+
+void lw__time_take(lw__lane *s, const lw__metric *m, lw_tick time)
+{
+    int W = s->width, L = s->lane;
+    sum_up(s, m, time);
+    LW__I(m->cells + cell_of(time)) += 1;
+}
+
+static void take(lw__lane *s, const lw__metric *m, lw_tick time)
+{
     if (look_up(m->def.kind)->statistic == PERCENTILE)
-        LW__I(m->cells + cell_of(time)) += 1;
+        lw__time_take(s, m, time);
+    else
+        sum_up(s, m, time);
 }
 
 static void take_gap(lw__lane *s, const lw__metric *m)
 {
     int W = s->width, L = s->lane;
-    lw_tick last = LW__I(m->cells);
-    LW__I(m->cells) = s->now;
+    lw_tick last = LW__I(last_output(m));
+    LW__I(last_output(m)) = s->now;
     if (last >= 0 && last >= m->def.from)
         take(s, m, s->now - last);
 }
@@ -268,11 +283,11 @@ void lw__task_wrote(lw__lane *s, const lw__task *t)
 
 // ---- reading
 
-static double percentile(const lw__lane *s, const lw__metric *m)
+double lw__time_percentile(const lw__lane *s, const lw__metric *m)
 {
     int W = s->width, L = s->lane;
     double total = LW__F(m->own + 1), below = 0, largest = LW__F(m->own + 2);
-    for (int k = 0; k < N_CELLS; k++) {
+    for (int k = 0; k < LW__TIME_CELLS; k++) {
         below += (double)LW__I(m->cells + k);
         if (below >= m->def.share * total)
             return fmin(middle_of(k), largest);
@@ -319,5 +334,5 @@ double lw__job_metric_value(const lw__lane *s, const lw__metric *m)
         return (double)NAN;
     if (k->statistic == MEAN)
         return LW__F(m->own) / LW__F(m->own + 1);
-    return k->statistic == MAXIMUM ? LW__F(m->own + 2) : percentile(s, m);
+    return k->statistic == MAXIMUM ? LW__F(m->own + 2) : lw__time_percentile(s, m);
 }

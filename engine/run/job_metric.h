@@ -22,4 +22,12 @@ lw_status lw__job_metric_freeze(lw__freezer *w, lw__metric *m);
 void lw__job_metric_start(lw__lane *s, const lw__metric *m);
 double lw__job_metric_value(const lw__lane *s, const lw__metric *m);
 
+// A histogram of times from integer cell `cells` on, beside sum, count and largest in `own`.
+#define LW__TIME_FIRST_OCTAVE 10
+#define LW__TIME_OCTAVES 42
+#define LW__TIME_PER_OCTAVE 512
+#define LW__TIME_CELLS (LW__TIME_OCTAVES * LW__TIME_PER_OCTAVE + 1) // the first: below 2^10 ps
+void lw__time_take(lw__lane *s, const lw__metric *m, lw_tick time);
+double lw__time_percentile(const lw__lane *s, const lw__metric *m);
+
 #endif

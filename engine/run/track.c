@@ -388,6 +388,10 @@ static void take_age(lw__lane *s, const lw__metric *m, lw_tick from, lw_tick to,
     if (to <= from || sampled < 0)
         return;
     double length = lw_tick_seconds(to - from), oldest = lw_tick_seconds(to - sampled);
+    if (m->def.kind == LW_METRIC_OUTPUT_AGE_PERCENTILE) {
+        lw__time_take(s, m, to - sampled);
+        return;
+    }
     LW__F(m->own) += 0.5 * (lw_tick_seconds(from - sampled) + oldest) * length;
     LW__F(m->own + 1) += length;
     LW__F(m->own + 2) = fmax(LW__F(m->own + 2), oldest);
@@ -405,6 +409,8 @@ static double output_metric(const lw__lane *s, const lw__metric *m)
     int W = s->width, L = s->lane;
     if (LW__F(m->own + 1) == 0)
         return (double)NAN;
+    if (m->def.kind == LW_METRIC_OUTPUT_AGE_PERCENTILE)
+        return lw__time_percentile(s, m);
     return m->def.kind == LW_METRIC_OUTPUT_AGE ? LW__F(m->own + 2)
                                                : LW__F(m->own) / LW__F(m->own + 1);
 }

@@ -22,7 +22,7 @@ end
 -- Units of metrics; a kind that is not named has that of its signal, which nobody stated.
 words.units = { overshoot = "1", undershoot = "1", reversals = "1", chatter = "1/s",
   ["time outside mask"] = "s", ["first outside mask"] = "s", ["output age"] = "s",
-  ["output age mean"] = "s", lost = "1", missed = "1", ["settling time"] = "s",
+  ["output age mean"] = "s", ["output age percentile"] = "s", lost = "1", missed = "1", ["settling time"] = "s",
   ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
   ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
 
@@ -33,7 +33,9 @@ for _, time in ipairs { "release lateness", "start delay", "response", "executio
     words.units[time .. " " .. statistic] = "s"
   end
 end
-words.units["gap between outputs"], words.units["gap between outputs mean"] = "s", "s"
+for _, statistic in ipairs { "", " mean", " percentile" } do
+  words.units["gap between outputs" .. statistic] = "s"
+end
 for _, count in ipairs { "jobs", "skipped jobs", "aborted jobs", "misses in a row",
                          "misses within a window" } do
   words.units[count] = "1"

@@ -28,7 +28,8 @@ typedef struct lw_record_def {
 } lw_record_def;
 LW_API lw_status lw_watch_record(lw_watch *watch, const lw_record_def *def, lw_error *err);
 
-// Record every event of an adc, a dac, a loop or a comparator, by its name. Columns [s where a time]:
+// Record every event of an adc, a dac, a loop or a comparator, by its name. Columns [s where a
+// time]:
 //   adc   sample, time (end of conversion), then for each channel input, value, code (input1,
 //         value1, code1, ... where there are several)
 //   dac   time, asked, limited, value, code, saturated - one row a write that reaches the output
@@ -70,6 +71,7 @@ LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char
     X(DATA_AGE_PERCENTILE, "data age percentile")                                                  \
     X(GAP, "gap between outputs") /* the largest, of a task's writes or a dac's fresh outputs */   \
     X(GAP_MEAN, "gap between outputs mean")                                                        \
+    X(GAP_PERCENTILE, "gap between outputs percentile")                                            \
     X(JOBS, "jobs") /* finished */                                                                 \
     X(SKIPPED, "skipped jobs")                                                                     \
     X(ABORTED, "aborted jobs")                                                                     \
@@ -107,6 +109,8 @@ LW_API lw_status lw_watch_events(lw_watch *watch, const char *origin, const char
     X(MASK_FIRST, "first outside mask")   /* [s] since `from`; NAN: never */                       \
     X(OUTPUT_AGE, "output age") /* of a dac [s]: largest age of the sample that stands there */    \
     X(OUTPUT_AGE_MEAN, "output age mean") /* over time */                                          \
+    X(OUTPUT_AGE_PERCENTILE,                                                                       \
+      "output age percentile")            /* of the ages just before an output changes */          \
     X(SATURATION_TIME, "saturation time") /* of a dac [s] */                                       \
     /* of a loop or a task [s]: sample to write */                                                 \
     X(LATENCY_PERCENTILE, "latency percentile") /* by a histogram */                               \
@@ -142,8 +146,9 @@ typedef struct lw_metric_def {
     double band_value; // settling: half the band as a value, in place of the share; NAN: none
     double low_value, high_value; // rise: levels in place of shares; NAN: none
     double step;                  // reversals: turns no larger than this are none (default 0)
-    lw_tick last;                 // steady-state error: length of the last part; 0: a tenth
-    int n_mask;                   // mask: corners, times [s] since `from` rising from 0
+    lw_tick last; // only the last part of the window counts, of this length, and is the window; 0:
+                  // all of it, for steady-state error a tenth. Of a signal's metrics
+    int n_mask;   // mask: corners, times [s] since `from` rising from 0
     const double *mask_time, *mask_low, *mask_high; // straight lines between; NAN: no limit there
     int64_t window;                                 // jobs of "misses within a window"
     lw_tick from, until;                            // window; LW_NEVER: the end of the run
