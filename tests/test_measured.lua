@@ -99,13 +99,14 @@ local function test_reading()
     raises(function() lw.measured { good, value = "v" } end, "state one of time")
     raises(function() lw.measured { good, time = "t", value = "v", every = 1 } end,
       "state one of time")
-    raises(function() lw.measured { good, time = "t", value = "v", tim = 1 } end, "nearest \"time\"")
+    raises(function() lw.measured { good, time = "t", value = "v", tim = 1 } end,
+      "nearest \"time\"")
     raises(function() lw.measured { good, time = "t", value = "v", decimal = "." , separator = "|" }
       end, "separator is \"|\"")
     raises(function() lw.measured { good, time = "t", value = "v", from = 5 } end, "0 rows")
     raises(function() lw.measured { good, time = "t", value = "v", time_unit = "A" } end, "A")
-    raises(function() lw.measured { file_of("back.csv", "0,1\n2,1\n1,1\n"), time = 1, value = 2 } end,
-      "row 3: its time is 1 s after 2 s")
+    local back = file_of("back.csv", "0,1\n2,1\n1,1\n")
+    raises(function() lw.measured { back, time = 1, value = 2 } end, "row 3: its time is 1 s after 2 s")
     raises(function() lw.measured { file_of("text.csv", "t,v\n0,1\n1,high\n"), time = 1, value = 2 }
       end, "text.csv:3: column 2 is \"high\"")
     raises(function() lw.measured { folder .. "/no such file.csv", time = 1, value = 2 } end,
@@ -319,7 +320,8 @@ local function test_own()
     raises(function() s:metric { "c", of = { 3 }, compute = f } end, "entry 1 names nothing")
     raises(function() s:metric { "d", "overshoot", of = "speed", compute = f } end, "one is wanted")
     raises(function() s:metric { "e", of = "speed", compute = 3 } end, "compute is a number")
-    raises(function() s:metric { "f", of = "speed", compute = f, uni = "A" } end, "nearest \"unit\"")
+    raises(function() s:metric { "f", of = "speed", compute = f, uni = "A" } end,
+      "nearest \"unit\"")
     raises(function() s:metric { "g", of = "speed", compute = f, unit = 3 } end, "unit is 3")
     s:metric { "h", of = "speed", compute = function() return "much" end }
     raises(function() run(s) end, "metric \"h\": compute returned a string")

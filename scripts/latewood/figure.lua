@@ -149,8 +149,8 @@ local function overlay(f, result, panels, legend, size, unit)
     rest.traces[#rest.traces + 1] = { name = "measured less " .. variant.name, v = v,
       style = style_of(result, v), x = table.move(data.time, 1, #residual, 1, {}), y = residual }
     local fit = measured.compare("fit", data, values)
-    notes[#notes + 1] = ("%s: fit %s, 1 - |y - x| / |y - mean y| over %d rows."):format(variant.name,
-      fit and words.metric("fit", fit) or "undefined", data.n)
+    notes[#notes + 1] = ("%s: fit %s, 1 - |y - x| / |y - mean y| over %d rows."):format(
+      variant.name, fit and words.metric("fit", fit) or "undefined", data.n)
   end
   local first = panels[1]
   table.insert(first.traces, { name = "measured: " .. data.name, style = MEASURED, x = data.time,

@@ -75,7 +75,9 @@ local function columns_of(what, t)
     end
     return list_of(what, "time", t.time, "s"), list_of(what, "value", t.value)
   end
-  if type(t[1]) ~= "string" then fail("%s: its file is a %s; a name is wanted", what, type(t[1])) end
+  if type(t[1]) ~= "string" then
+    fail("%s: its file is a %s; a name is wanted", what, type(t[1]))
+  end
   if (t.time == nil) == (t.every == nil) then
     fail("%s: state one of time (a column) and every (time between rows)", what)
   end
@@ -85,7 +87,7 @@ local function columns_of(what, t)
     separator = t.separator }
   if not time then
     local every = lw.quantity(t.every, "s")
-    if not (every > 0) then fail("%s: every is %.6g s; above 0 is wanted", what, every) end
+    if every <= 0 then fail("%s: every is %.6g s; above 0 is wanted", what, every) end
     time = {}
     for i = 1, #value do time[i] = (i - 1) * every end
   elseif t.time_unit ~= nil then
@@ -111,7 +113,7 @@ local function rows_of(what, t, time, value)
   local scale = t.scale ~= nil and lw.quantity(t.scale) or 1
   local xs, ys, n = {}, {}, 0
   for i = 1, #time do
-    if i > 1 and not (time[i] > time[i - 1]) then
+    if i > 1 and time[i] <= time[i - 1] then
       fail("%s: row %d: its time is %.9g s after %.9g s; times rise from row to row", what, i,
         time[i], time[i - 1])
     end
@@ -228,7 +230,8 @@ function measured.sampled(data, record)
 end
 
 -- The shift in [-most, most] by which the data lie closest (least squares) to a record of the run,
--- straight lines between its rows, their ends beyond them: 201 places, then golden sections to a 1e-6th of `most`.
+-- straight lines between its rows, their ends beyond them: 201 places, then golden sections to a
+-- 1e-6th of `most`.
 function measured.align(data, record, most)
   local function distance(shift)
     local values, sum = measured.sampled(data:shifted(shift), record), 0

@@ -199,7 +199,9 @@ function own.describe(study)
   for _, m in ipairs(study.metrics) do
     if m.compute then
       local names = {}
-      for k, e in ipairs(m.records) do names[k] = ('"%s"'):format(type(e) == "string" and e or e[1]) end
+      for k, e in ipairs(m.records) do
+        names[k] = ('"%s"'):format(type(e) == "string" and e or e[1])
+      end
       lines[#lines + 1] = ('metric "%s": %s, of %s, computed after each run'):format(m[1], m[2],
         table.concat(names, ", "))
     end

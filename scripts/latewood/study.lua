@@ -283,7 +283,9 @@ end
 -- Measured data under a figure, and how far they may be moved.
 local function overlay_of(f, what, t)
   if t.measured == nil then
-    if t.shift ~= nil or t.align ~= nil then fail("%s: shift and align move measured data", what) end
+    if t.shift ~= nil or t.align ~= nil then
+      fail("%s: shift and align move measured data", what)
+    end
     return
   end
   if not measured.is(t.measured) then
@@ -292,11 +294,12 @@ local function overlay_of(f, what, t)
   local data = t.measured:shifted(t.shift or 0)
   f.data = measured.within(data, f.from, f.till)
   if f.data.n < 2 then
-    fail("%s: %d rows of the measured data lie in its window; at least 2 are wanted", what, f.data.n)
+    fail("%s: %d rows of the measured data lie in its window; at least 2 are wanted", what,
+      f.data.n)
   end
   if t.align ~= nil then
     f.align = lw.quantity(t.align, "s")
-    if not (f.align > 0) then fail("%s: align is %.6g s; above 0 is wanted", what, f.align) end
+    if f.align <= 0 then fail("%s: align is %.6g s; above 0 is wanted", what, f.align) end
   end
 end
 

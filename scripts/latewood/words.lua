@@ -22,7 +22,8 @@ end
 -- Units of metrics; a kind that is not named has that of its signal, which nobody stated.
 words.units = { overshoot = "1", undershoot = "1", reversals = "1", chatter = "1/s",
   ["time outside mask"] = "s", ["first outside mask"] = "s", ["output age"] = "s",
-  ["output age mean"] = "s", ["output age percentile"] = "s", lost = "1", missed = "1", ["settling time"] = "s",
+  ["output age mean"] = "s", ["output age percentile"] = "s", lost = "1",
+  missed = "1", ["settling time"] = "s",
   ["rise time"] = "s", ["peak time"] = "s", ["saturation time"] = "s",
   ["latency percentile"] = "s", ["latency mean"] = "s", ["latency maximum"] = "s" }
 
