@@ -8,6 +8,7 @@
 local lw = require "latewood"
 local judge = require "latewood.judge"
 local own = require "latewood.own_metric"
+local own = require "latewood.own_metric"
 local points = require "latewood.points"
 local spread = require "latewood.spread"
 local trial = require "latewood.trial"
@@ -17,6 +18,7 @@ local batch = {}
 
 local FIRST_CHECKPOINT = 128
 local CACHED = 64 -- points whose rig a worker keeps
+local ENDED_EARLY = -9 -- status in the ledger where only its name is known: a value is not finite
 
 -- ---- what is computed
 
@@ -83,8 +85,21 @@ local function computer(host, study, plan)
     if not own.any(study) then return started_run:row(run) end
     return own.row(study, started_run, table.pack(started_run:row(run)))
   end
+  local function in_full(point, run) -- metrics that the study computes itself
+    host.again()
+    local rig = trial.rig(study, point.parameters, plan.seed, run)
+    local one, status, why, values = trial.one_run(study, rig, plan.seed, run, nil)
+    local row = { status == "done" and 0 or ENDED_EARLY, one:now(), why or "" }
+    for i, m in ipairs(study.metrics) do
+      row[3 + i] = status == "done" and (values[m[1]] or one:metric(m[1])) or 0 / 0
+    end
+    one:close()
+    return table.unpack(row)
+  end
+  local computes = #own.engine(study) < #study.metrics
   return function(number, run)
     local point = plan.points[number + 1]
+    if computes then return in_full(point, run) end
     if point.varies then
       local alone = started(point, run)
       host.again()

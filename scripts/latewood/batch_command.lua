@@ -97,7 +97,7 @@ local function print_results(host, study, plan, ledger, verdict, p, name, tools,
     host.out((overall or "no requirement") .. ", of the model\n")
   else
     host.out(table.concat(report.closing(files, words.plain(folder), plan.path and
-      ("latewood again %s RUN"):format(words.shell(plan.path)) or
+      ("latewood run %s --run N"):format(words.shell(p.file)) or
       ("latewood run %s --ledger FILE"):format(words.shell(p.file))), "\n") .. "\n")
   end
   return ({ met = OK, ["not met"] = NOT_MET, undecided = UNDECIDED })[overall or "met"]

@@ -56,6 +56,7 @@ to a folder beside the study, named after it: STUDY-results.
   --out DIR      put the results there instead
   --runs N       number of runs, instead of the study's
   --seed N       seed of the draws, instead of the study's
+  --run N        run number N alone, as it was in a batch, with its figures
   --jobs N       processes that compute a batch; as many as there are cores unless stated
   --ledger FILE  keep the batch's rows in FILE (SQLite); the same command goes on where it stopped
   --shard K/N    compute only the runs whose number gives K when divided by N, into a ledger
@@ -85,7 +86,7 @@ exist are left alone, and nothing is written then.
 }
 
 local takes = { run = { ["--out"] = true, ["--runs"] = true, ["--seed"] = true, ["--jobs"] = true,
-    ["--ledger"] = true, ["--shard"] = true },
+    ["--ledger"] = true, ["--shard"] = true, ["--run"] = true },
   describe = {}, new = {} }
 local flags = { run = { ["--json"] = true, ["--quiet"] = true }, describe = { ["--json"] = true },
   new = { ["--json"] = true } }
@@ -251,7 +252,8 @@ local function progress_of(host)
 end
 
 local function execute(host, s, p, settings)
-  local options = { runs = settings.runs, seed = settings.seed, again = host.again }
+  local options = { runs = settings.runs, seed = settings.seed, first = settings.first,
+    again = host.again }
   local clear = function() end
   if host.progress and not p.options["--quiet"] and (settings.runs or s.runs) > 1 then
     options.progress, clear = progress_of(host)
@@ -268,13 +270,19 @@ local function run(host, p)
   local options = p.options
   local runs, bad_runs = whole(options, "--runs", 1, 1000000)
   local seed, bad_seed = whole(options, "--seed", 0, math.maxinteger)
-  if bad_runs or bad_seed then return complain(host, options, USAGE, bad_runs or bad_seed) end
+  local only, bad_only = whole(options, "--run", 0, math.maxinteger)
+  if bad_runs or bad_seed or bad_only then
+    return complain(host, options, USAGE, bad_runs or bad_seed or bad_only)
+  end
+  if only and runs then
+    return complain(host, options, USAGE, "--run is one run and --runs many; one is wanted")
+  end
   local s, message, code = load_study(host, p.file)
   if not s then return complain(host, options, code, message) end
-  if batch_command.wanted(s, options, runs or s.runs) then
+  if not only and batch_command.wanted(s, options, runs or s.runs) then
     return batch_command.run(host, s, p, { runs = runs, seed = seed }, tools)
   end
-  local result, why = execute(host, s, p, { runs = runs, seed = seed })
+  local result, why = execute(host, s, p, { runs = only and 1 or runs, seed = seed, first = only })
   if not result then return complain(host, options, DATA, why) end
   local folder = options["--out"] or p.file:gsub("%.lua$", "") .. "-results"
   local made, fault = host.make_folder(folder)

@@ -2,7 +2,7 @@
 -- requirements stand.
 --
 -- 1. Variants are run with the same seed and run numbers, so that they see the same draws.
--- 2. Only run 0 is recorded. A record changes no other byte of a run; where one is full, the run is
+-- 2. Only the first run is recorded. A record changes no other byte of a run; where one is full, the run is
 --    done again without.
 -- 3. A requirement is met when every run meets it; a run that ended early meets none.
 
@@ -190,15 +190,17 @@ end
 
 -- Run 0 with what the figures need. Returns what one_run does, then the traces, and where these end
 -- too early the time at which they do.
-local function first_run(study, rig, seed)
+local function first_run(study, rig, seed, number)
   local records = trial.records(study)
-  local run, status, why, values = one_run(study, rig, seed, 0, records)
+  local run, status, why, values = one_run(study, rig, seed, number, records)
   local traces = traces_of(study, run)
   if status ~= "LW_ERR_CAPACITY" or #records == 0 then return run, status, why, values, traces end
   local cut = run:now()
-  run, status, why, values = one_run(study, rig, seed, 0, nil)
+  run, status, why, values = one_run(study, rig, seed, number, nil)
   return run, status, why, values, traces, status == "done" and cut or nil
 end
+
+trial.one_run = one_run
 
 -- What the figures show of a batch: run 0 of each variant at the first point, as a result without
 -- values.
@@ -208,7 +210,7 @@ function trial.shown(study, points, seed)
     if not seen[point.variant] then
       seen[point.variant] = true
       local rig = trial.rig(study, point.parameters, seed, 0)
-      local run, status, why, _, traces, cut = first_run(study, rig, seed)
+      local run, status, why, _, traces, cut = first_run(study, rig, seed, 0)
       out.variants[#out.variants + 1] = { name = point.variant, parameters = point.parameters,
         values = {}, traces = traces, cut = cut, ended = status ~= "done" and { { run = 0,
           status = status, message = why, at = run:now() } } or {} }
@@ -229,16 +231,17 @@ local function run_variant(study, variant, arguments, options)
     options.progress(variant.name, i, options.runs)
     if varies or not rig then
       if rig then options.again() end
-      rig = trial.rig(study, p, options.seed, i)
+      rig = trial.rig(study, p, options.seed, options.first + i)
     end
     local run, status, why, values
     if i == 0 then
-      run, status, why, values, result.traces, result.cut = first_run(study, rig, options.seed)
+      run, status, why, values, result.traces, result.cut =
+        first_run(study, rig, options.seed, options.first)
     else
-      run, status, why, values = one_run(study, rig, options.seed, i, nil)
+      run, status, why, values = one_run(study, rig, options.seed, options.first + i, nil)
     end
     if status ~= "done" then
-      result.ended[#result.ended + 1] = { run = i, status = status, message = why,
+      result.ended[#result.ended + 1] = { run = options.first + i, status = status, message = why,
         at = run:now() }
     end
     for _, m in ipairs(study.metrics) do
@@ -271,10 +274,10 @@ local function further(requirement, v, than)
 end
 
 -- How one requirement stands in one variant.
-local function judge(requirement, result, runs)
+local function judge(requirement, result, runs, first)
   local values = result.values[requirement.name]
   local ended, n, worst_run, worst_badness = {}, { 0, 0, 0, 0, [0] = 0 }, 0, -1
-  for _, e in ipairs(result.ended) do ended[e.run] = true end
+  for _, e in ipairs(result.ended) do ended[e.run - first] = true end
   for i = 0, runs - 1 do
     local v, worst = values[i + 1], values[worst_run + 1]
     local bad = badness(requirement, v, ended[i])
@@ -289,21 +292,23 @@ local function judge(requirement, result, runs)
   return {
     verdict = failed > 0 and "not met" or n[1] > 0 and "undecided" or "met",
     reason = reasons[worst_badness], failed = failed, unknown = n[1],
-    worst = values[worst_run + 1], worst_run = worst_run, worst_ended = ended[worst_run] or false,
+    worst = values[worst_run + 1], worst_run = first + worst_run,
+    worst_ended = ended[worst_run] or false,
   }
 end
 
 local function nothing() end
 
 -- Run the study. arguments: list of { name, text }. options: seed, runs; again(), called where a
--- new stretch of the study's own code begins; progress(variant, run, runs).
+-- new stretch of the study's own code begins; progress(variant, run, runs); first: number of the
+-- first run (0), the one that is recorded.
 -- Returns a table of results, or nil and a message.
 function trial.execute(study, arguments, options)
   local out = { variants = {}, judged = {}, runs = options.runs or study.runs,
-    seed = options.seed or study.seed, arguments = arguments }
+    seed = options.seed or study.seed, arguments = arguments, first = options.first or 0 }
   for i, variant in ipairs(trial.variants(study)) do
     local result, message = run_variant(study, variant, arguments, { runs = out.runs,
-      seed = out.seed, again = options.again or nothing, progress = options.progress or nothing })
+      seed = out.seed, first = out.first, again = options.again or nothing, progress = options.progress or nothing })
     if not result then return nil, message end
     out.variants[i] = result
   end
@@ -312,7 +317,7 @@ function trial.execute(study, arguments, options)
   for r, requirement in ipairs(study.requirements) do
     out.judged[r] = {}
     for v, result in ipairs(out.variants) do
-      out.judged[r][v] = judge(requirement, result, out.runs)
+      out.judged[r][v] = judge(requirement, result, out.runs, out.first)
     end
     local last = out.judged[r][#out.variants].verdict
     if rank[last] > rank[out.verdict] then out.verdict = last end
