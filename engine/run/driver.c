@@ -29,9 +29,9 @@
 #include "run/op_event.h"
 #include "run/op_group.h"
 #include "run/op_loop.h"
-#include "run/op_pwm.h"
 #include "run/op_signal.h"
 #include "run/op_source.h"
+#include "run/pwm.h"
 #include "run/record.h"
 #include "run/sprint.h"
 #include "run/track.h"
@@ -111,13 +111,13 @@ LW__INLINE void perform(LW__CONTEXT, int op)
         op_latch(LW__HERE, o->thing);
         return;
     case LW__OP_PWM_STRETCH:
-        op_pwm_stretch(LW__HERE, o->thing);
+        lw__pwm_stretch(LW__HERE, o->thing);
         return;
     case LW__OP_PWM_EDGE:
-        op_pwm_edge(LW__HERE, o->thing);
+        lw__pwm_edge(LW__HERE, o->thing);
         return;
     case LW__OP_PWM_WRITTEN:
-        op_pwm_written(LW__HERE, o->thing);
+        lw__pwm_written(LW__HERE, o->thing);
         return;
     case LW__OP_SAMPLE:
         op_sample(LW__HERE, o->thing);

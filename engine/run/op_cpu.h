@@ -14,7 +14,7 @@
 
 #define LW__BIT(rank) (UINT64_C(1) << (rank))
 
-LW__INLINE lw__task *task_at(const lw__core *c, int64_t rank)
+static inline lw__task *task_at(const lw__core *c, int64_t rank)
 {
     return c->tasks[rank];
 }
@@ -37,7 +37,7 @@ static inline void log_stretch(lw__lane *s, const lw__core *c, const lw__task *t
 }
 
 // The job of rank r gives the core away, or a cost stands between: account for what it has done.
-LW__INLINE void cut(lw__lane *s, const lw__core *c, int64_t r, lw_stretch_end ends, int W, int L)
+static inline void cut(lw__lane *s, const lw__core *c, int64_t r, lw_stretch_end ends, int W, int L)
 {
     const lw__task *t = task_at(c, r);
     lw_tick work_at = LW__I(c->work_at);
@@ -55,7 +55,7 @@ LW__INLINE void cut(lw__lane *s, const lw__core *c, int64_t r, lw_stretch_end en
 }
 
 // Work of the present job at which point k lies.
-LW__INLINE lw_tick place_of(lw__lane *s, const lw__task *t, int64_t k, int W, int L)
+static inline lw_tick place_of(lw__lane *s, const lw__task *t, int64_t k, int W, int L)
 {
     const lw__job_point *p = &t->points[k];
     lw_tick work = LW__I(t->ring_work + LW__I(t->head));
@@ -66,7 +66,7 @@ LW__INLINE lw_tick place_of(lw__lane *s, const lw__task *t, int64_t k, int W, in
 }
 
 // The next point of the job at work decides the timer.
-LW__INLINE void set_point_timer(lw__lane *s, const lw__core *c, int64_t r, int W, int L)
+static inline void set_point_timer(lw__lane *s, const lw__core *c, int64_t r, int W, int L)
 {
     LW__I(s->z->due + c->point_timer) = LW__I(c->work_at) + LW__I(c->goal + r) - LW__I(c->done + r);
 }
@@ -105,7 +105,7 @@ static inline void pay_debt(lw__lane *s, const lw__core *c, int W, int L)
 
 // ---- urgency and resources
 
-LW__INLINE int64_t own_key(lw__lane *s, const lw__core *c, int64_t r, int W, int L)
+static inline int64_t own_key(lw__lane *s, const lw__core *c, int64_t r, int W, int L)
 {
     const lw__task *t = task_at(c, r);
     lw_tick nominal = LW__I(t->ring_nominal + LW__I(t->head));
@@ -203,7 +203,7 @@ static inline void give_back(LW__CONTEXT, const lw__core *c, int64_t r)
 
 // ---- reading and writing
 
-LW__INLINE void task_read(LW__CONTEXT, const lw__task *t, int64_t slot)
+static inline void task_read(LW__CONTEXT, const lw__task *t, int64_t slot)
 {
     const lw__loop *l = &t->law;
     lw_tick sampled = l->adc != NULL ? LW__I(l->adc->result) : s->now;
@@ -220,7 +220,7 @@ LW__INLINE void task_read(LW__CONTEXT, const lw__task *t, int64_t slot)
 }
 
 // `out`: cell of the first output. 0: nothing was written.
-LW__INLINE int task_write(LW__CONTEXT, const lw__task *t, int64_t out, int64_t job)
+static inline int task_write(LW__CONTEXT, const lw__task *t, int64_t out, int64_t job)
 {
     const lw__loop *l = &t->law;
     if (LW__I(l->stepped_at) < 0)
@@ -236,7 +236,7 @@ LW__INLINE int task_write(LW__CONTEXT, const lw__task *t, int64_t out, int64_t j
     return 1;
 }
 
-LW__INLINE void op_logical(LW__CONTEXT, const lw__task *t)
+static inline void op_logical(LW__CONTEXT, const lw__task *t)
 {
     int64_t job = LW__I(t->logical_job);
     LW__I(s->z->due + t->logical_timer) = LW_NEVER;
@@ -247,7 +247,7 @@ LW__INLINE void op_logical(LW__CONTEXT, const lw__task *t)
 }
 
 // A task reads at its release: the newest job of its ring.
-LW__INLINE void op_read(LW__CONTEXT, const lw__task *t)
+static inline void op_read(LW__CONTEXT, const lw__task *t)
 {
     int64_t count = LW__I(t->count), slot = (LW__I(t->head) + count - 1) & t->mask;
     if (count == 0)
@@ -266,7 +266,7 @@ LW__INLINE void op_read(LW__CONTEXT, const lw__task *t)
 
 // ---- jobs
 
-LW__INLINE void begin_job(lw__lane *s, const lw__core *c, const lw__task *t, int W, int L)
+static inline void begin_job(lw__lane *s, const lw__core *c, const lw__task *t, int W, int L)
 {
     int r = t->rank;
     LW__I(c->released + r) = LW__I(t->ring_ready + LW__I(t->head));
@@ -299,7 +299,7 @@ static inline void tell_job(lw__lane *s, const lw__core *c, const lw__task *t, l
 }
 
 // The job at the head of the ring is over; the one behind it begins.
-LW__INLINE void end_job(LW__CONTEXT, const lw__core *c, const lw__task *t, lw_job_outcome how)
+static inline void end_job(LW__CONTEXT, const lw__core *c, const lw__task *t, lw_job_outcome how)
 {
     int r = t->rank;
     if (LW__I(c->running) == r) {
@@ -325,13 +325,13 @@ LW__INLINE void end_job(LW__CONTEXT, const lw__core *c, const lw__task *t, lw_jo
 
 // ---- releases
 
-LW__INLINE lw_tick use_draw(lw__lane *s, const lw__use *u, int64_t job)
+static inline lw_tick use_draw(lw__lane *s, const lw__use *u, int64_t job)
 {
     return u->timing == NULL ? u->constant : lw__use_draw(s, u, job);
 }
 
 // A job that is not stepped: outputs do what they state for it.
-LW__INLINE void missed_job(LW__CONTEXT, const lw__task *t, int64_t job)
+static inline void missed_job(LW__CONTEXT, const lw__task *t, int64_t job)
 {
     if (t->has_law)
         miss(LW__HERE, &t->law, job);
@@ -386,7 +386,7 @@ static inline int overrun(LW__CONTEXT, const lw__core *c, const lw__task *t, lw_
     return 0;
 }
 
-LW__INLINE void release_job(LW__CONTEXT, const lw__core *c, const lw__task *t, lw_tick nominal)
+static inline void release_job(LW__CONTEXT, const lw__core *c, const lw__task *t, lw_tick nominal)
 {
     if (LW__I(t->count) > 0 && !overrun(LW__HERE, c, t, nominal))
         return;
@@ -418,7 +418,7 @@ LW__INLINE void release_job(LW__CONTEXT, const lw__core *c, const lw__task *t, l
 }
 
 // The release after the one just served, by the task's clock or arrivals.
-LW__INLINE void next_release(lw__lane *s, const lw__core *c, const lw__task *t, int W, int L)
+static inline void next_release(lw__lane *s, const lw__core *c, const lw__task *t, int W, int L)
 {
     lw_tick nominal, *due = &LW__I(c->due + t->rank);
     int64_t job = LW__I(t->jobs);
@@ -438,7 +438,7 @@ LW__INLINE void next_release(lw__lane *s, const lw__core *c, const lw__task *t, 
 }
 
 // A finish lets go what waited for it: a rephased clock, a relative delay.
-LW__INLINE void after_finish(LW__CONTEXT, const lw__core *c, const lw__task *t)
+static inline void after_finish(LW__CONTEXT, const lw__core *c, const lw__task *t)
 {
     if (LW__I(t->deferred)) {
         LW__I(t->deferred) = 0;
@@ -476,7 +476,7 @@ static inline void serve_release(LW__CONTEXT, const lw__core *c, const lw__task 
 }
 
 // Release of a task by an event.
-LW__INLINE void op_release(LW__CONTEXT, const lw__task *t)
+static inline void op_release(LW__CONTEXT, const lw__task *t)
 {
     const lw__core *c = &s->z->cores[t->core];
     if (t->trigger.kind != LW__EVENT_TASK && s->now > LW__I(c->closed))
@@ -519,7 +519,7 @@ static inline void serve_stall(lw__lane *s, const lw__core *c, int W, int L)
     LW__I(c->stall_due) = k < c->n_stalls ? c->stalls[k].at : LW_NEVER;
 }
 
-LW__INLINE void op_releases(LW__CONTEXT, const lw__core *c)
+static inline void op_releases(LW__CONTEXT, const lw__core *c)
 {
     lw_tick least = LW_NEVER;
     while (LW__I(c->stall_due) == s->now)
@@ -538,7 +538,7 @@ LW__INLINE void op_releases(LW__CONTEXT, const lw__core *c)
 
 // ---- dispatch
 
-LW__INLINE int choose(lw__lane *s, const lw__core *c, int W, int L)
+static inline int choose(lw__lane *s, const lw__core *c, int W, int L)
 {
     uint64_t can = (uint64_t)(LW__I(c->ready) & ~LW__I(c->waiting)), handlers = can & c->handlers;
     if (c->plain)
@@ -559,7 +559,7 @@ LW__INLINE int choose(lw__lane *s, const lw__core *c, int W, int L)
     return c->policy->pick(&jobs);
 }
 
-LW__INLINE void op_dispatch(LW__CONTEXT, const lw__core *c)
+static inline void op_dispatch(LW__CONTEXT, const lw__core *c)
 {
     int64_t running = LW__I(c->running);
     if (LW__I(c->masked) > 0 && running >= 0)
@@ -594,7 +594,7 @@ LW__INLINE void op_dispatch(LW__CONTEXT, const lw__core *c)
 // ---- points
 
 // Serve one point of the job of rank r; 0: it has the core no more.
-LW__INLINE int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
+static inline int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
                            const lw__job_point *point)
 {
     int64_t slot = LW__I(t->head);
@@ -642,7 +642,7 @@ LW__INLINE int serve_point(LW__CONTEXT, const lw__core *c, const lw__task *t,
 
 // Points that the job at work has reached. With `writes_only` those up to the first that locks or
 // reads; the rest is made due.
-LW__INLINE void serve_points(LW__CONTEXT, const lw__core *c, int writes_only)
+static inline void serve_points(LW__CONTEXT, const lw__core *c, int writes_only)
 {
     int64_t r = LW__I(c->running);
     const lw__task *t = task_at(c, r);
@@ -673,18 +673,18 @@ LW__INLINE void serve_points(LW__CONTEXT, const lw__core *c, int writes_only)
     }
 }
 
-LW__INLINE void op_writes(LW__CONTEXT, const lw__core *c)
+static inline void op_writes(LW__CONTEXT, const lw__core *c)
 {
     serve_points(LW__HERE, c, 1);
 }
 
-LW__INLINE void op_reads(LW__CONTEXT, const lw__core *c)
+static inline void op_reads(LW__CONTEXT, const lw__core *c)
 {
     serve_points(LW__HERE, c, 0);
 }
 
 // Points of a job that has just got the core, unless it has lost it within the instant.
-LW__INLINE void op_points(LW__CONTEXT, const lw__core *c)
+static inline void op_points(LW__CONTEXT, const lw__core *c)
 {
     int64_t r = LW__I(c->running);
     if (r < 0 || LW__I(c->work_at) != s->now || LW__I(c->goal + r) != LW__I(c->done + r))

@@ -32,6 +32,10 @@ typedef struct lw__pwm {
 lw_status lw__freeze_pwms(lw__freezer *w);
 // Level at time zero, and the plant input it drives.
 double lw__pwm_first(const lw__pwm_item *item);
+// Operations (pwm_ops.c).
+void lw__pwm_stretch(LW__CONTEXT, const lw__pwm *m);
+void lw__pwm_edge(LW__CONTEXT, const lw__pwm *m);
+void lw__pwm_written(LW__CONTEXT, const lw__pwm *m);
 void lw__pwm_start(lw__lane *s, const lw__pwm *m);
 void lw__pwms_describe(const lw_frozen *z, void (*say)(void *context, const char *text),
                        void *context);

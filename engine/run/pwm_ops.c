@@ -1,19 +1,18 @@
-// Operations of pulse-width modulated outputs. Part of the driver.
+// Operations of pulse-width modulated outputs, compiled once for any width.
 //
 //   stretch  phase 2, after the latch: legs of a new stretch, their edges planned
 //   edge     phase 1: a leg switches
 //   written  phase 1: a value that acts at once
-#ifndef LATEWOOD_RUN_OP_PWM_H
-#define LATEWOOD_RUN_OP_PWM_H
+
+#include "run/pwm.h"
 
 #include "run/op_dac.h"
 #include "run/op_signal.h"
-#include "run/pwm.h"
 
 #include <math.h>
 
 // Share of the period for which leg k is high, from what was taken over.
-static inline double leg_share(const lw__lane *s, const lw__pwm *m, int k, int W, int L)
+static double leg_share(const lw__lane *s, const lw__pwm *m, int k, int W, int L)
 {
     const lw_pwm_def *d = &m->item->def;
     double v = LW__F(m->dac->held);
@@ -27,7 +26,7 @@ static inline double leg_share(const lw__lane *s, const lw__pwm *m, int k, int W
     return clamp(share, 0, 1);
 }
 
-static inline double level_of(lw__lane *s, const lw__pwm *m, double a, double b, int W, int L)
+static double level_of(lw__lane *s, const lw__pwm *m, double a, double b, int W, int L)
 {
     double supply = read_signal(s, &m->supply, W, L);
     switch (m->item->def.bridge) {
@@ -40,7 +39,7 @@ static inline double level_of(lw__lane *s, const lw__pwm *m, double a, double b,
     }
 }
 
-LW__INLINE void pwm_level(LW__CONTEXT, const lw__pwm *m, double level)
+static void pwm_level(LW__CONTEXT, const lw__pwm *m, double level)
 {
     if (!isfinite(level))
         lw__end_lane(s, LW_ERR_NOT_FINITE, m->name, "its level is not finite");
@@ -51,14 +50,14 @@ LW__INLINE void pwm_level(LW__CONTEXT, const lw__pwm *m, double level)
     drive(LW__HERE, &m->drives, level);
 }
 
-LW__INLINE void pwm_legs(LW__CONTEXT, const lw__pwm *m)
+static void pwm_legs(LW__CONTEXT, const lw__pwm *m)
 {
     double a = (double)LW__I(m->state), b = m->n_legs > 1 ? (double)LW__I(m->state + 1) : 0;
     pwm_level(LW__HERE, m, level_of(s, m, a, b, W, L));
 }
 
 // The mean of the pulses. The dead time takes its share from the leg that the current flows out of.
-LW__INLINE void pwm_mean(LW__CONTEXT, const lw__pwm *m)
+static void pwm_mean(LW__CONTEXT, const lw__pwm *m)
 {
     double share[LW__PWM_LEGS] = {0, 0};
     for (int k = 0; k < m->n_legs; k++) {
@@ -73,7 +72,7 @@ LW__INLINE void pwm_mean(LW__CONTEXT, const lw__pwm *m)
 }
 
 // Leg k goes to `high`: now, or after the dead time where the current keeps it where it is.
-LW__INLINE int leg_moves(LW__CONTEXT, const lw__pwm *m, int k, int high)
+static int leg_moves(LW__CONTEXT, const lw__pwm *m, int k, int high)
 {
     (void)p;
     (void)N;
@@ -97,8 +96,8 @@ LW__INLINE int leg_moves(LW__CONTEXT, const lw__pwm *m, int k, int high)
 
 // Plan leg k for the stretch that began at `began` and lasts `length` ticks; whether it changed at
 // once. High at the start of the stretch (a falling edge ends it) or at its end.
-LW__INLINE int plan_leg(LW__CONTEXT, const lw__pwm *m, int k, lw_tick began, lw_tick length,
-                        int high_first)
+static int plan_leg(LW__CONTEXT, const lw__pwm *m, int k, lw_tick began, lw_tick length,
+                    int high_first)
 {
     double high = leg_share(s, m, k, W, L) * (double)length;
     lw_tick at =
@@ -125,19 +124,19 @@ LW__INLINE int plan_leg(LW__CONTEXT, const lw__pwm *m, int k, lw_tick began, lw_
     return changed;
 }
 
-LW__INLINE lw_tick stretch_at(const lw__pwm *m, int64_t k)
+static lw_tick stretch_at(const lw__pwm *m, int64_t k)
 {
     return lw__grid_at(m->stretch, m->offset, k);
 }
 
-static inline int high_first(const lw__pwm *m, int64_t stretch)
+static int high_first(const lw__pwm *m, int64_t stretch)
 {
     lw_pwm_shape shape = m->item->def.shape;
     return shape == LW_PWM_TRAILING || (shape == LW_PWM_CENTRE && stretch % 2 == 0);
 }
 
 // The register is taken over where the carrier reloads: every stretch, the even or the odd ones.
-LW__INLINE void pwm_reload(LW__CONTEXT, const lw__pwm *m, int64_t k)
+static void pwm_reload(LW__CONTEXT, const lw__pwm *m, int64_t k)
 {
     lw_pwm_reload reload = m->item->def.reload;
     if (reload == LW_PWM_BOTH || (reload == LW_PWM_PEAK && k % 2 == 1) ||
@@ -145,7 +144,7 @@ LW__INLINE void pwm_reload(LW__CONTEXT, const lw__pwm *m, int64_t k)
         op_latch(LW__HERE, m->dac);
 }
 
-LW__INLINE void op_pwm_stretch(LW__CONTEXT, const lw__pwm *m)
+void lw__pwm_stretch(LW__CONTEXT, const lw__pwm *m)
 {
     int64_t k = LW__I(m->count);
     pwm_reload(LW__HERE, m, k);
@@ -163,7 +162,7 @@ LW__INLINE void op_pwm_stretch(LW__CONTEXT, const lw__pwm *m)
         pwm_legs(LW__HERE, m);
 }
 
-LW__INLINE void op_pwm_edge(LW__CONTEXT, const lw__pwm *m)
+void lw__pwm_edge(LW__CONTEXT, const lw__pwm *m)
 {
     int changed = 0;
     int64_t stretch = LW__I(m->count) - 1;
@@ -184,7 +183,7 @@ LW__INLINE void op_pwm_edge(LW__CONTEXT, const lw__pwm *m)
         pwm_legs(LW__HERE, m);
 }
 
-LW__INLINE void op_pwm_written(LW__CONTEXT, const lw__pwm *m)
+void lw__pwm_written(LW__CONTEXT, const lw__pwm *m)
 {
     if (LW__I(m->count) == 0)
         return; // the first stretch takes it up
@@ -200,5 +199,3 @@ LW__INLINE void op_pwm_written(LW__CONTEXT, const lw__pwm *m)
     if (changed)
         pwm_legs(LW__HERE, m);
 }
-
-#endif
