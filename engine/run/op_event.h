@@ -11,7 +11,7 @@
 
 #include "run/comparator.h"
 #include "run/op_dac.h"
-#include "run/op_pwm.h"
+#include "run/pwm.h"
 
 static inline void op_search(LW__CONTEXT, const lw__comparator *c)
 {
@@ -168,9 +168,9 @@ static inline void end_trip(LW__CONTEXT, const lw__trip *t)
     if (m == NULL)
         dac_output(LW__HERE, t->dac, LW__F(t->dac->asked), LW__I(t->dac->sampled));
     else if (m->item->def.averaged)
-        pwm_mean(LW__HERE, m);
+        lw__pwm_mean(LW__HERE, m);
     else
-        pwm_legs(LW__HERE, m);
+        lw__pwm_legs(LW__HERE, m);
 }
 
 // The comparator clears, or the time is over: the later of both ends the trip.

@@ -33,6 +33,9 @@ lw_status lw__freeze_pwms(lw__freezer *w);
 // Level at time zero, and the plant input it drives.
 double lw__pwm_first(const lw__pwm_item *item);
 // Operations (pwm_ops.c).
+// Give the output what it should have: the mean, or what its legs are at.
+void lw__pwm_mean(LW__CONTEXT, const lw__pwm *m);
+void lw__pwm_legs(LW__CONTEXT, const lw__pwm *m);
 void lw__pwm_stretch(LW__CONTEXT, const lw__pwm *m);
 void lw__pwm_edge(LW__CONTEXT, const lw__pwm *m);
 void lw__pwm_written(LW__CONTEXT, const lw__pwm *m);

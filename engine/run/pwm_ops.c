@@ -50,14 +50,14 @@ static void pwm_level(LW__CONTEXT, const lw__pwm *m, double level)
     drive(LW__HERE, &m->drives, level);
 }
 
-static void pwm_legs(LW__CONTEXT, const lw__pwm *m)
+void lw__pwm_legs(LW__CONTEXT, const lw__pwm *m)
 {
     double a = (double)LW__I(m->state), b = m->n_legs > 1 ? (double)LW__I(m->state + 1) : 0;
     pwm_level(LW__HERE, m, level_of(s, m, a, b, W, L));
 }
 
 // The mean of the pulses. The dead time takes its share from the leg that the current flows out of.
-static void pwm_mean(LW__CONTEXT, const lw__pwm *m)
+void lw__pwm_mean(LW__CONTEXT, const lw__pwm *m)
 {
     double share[LW__PWM_LEGS] = {0, 0};
     for (int k = 0; k < m->n_legs; k++) {
@@ -152,14 +152,14 @@ void lw__pwm_stretch(LW__CONTEXT, const lw__pwm *m)
     LW__I(m->count) = k + 1;
     LW__I(s->z->due + m->timer) = next;
     if (m->item->def.averaged) {
-        pwm_mean(LW__HERE, m);
+        lw__pwm_mean(LW__HERE, m);
         return;
     }
     int changed = k == 0 || m->supply.at.kind != LW__SIGNAL_CONSTANT;
     for (int leg = 0; leg < m->n_legs; leg++)
         changed |= plan_leg(LW__HERE, m, leg, began, next - began, high_first(m, k));
     if (changed)
-        pwm_legs(LW__HERE, m);
+        lw__pwm_legs(LW__HERE, m);
 }
 
 void lw__pwm_edge(LW__CONTEXT, const lw__pwm *m)
@@ -180,7 +180,7 @@ void lw__pwm_edge(LW__CONTEXT, const lw__pwm *m)
         }
     }
     if (changed)
-        pwm_legs(LW__HERE, m);
+        lw__pwm_legs(LW__HERE, m);
 }
 
 void lw__pwm_written(LW__CONTEXT, const lw__pwm *m)
@@ -188,7 +188,7 @@ void lw__pwm_written(LW__CONTEXT, const lw__pwm *m)
     if (LW__I(m->count) == 0)
         return; // the first stretch takes it up
     if (m->item->def.averaged) {
-        pwm_mean(LW__HERE, m);
+        lw__pwm_mean(LW__HERE, m);
         return;
     }
     int64_t stretch = LW__I(m->count) - 1;
@@ -197,5 +197,5 @@ void lw__pwm_written(LW__CONTEXT, const lw__pwm *m)
     for (int k = 0; k < m->n_legs; k++)
         changed |= plan_leg(LW__HERE, m, k, began, length, high_first(m, stretch));
     if (changed)
-        pwm_legs(LW__HERE, m);
+        lw__pwm_legs(LW__HERE, m);
 }
