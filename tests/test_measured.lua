@@ -106,7 +106,8 @@ local function test_reading()
     raises(function() lw.measured { good, time = "t", value = "v", from = 5 } end, "0 rows")
     raises(function() lw.measured { good, time = "t", value = "v", time_unit = "A" } end, "A")
     local back = file_of("back.csv", "0,1\n2,1\n1,1\n")
-    raises(function() lw.measured { back, time = 1, value = 2 } end, "row 3: its time is 1 s after 2 s")
+    raises(function() lw.measured { back, time = 1, value = 2 } end,
+      "row 3: its time is 1 s after 2 s")
     raises(function() lw.measured { file_of("text.csv", "t,v\n0,1\n1,high\n"), time = 1, value = 2 }
       end, "text.csv:3: column 2 is \"high\"")
     raises(function() lw.measured { folder .. "/no such file.csv", time = 1, value = 2 } end,
