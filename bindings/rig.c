@@ -199,6 +199,8 @@ static const lw__lua_field adc_fields[] = {
     NUMBER(nominal, "nominal", "s"),
     OTHER("at"),
     OTHER("phase"),
+    OTHER("analog"),
+    OTHER("filter"),
     NUMBER(gain, "gain", NULL),
     NUMBER(bias, "bias", NULL),
     NUMBER(noise, "noise", NULL),
@@ -265,9 +267,16 @@ int lw__lua_rig_adc(lua_State *L)
     p.def.quantiser.lo = p.range[0];
     p.def.quantiser.hi = p.range[1];
     p.def.quantiser.rounding = (lw_rounding)p.rounding;
-    lw_status status = lw_rig_add_adc(rig->it, &p.def, &err);
+    lw_adc_front front = {0};
+    lw__lua_read_front(&r, &front);
+    lw_period own_clock = p.def.every;
+    if (front.sinc_order > 0) {
+        own_clock = (lw_period){front.clock.num * front.ratio, front.clock.den};
+        period = lw_period_seconds(own_clock);
+    }
+    lw_status status = lw_rig_add_adc_behind(rig->it, &p.def, &front, &err);
     if (status == LW_OK && period > 0)
-        note_period(L, p.def.name, p.def.every);
+        note_period(L, p.def.name, own_clock);
     return lw__lua_rig_added(&r, status, &err);
 }
 

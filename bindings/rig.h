@@ -4,6 +4,8 @@
 
 #include "fields.h"
 
+#include <latewood/sensor.h>
+
 // User values: list of the laws and sources that call Lua; set of the origins given to the engine;
 // periods of the adcs in seconds, by name; carriers of the pwms, by name.
 #define RIG_CALLS 1
@@ -24,6 +26,8 @@ lw__lua_reader lw__lua_rig_read(lua_State *L, const char *what, const char **nam
 int lw__lua_rig_added(const lw__lua_reader *r, lw_status status, const lw_error *err);
 // The clock that a thing takes from a carrier by `at` and `phase`; nothing where `at` is not there.
 void lw__lua_carrier_clock(const lw__lua_reader *r, lw_period *every, double *offset);
+// What stands before an adc: its fields analog and filter.
+void lw__lua_read_front(const lw__lua_reader *r, lw_adc_front *front);
 // Hold the object at `index` for as long as the rig: a run calls into it.
 void lw__lua_rig_keep(lua_State *L, int index);
 // Raise what the engine said about the rig at `rig`, at the line of the thing it names.

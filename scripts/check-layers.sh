@@ -24,6 +24,7 @@ BEGIN {
     owner["rig"] = "io"     # definitions of converters and loops, which io reads
     owner["watch"] = "run"
     owner["ready"] = owner["modes"] = owner["fit"] = "plant"
+    owner["sensor"] = "io"  # definitions of encoders, filters before adcs, noise
     owner["event"] = owner["pwm"] = "io"    # definitions of comparators and trips
     owner["statistics"] = owner["ledger"] = owner["crew"] = "batch"
 }

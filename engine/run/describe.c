@@ -8,6 +8,7 @@
 #include "run/comparator.h"
 #include "run/motion.h"
 #include "run/track.h"
+#include "run/white.h"
 
 #include <latewood/quantity.h>
 
@@ -108,6 +109,8 @@ static void describe_adcs(writer *w, const lw_frozen *z)
                 period_words(a->period).text);
         say(w, "  a conversion takes %s%s", time_words(a->takes).text,
             a->takes == 0 ? " (default)" : "");
+        if (d->note != NULL)
+            say(w, "  %s", d->note);
         if (d->average > 1)
             say(w, "  the average of %d samples, %s s apart", d->average,
                 number_words(d->average_every).text);
@@ -273,6 +276,7 @@ void lw_frozen_describe(const lw_frozen *frozen, int (*line)(void *context, cons
     describe_loops(&w, frozen);
     lw__pwms_describe(frozen, say_plain, &w);
     lw__events_describe(frozen, say_plain, &w);
+    lw__white_describe(frozen, say_plain, &w);
     lw__describe_cpu(&w, frozen);
     describe_groups(&w, frozen);
     describe_roundings(&w, frozen);

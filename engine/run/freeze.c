@@ -13,6 +13,7 @@
 #include "run/freezer.h"
 #include "run/pwm.h"
 #include "run/schedule.h"
+#include "run/white.h"
 
 #include <stdint.h>
 
@@ -83,6 +84,7 @@ static lw_status freeze_parts(lw__freezer *w)
     LW__TRY(lw__freeze_loops(w));
     LW__TRY(lw__freeze_cores(w));
     LW__TRY(lw__freeze_events(w));
+    LW__TRY(lw__freeze_white(w));
     LW__TRY(lw__freeze_streams(w));
     lw__freeze_anchors(w);
     LW__TRY(lw__freeze_watch(w));

@@ -13,6 +13,7 @@
 #include "run/schedule.h"
 #include "run/sprint.h"
 #include "run/track.h"
+#include "run/white.h"
 
 #include <stdio.h>
 #include <stdlib.h>
@@ -42,6 +43,8 @@ lw_status lw__freeze_streams(lw__freezer *w)
         const lw__task *t = &z->tasks[i];
         room += 1 + t->takes.n_streams + t->arrives.n_streams + t->jitter.n_streams;
     }
+    for (int g = 0; g < z->n_groups; g++)
+        room += z->groups[g].n_white * z->groups[g].n_plant_states;
     stream_of *all = lw__freezer_get(w, sizeof *all * (size_t)room);
     if (all == NULL)
         return LW_ERR_MEMORY;
@@ -67,6 +70,13 @@ lw_status lw__freeze_streams(lw__freezer *w)
             for (int k = 0; k < uses[u]->n_streams; k++)
                 all[n++] = (stream_of){uses[u]->streams[k], t->name, t->item->def.origin};
     }
+    for (int g = 0; g < z->n_groups; g++)
+        for (int k = 0; k < z->groups[g].n_white; k++) {
+            const lw__white *white = &z->groups[g].white[k];
+            for (int i = 0; i < white->n; i++)
+                all[n++] = (stream_of){white->streams[i], white->item->def.name,
+                                       white->item->def.origin};
+        }
     qsort(all, (size_t)n, sizeof *all, by_stream);
     for (int i = 1; i < n; i++)
         if (all[i].stream == all[i - 1].stream)
@@ -450,7 +460,8 @@ static int plain_dac(const lw__dac *d)
     const lw__group *g = d->drives.list[0].group;
     return d->n_phases == 0 && d->plain && !d->observed && !d->gaps && d->tripped < 0 &&
            d->log < 0 && !d->newest && d->observers.words == NULL && d->drives.list[0].delay == 0 &&
-           g->observers.words == NULL && g->n_generators == 0 && g->motion == NULL;
+           g->observers.words == NULL && g->n_generators == 0 && g->motion == NULL &&
+           g->n_white == 0;
 }
 
 static int plain_adc(const lw__adc *a)

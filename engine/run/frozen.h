@@ -95,6 +95,8 @@ typedef struct lw__group {
     // not one linear system: how it moves (motion.h), what that keeps, who follows its stretches
     const struct lw__motion *motion; // NULL: by the kernel
     void *moves;
+    int n_white; // white noises, drawn at instants of the grid (white.h)
+    const struct lw__white *white;
     int n_watchers;
     const struct lw__watcher {
         int is_record, index; // of the track or record

@@ -7,6 +7,7 @@
 #include "io/source.h"
 #include "run/motion.h"
 #include "run/state.h"
+#include "run/white.h"
 
 // State of a group at the present tick into `out`. For one run the cells themselves are the lists
 // that the kernel reads.
@@ -80,6 +81,8 @@ LW__INLINE void move_anchor(lw__lane *s, const lw__group *g, int W, int L)
 LW__INLINE void op_anchor(LW__CONTEXT, const lw__group *g)
 {
     move_anchor(s, g, W, L);
+    if (g->n_white > 0)
+        lw__white_kick(s, g);
     if (g->timer >= 0 && LW__I(s->z->due + g->timer) == s->now) {
         int64_t k = LW__I(g->count) + 1;
         LW__I(g->count) = k;

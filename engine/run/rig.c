@@ -64,6 +64,7 @@ void lw_rig_free(lw_rig *rig)
     lw__free(rig->loops);
     lw__rig_free_cpu(rig);
     lw__rig_free_events(rig);
+    lw__free(rig->noises);
     lw__arena_free(rig->arena);
     lw__free(rig);
 }
@@ -101,6 +102,9 @@ static const char *what_has(const lw_rig *rig, const char *name)
     for (int i = 0; i < rig->n_tasks; i++)
         if (same(rig->tasks[i].def.name, name))
             return rig->tasks[i].is_frame ? "frame" : "task";
+    for (int i = 0; i < rig->n_noises; i++)
+        if (same(rig->noises[i].def.name, name))
+            return "noise";
     return lw__rig_event_thing(rig, name);
 }
 
@@ -343,6 +347,7 @@ lw_status lw_rig_add_adc(lw_rig *rig, const lw_adc_def *def, lw_error *err)
     item.def.of = lw__copy_texts(&c, def->n_channels, def->of);
     item.def.skew = lw__copy_numbers(&c, def->n_channels, def->skew);
     item.def.after = lw__copy_text(&c, def->after);
+    item.def.note = lw__copy_text(&c, def->note);
     lw__adc_item *at = lw__room((void **)&rig->adcs, rig->n_adcs, sizeof item);
     if (at == NULL || c.failed)
         return lw__no_room(def->origin, err);

@@ -8,6 +8,7 @@
 #include <latewood/event.h>
 #include <latewood/pwm.h>
 #include <latewood/rig.h>
+#include <latewood/sensor.h>
 
 typedef struct lw__plant_item {
     const char *origin, *name;
@@ -80,6 +81,11 @@ typedef struct lw__trip_item {
     int place;
 } lw__trip_item;
 
+typedef struct lw__noise_item {
+    lw_noise_def def;
+    int place;
+} lw__noise_item;
+
 struct lw_rig {
     int references;
     lw__arena *arena;
@@ -101,6 +107,8 @@ struct lw_rig {
     lw__task_item *tasks;
     lw__comparator_item *comparators;
     lw__trip_item *trips;
+    int n_noises;
+    lw__noise_item *noises;
     int frozen; // a frozen rig refers to it: no more additions
 };
 

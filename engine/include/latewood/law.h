@@ -144,6 +144,15 @@ typedef struct lw_observer {
 } lw_observer;
 LW_API lw_status lw_law_observer(const lw_observer *p, lw_law **out, lw_error *err);
 
+// Laws of sensors. The decimation filter sinc^order behind an ideal modulator: steps once a clock of
+// the modulator on the integral of what is measured; the mean over each clock is weighed by the
+// convolution of `order` boxes of `ratio` clocks (E. B. Hogenauer, IEEE Trans. ASSP 29 (1981)
+// 155-162, from memory). Input integral, output out: new every `ratio` clocks, 0 before.
+LW_API lw_status lw_law_sinc(int order, int ratio, lw_law **out, lw_error *err);
+// Speed from counts: (counts - counts `window` samples ago) per_count / (window T), over the samples
+// there are at the start. Input counts, output out.
+LW_API lw_status lw_law_count_speed(int window, double per_count, lw_law **out, lw_error *err);
+
 #ifdef __cplusplus
 }
 #endif

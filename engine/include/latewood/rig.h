@@ -125,6 +125,7 @@ typedef struct lw_adc_def {
     double reread;      // what a second read of one sample gives; NAN: the sample again
     double stale_after; // [s] a sample older than this gives `stale`; NAN: never
     double stale;
+    const char *note; // a line more for `describe`; may be NULL
 } lw_adc_def;
 
 LW_API lw_adc_def lw_adc_default(void);
