@@ -50,6 +50,24 @@ local cases = {
     'lw.plant.flow { states = { "current" }, inputs = { "voltage" }, ' ..
     'flow = function(current, voltage) return voltage - current end }, ' ..
     'lw.plant.gain { gain = 1 }) }' }, DATA, ':5: .*the plant is a flow and has no matrices' },
+  -- sensors
+  { "an_encoder_without_counts", { more = 'rig:encoder { "angle", of = "coil.current", counts = 0, ' ..
+    'every = "1 ms" }' }, DATA, ':9: encoder "angle": counts is 0; permitted 1 to 16777216' },
+  { "an_encoder_of_nothing", { more = 'rig:encoder { "angle", of = "coil.curent", counts = 9, ' ..
+    'every = "1 ms" }' }, DATA, ':9: adc "angle": of: no signal "coil.curent"; nearest' },
+  { "a_filter_of_no_kind", { adc = 'rig:adc { "current", of = "coil.current", filter = { "boxes" } }' },
+    DATA, ':6: adc "current": filter: its first element' },
+  { "a_filter_with_another_clock", { adc = 'rig:adc { "current", of = "coil.current", every = 1, ' ..
+    'filter = { "sinc", order = 3, ratio = 8, clock = "1 MHz" } }' }, DATA,
+    ':6: adc "current": a decimation filter has its own clock' },
+  { "an_analog_filter_of_high_order", { adc = 'rig:adc { "current", of = "coil.current", ' ..
+    'every = "1 ms", analog = { order = 9, cut_off = "1 kHz" } }' }, DATA,
+    ':6: adc "current": analog order is 9; permitted 1 to 8' },
+  { "white_noise_seen_between_anchors", { more = 'rig:noise { "hum", on = "coil.voltage", ' ..
+    'density = 1 } rig:adc { "odd", of = "coil.current", every = "150 us" }' }, DATA,
+    ':9: noise "hum": adc "odd" looks at the plant away from its anchors.*held noise' },
+  { "white_noise_on_no_input", { more = 'rig:noise { "hum", on = "coil.volts", density = 1 }' }, DATA,
+    ':9: noise "hum": on: no plant input "coil.volts"; nearest "coil.voltage"' },
   -- units and numbers
   { "a_wrong_unit", { adc = 'rig:adc { "current", of = "coil.current", every = "5 V" }' }, DATA,
     ':6: adc "current": every.*"5 V" is a voltage' },

@@ -175,7 +175,7 @@ t.test("a_loop_steps_on_a_decimated_adc", function()
     filter = { "sinc", order = 3, ratio = 16, clock = "1 MHz" }, analog = { order = 1, cut_off = "100 kHz" } }
   rig:dac { "bridge", to = "coil.voltage" }
   rig:loop { "control", law = lw.law.pi { kp = 1, ki = 500 }, wanted = 5, measured = "current", output = "bridge" }
-  local run = rig:run { lasts = "20 ms" }
+  local run = rig:run { lasts = "100 ms" }
   t.equal(run:status(), "done")
   near(run:value "coil.current", 5, 32 / 4096)
   local text = table.concat(rig:describe(), "\n")
