@@ -5,7 +5,8 @@ local t = require "harness"
 
 -- |got - want| <= tolerance, as it stands.
 local function near(got, want, tolerance)
-  if not (math.abs(got - want) <= tolerance) then
+  local distance = math.abs(got - want)
+  if distance ~= distance or distance > tolerance then
     error(("%.17g is not near %.17g by %.3g"):format(got, want, tolerance), 2)
   end
 end
@@ -15,8 +16,8 @@ end
 -- An axis that turns at `speed` rad/s from `start` on.
 local function turning(speed, start, encoder)
   local rig = lw.rig "axis"
-  rig:plant { "axis", lw.plant.state_space { A = { { 0 } }, B = { { 1 } }, C = { { 1 } }, start = { start or 0 },
-    inputs = { "speed" }, outputs = { "angle" } } }
+  rig:plant { "axis", lw.plant.state_space { A = { { 0 } }, B = { { 1 } }, C = { { 1 } },
+    start = { start or 0 }, inputs = { "speed" }, outputs = { "angle" } } }
   rig:source { "speed", lw.source.constant(speed) }:connect { "speed", to = "axis.speed" }
   encoder[1], encoder.of = "axis angle", "axis.angle"
   return rig:encoder(encoder)
@@ -41,13 +42,15 @@ t.test("an_angle_on_an_edge_has_reached_the_upper_count", function()
     local rig = turning(0, case[1], { counts = 16, turn = 16, every = "1 ms" })
     t.equal(rig:run({ lasts = "1 ms" }):value "axis angle", case[2])
   end
-  t.equal(turning(0, 3, { counts = 16, turn = 16, zero = 1, every = "1 ms" }):run({ lasts = 0 }):value "axis angle", 2)
+  local rig = turning(0, 3, { counts = 16, turn = 16, zero = 1, every = "1 ms" })
+  t.equal(rig:run({ lasts = 0 }):value "axis angle", 2)
 end)
 
 t.test("speed_by_count_is_off_by_at_most_one_count_over_its_window", function()
   for _, over in ipairs { 1, 10 } do
     local rig = turning(7.3, 0, { counts = 4096, every = "1 ms", speed_over = over })
-    local run = rig:run { lasts = "300 ms", record = { { "axis angle speed", every = "1 ms", from = "50 ms" } } }
+    local run = rig:run { lasts = "300 ms",
+      record = { { "axis angle speed", every = "1 ms", from = "50 ms" } } }
     local r = run:record "axis angle speed"
     -- common practice, no source: resolution 2 pi / (counts window)
     local resolution, worst = 2 * math.pi / (4096 * over * 1e-3), 0
@@ -57,7 +60,9 @@ t.test("speed_by_count_is_off_by_at_most_one_count_over_its_window", function()
       sum = sum + r.value[k]
     end
     -- a floor is within one count, so is the difference of two; 1e-9: sums of doubles
-    if worst > resolution + 1e-9 then error(("off by %g, resolution %g"):format(worst, resolution)) end
+    if worst > resolution + 1e-9 then
+      error(("off by %g, resolution %g"):format(worst, resolution))
+    end
     if worst < resolution / 50 then error "no rounding to counts was seen" end
     -- the mean over 250 samples: the ends of a telescoping sum, `over` counts at most each
     near(sum / r.n, 7.3, 2 * over * resolution / r.n)
@@ -69,7 +74,8 @@ t.test("a_loop_steps_on_an_encoder", function()
   rig:plant { "axis", lw.plant.integrator { gain = 1 } }
   rig:encoder { "angle", of = "axis.out", counts = 1000, turn = 1, every = "1 ms", speed_over = 4 }
   rig:dac { "push", to = "axis.in" }
-  rig:loop { "hold", law = lw.law.p { kp = 0.02 }, wanted = 500, measured = "angle", output = "push" }
+  rig:loop { "hold", law = lw.law.p { kp = 0.02 }, wanted = 500, measured = "angle",
+    output = "push" }
   local run = rig:run { lasts = "1 s" }
   t.equal(run:status(), "done")
   -- x' = 0.02 (500 - counts): settles where counts = 500 to the count
@@ -103,8 +109,8 @@ end
 t.test("analog_filters_are_3_db_down_at_their_cut_off", function()
   for _, kind in ipairs { "RC", "Butterworth", "Bessel" } do
     for order = 1, 8 do
-      local gain = response({ every = "10 us", analog = { kind = kind, order = order, cut_off = "1 kHz" } },
-        1000, 10, 0.03)
+      local gain = response({ every = "10 us",
+        analog = { kind = kind, order = order, cut_off = "1 kHz" } }, 1000, 10, 0.03)
       -- definition of the cut-off; 1e-9: transients of 30 ms of a 1 kHz filter and sums of 1000
       near(gain, lw.math.exp(-0.5 * lw.math.log(2)), 1e-9)
     end
@@ -113,8 +119,8 @@ end)
 
 t.test("a_butterworth_filter_falls_by_its_order", function()
   for _, order in ipairs { 2, 4 } do
-    local gain = response({ every = "10 us", analog = { kind = "Butterworth", order = order, cut_off = 1000 } },
-      4000, 40, 0.03)
+    local gain = response({ every = "10 us",
+      analog = { kind = "Butterworth", order = order, cut_off = 1000 } }, 4000, 40, 0.03)
     -- common practice: 1 / sqrt(1 + (f/fc)^(2 n))
     near(gain, 1 / math.sqrt(1 + 4 ^ (2 * order)), 1e-9)
   end
@@ -122,8 +128,8 @@ end)
 
 t.test("bessel_filters_delay_low_frequencies_alike", function()
   local function delay(frequency)
-    local _, phase = response({ every = "10 us", analog = { kind = "Bessel", order = 4, cut_off = 1000 } },
-      frequency, 10, 0.03)
+    local _, phase = response({ every = "10 us",
+      analog = { kind = "Bessel", order = 4, cut_off = 1000 } }, frequency, 10, 0.03)
     return -phase / (2 * math.pi * frequency)
   end
   -- from memory: the 4th order has its half power at 2.114 times the inverse of its delay
@@ -172,14 +178,17 @@ t.test("a_loop_steps_on_a_decimated_adc", function()
   local rig = lw.rig "coil"
   rig:plant { "coil", lw.plant.winding { resistance = 1, inductance = "1 mH" } }
   rig:adc { "current", of = "coil.current", bits = 12, range = { -16, 16 },
-    filter = { "sinc", order = 3, ratio = 16, clock = "1 MHz" }, analog = { order = 1, cut_off = "100 kHz" } }
+    filter = { "sinc", order = 3, ratio = 16, clock = "1 MHz" },
+    analog = { order = 1, cut_off = "100 kHz" } }
   rig:dac { "bridge", to = "coil.voltage" }
-  rig:loop { "control", law = lw.law.pi { kp = 1, ki = 500 }, wanted = 5, measured = "current", output = "bridge" }
+  rig:loop { "control", law = lw.law.pi { kp = 1, ki = 500 }, wanted = 5, measured = "current",
+    output = "bridge" }
   local run = rig:run { lasts = "100 ms" }
   t.equal(run:status(), "done")
   near(run:value "coil.current", 5, 32 / 4096)
   local text = table.concat(rig:describe(), "\n")
-  for _, words in ipairs { "sinc filter of order 3, one value every 16 clocks; group delay 2.25e-05 s",
+  for _, words in ipairs {
+    "sinc filter of order 3, one value every 16 clocks; group delay 2.25e-05 s",
     "RC low pass of order 1, -3 dB at 100000 Hz" } do
     if not text:find(words, 1, true) then error("describe lacks: " .. words .. "\n" .. text) end
   end
@@ -223,7 +232,8 @@ t.test("white_noise_on_an_oscillator_has_the_variances_of_its_lyapunov_equation"
   local rig = lw.rig "pair"
   rig:plant { "pair", lw.plant.state_space { A = { { 0, 1 }, { -1e4, -40 } }, B = { { 0 }, { 1 } },
     C = { { 1, 0 } } } }
-  rig:adc { "place", of = "pair.out", every = "3 ms" }:adc { "speed", of = "pair.x2", every = "3 ms" }
+  rig:adc { "place", of = "pair.out", every = "3 ms" }
+  rig:adc { "speed", of = "pair.x2", every = "3 ms" }
   rig:noise { "hum", on = "pair.in", density = 2 }
   local run = rig:run { lasts = "300 s", record = { "place", "speed" } }
   local _, x = moments(run:record "place", 100)
@@ -252,7 +262,8 @@ end)
 t.test("white_noise_changes_no_other_draw_and_repeats", function()
   local function values(seed, noise)
     local rig = lw.rig "mass"
-    rig:plant { "mass", lw.plant.integrator { gain = 1 } }:plant { "other", lw.plant.integrator { gain = 1 } }
+    rig:plant { "mass", lw.plant.integrator { gain = 1 } }
+    rig:plant { "other", lw.plant.integrator { gain = 1 } }
     rig:adc { "place", of = "mass.out", every = "1 ms", noise = 0.1 }
     rig:adc { "far", of = "other.out", every = "1 ms", noise = 0.1 }
     if noise then rig:noise { "gusts", on = "mass.in", density = 1 } end
@@ -291,24 +302,35 @@ t.test("what_cannot_be_is_refused_in_words", function()
   local function with(f) return function() noisy(f):freeze { lasts = 1 } end end
   refused(with(function(r) r:adc { "odd", of = "mass.speed", every = "1.5 ms" } end),
     'adc "odd" looks at the plant away from its anchors')
-  refused(with(function(r) r:comparator { "over", of = "mass.speed", above = 1 } end), "take held noise")
-  refused(with(function(r) r:noise { "more", on = "mass.wnd", density = 1 } end), 'nearest "mass.wind"')
-  refused(with(function(r) r:noise { "more", on = "mass.wind", density = -1 } end), "density is -1")
-  refused(with(function(r) r:noise { "gusts", on = "mass.wind", density = 1 } end), "taken by a noise")
-  refused(with(function(r) r:plant { "g", lw.plant.gain { gain = 1 } }:noise { "h", on = "g.in", density = 1 } end),
-    "acts on output")
-  refused(with(function(r) r:encoder { "e", of = "mass.speed", counts = 0, every = "1 ms" } end), "counts is 0")
-  refused(with(function(r) r:encoder { "e", of = "mass.speed", counts = 4, every = "1 ms", speed_over = 65 } end),
-    "speed_over is 65")
-  refused(with(function(r) r:adc { "a", of = "mass.speed", every = 1, analog = { cut_off = "1 s" } } end), "cut_off")
-  refused(with(function(r) r:adc { "a", of = "mass.speed", every = 1, analog = { cut_off = 5, order = 9 } } end),
-    "analog order is 9")
-  refused(with(function(r) r:adc { "a", of = "mass.speed", every = 1, filter = { "sinc", order = 3, ratio = 8,
-    clock = "1 MHz" } } end), "has its own clock")
-  refused(with(function(r) r:adc { "a", of = "mass.speed", filter = { "boxes", order = 3, ratio = 8,
-    clock = "1 MHz" } } end), "kind of filter")
-  refused(with(function(r) r:adc { "a", of = "mass.speed", filter = { "sinc", order = 5, ratio = 8,
-    clock = "1 MHz" } } end), "filter order is 5")
+  refused(with(function(r) r:comparator { "over", of = "mass.speed", above = 1 } end),
+    "take held noise")
+  local function noise(name, on, density)
+    return with(function(r) r:noise { name, on = on, density = density } end)
+  end
+  refused(noise("more", "mass.wnd", 1), 'nearest "mass.wind"')
+  refused(noise("more", "mass.wind", -1), "density is -1")
+  refused(noise("gusts", "mass.wind", 1), "taken by a noise")
+  refused(with(function(r)
+    r:plant { "g", lw.plant.gain { gain = 1 } }:noise { "h", on = "g.in", density = 1 }
+  end), "acts on output")
+  local function encoder(counts, over)
+    return with(function(r)
+      r:encoder { "e", of = "mass.speed", counts = counts, every = "1 ms", speed_over = over }
+    end)
+  end
+  refused(encoder(0), "counts is 0")
+  refused(encoder(4, 65), "speed_over is 65")
+  local function adc(every, analog, filter)
+    return with(function(r)
+      r:adc { "a", of = "mass.speed", every = every, analog = analog, filter = filter }
+    end)
+  end
+  refused(adc(1, { cut_off = "1 s" }), "cut_off")
+  refused(adc(1, { cut_off = 5, order = 9 }), "analog order is 9")
+  local clock = "1 MHz"
+  refused(adc(1, nil, { "sinc", order = 3, ratio = 8, clock = clock }), "has its own clock")
+  refused(adc(nil, nil, { "boxes", order = 3, ratio = 8, clock = clock }), "kind of filter")
+  refused(adc(nil, nil, { "sinc", order = 5, ratio = 8, clock = clock }), "filter order is 5")
 end)
 
 t.finish()

@@ -74,8 +74,8 @@ lw_status lw__freeze_streams(lw__freezer *w)
         for (int k = 0; k < z->groups[g].n_white; k++) {
             const lw__white *white = &z->groups[g].white[k];
             for (int i = 0; i < white->n; i++)
-                all[n++] = (stream_of){white->streams[i], white->item->def.name,
-                                       white->item->def.origin};
+                all[n++] =
+                    (stream_of){white->streams[i], white->item->def.name, white->item->def.origin};
         }
     qsort(all, (size_t)n, sizeof *all, by_stream);
     for (int i = 1; i < n; i++)
