@@ -48,13 +48,6 @@ return study
 END
 }
 
-# Values of the rows of a ledger, in order; what one process and another leave is compared so.
-rows() {
-  "$LATEWOOD" run "$1" --ledger "$2" --json >out 2>err
-  code=$?
-  sed -e 's/"ledger": .*//' out
-}
-
 # ---- the same content for any number of processes
 
 study 300 'at_most = "8 %", share = "90 %"' '' >study.lua
