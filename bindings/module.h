@@ -32,7 +32,7 @@
 #define LW__LUA_RIG_METHODS(X)                                                                     \
     X(plant) X(connect) X(source) X(value) X(adc) X(dac) X(pwm) X(loop)                                   \
     X(core) X(task) X(bus) X(frame) X(comparator) X(trip) X(encoder) X(noise)                                          \
-    X(freeze) X(describe) X(slices) X(start) X(run) X(close)
+    X(freeze) X(describe) X(timed) X(slices) X(start) X(run) X(close)
 #define LW__LUA_RUN_METHODS(X)                                                                     \
     X(advance) X(drain) X(finish) X(restart) X(status) X(now) X(instants) X(value) X(metric)       \
     X(metrics) X(row) X(record) X(csv) X(json) X(block) X(close)

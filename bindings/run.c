@@ -478,7 +478,7 @@ static int add_line(void *context, const char *text)
 }
 
 // Options are those of rig:run; without a table a second is described.
-int lw__lua_rig_describe(lua_State *L)
+const lw_frozen *lw__lua_rig_frozen(lua_State *L, const char *what)
 {
     options p = {0, 1, 0};
     if (lua_isnoneornil(L, 2)) {
@@ -487,11 +487,16 @@ int lw__lua_rig_describe(lua_State *L)
         lua_pushnumber(L, DESCRIBED_SECONDS);
         lua_setfield(L, 2, "lasts");
     }
-    lw__lua_run *box = freeze(L, "describe", &p);
+    return freeze(L, what, &p)->frozen;
+}
+
+int lw__lua_rig_describe(lua_State *L)
+{
+    const lw_frozen *frozen = lw__lua_rig_frozen(L, "describe");
     lines counted = {NULL, 0, 0}, kept = {NULL, 0, 0};
-    lw_frozen_describe(box->frozen, add_line, &counted);
+    lw_frozen_describe(frozen, add_line, &counted);
     kept.text = lw__lua_room(L, counted.n_bytes, 1);
-    lw_frozen_describe(box->frozen, add_line, &kept);
+    lw_frozen_describe(frozen, add_line, &kept);
     lua_createtable(L, kept.n_lines, 0);
     const char *at = kept.text;
     for (int i = 1; i <= kept.n_lines; i++) {

@@ -23,6 +23,8 @@ typedef struct lw__lua_run {
 
 // The run at index 1, open.
 lw__lua_run *lw__lua_run_self(lua_State *L);
+// The rig at 1, frozen with the options at 2 (none: for a second); held by the stack's top.
+const lw_frozen *lw__lua_rig_frozen(lua_State *L, const char *what);
 // Place of a name in the records (metrics); raises with the nearest one.
 int lw__lua_record_place(lua_State *L, const lw__lua_run *run, int index);
 int lw__lua_metric_place(lua_State *L, const lw__lua_run *run, int index);

@@ -23,6 +23,7 @@ BEGIN {
     for (j = 1; j <= n; j++) owner[name[j]] = "base"
     owner["rig"] = "io"     # definitions of converters and loops, which io reads
     owner["watch"] = "run"
+    owner["timed"] = "theory"
     owner["ready"] = owner["modes"] = owner["fit"] = "plant"
     owner["sensor"] = "io"  # definitions of encoders, filters before adcs, noise
     owner["event"] = owner["pwm"] = "io"    # definitions of comparators and trips

@@ -17,6 +17,7 @@ local own_metric = require "latewood.own_metric"
 local report = require "latewood.report"
 local starter = require "latewood.starter"
 local study = require "latewood.study"
+local timed = require "latewood.timed"
 local trial = require "latewood.trial"
 local words = require "latewood.words"
 
@@ -322,6 +323,7 @@ local function describe_variant(s, pairs_, variant)
   trial.checked(s, rig.freeze, rig, { lasts = s.lasts, metrics = metrics,
     record = own_metric.records(s, trial.records(s)) })
   local lines = rig:describe { lasts = s.lasts, metrics = metrics }
+  for _, line in ipairs(timed.describe(rig, { lasts = s.lasts })) do lines[#lines + 1] = line end
   for _, line in ipairs(own_metric.describe(s)) do lines[#lines + 1] = line end
   return lines
 end
