@@ -24,7 +24,9 @@ function timed.describe(rig, options)
   local lines = {}
   for _, core in ipairs(rig:timed(options)) do
     local head = ('worst response times on "%s", computed from the rig'):format(core.name)
-    if not core.analysed then head = ('no response times are computed on "%s"'):format(core.name) end
+    if not core.analysed then
+      head = ('no response times are computed on "%s"'):format(core.name)
+    end
     lines[#lines + 1] = head
     for _, t in ipairs(core.tasks) do lines[#lines + 1] = task_line(t, core.schedulable) end
     for _, note in ipairs(core.notes) do lines[#lines + 1] = "  " .. note end
