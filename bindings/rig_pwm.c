@@ -34,6 +34,13 @@ static const lw__lua_field pwm_fields[] = {
     OPTIONAL(pwm, def.current, "current", FIELD_TEXT, NULL),
     OPTIONAL(pwm, def.start, "start", FIELD_NUMBER, NULL),
     OTHER("missed"),
+    OTHER("peak"),
+};
+
+static const lw__lua_field peak_fields[] = {
+    REQUIRED(lw_pwm_peak, current, "current", FIELD_TEXT, NULL),  OTHER("wanted"),
+    OPTIONAL(lw_pwm_peak, slope, "slope", FIELD_NUMBER, NULL),    OTHER("blanking"),
+    OPTIONAL(lw_pwm_peak, most, "most_duty", FIELD_NUMBER, NULL),
 };
 
 static double share_or(const lw__lua_reader *r, const char *field, double period)
@@ -66,6 +73,30 @@ static void read_missed(const lw__lua_reader *r, lw_pwm_def *def)
         return;
     def->on_missed = 1;
     def->missed = strcmp(text, "zero") == 0 ? 0 : lw__lua_number(r, "missed", -1, NULL);
+}
+
+// peak = { current, wanted, slope, blanking, most_duty }
+static void read_peak(const lw__lua_reader *r, lw_pwm_peak *peak, double period)
+{
+    lua_State *L = r->L;
+    int type = lw__lua_push_field(r, "peak");
+    if (type == LUA_TNIL)
+        return;
+    if (type != LUA_TTABLE)
+        lw__lua_bad_type(r, "peak", -1, "a table with current and wanted");
+    lw__lua_reader inner = *r;
+    inner.table = lua_gettop(L);
+    inner.subject = lua_pushfstring(L, "%s: peak", r->subject);
+    LW__LUA_FIELDS(&inner, peak_fields, 0, peak);
+    peak->blanking = share_or(&inner, "blanking", period);
+    type = lw__lua_push_field(&inner, "wanted");
+    if (type == LUA_TNIL)
+        lw__lua_bad(&inner, "wanted is missing; a number or a signal is wanted");
+    const char *text = type == LUA_TSTRING ? lua_tostring(L, -1) : "";
+    if (text[0] != 0 && strchr("0123456789.+-", text[0]) == NULL)
+        peak->wanted_of = lw__lua_field_text(&inner, "wanted", -1);
+    else
+        peak->wanted = lw__lua_number(&inner, "wanted", -1, NULL);
 }
 
 // Note the carrier for what is timed by it.
@@ -102,6 +133,7 @@ int lw__lua_rig_pwm(lua_State *L)
     p.def.dead_time = share_or(&r, "dead_time", period);
     read_supply(&r, &p.def);
     read_missed(&r, &p.def);
+    read_peak(&r, &p.def.peak, period);
     lw_status status = lw_rig_add_pwm(rig->it, &p.def, &err);
     if (status == LW_OK)
         note_carrier(L, &p.def);

@@ -366,16 +366,9 @@ END_TEST
 
 // ---- blocks, watching, bad definitions
 
-START_TEST(runs_side_by_side_are_runs_alone)
+static void same_bytes_side_by_side(const rig_of *r)
 {
-    rig_of r = usual(0.4);
-    r.pwm.shape = LW_PWM_CENTRE;
-    r.pwm.bridge = LW_PWM_UNIPOLAR;
-    r.pwm.dead_time = 1e-6;
-    r.pwm.current = "coil.current";
-    r.written = 0.2;
-    r.write_at = 20 * US;
-    lw_frozen *z = freeze_rig(build(&r), NULL, 10 * MS);
+    lw_frozen *z = freeze_rig(build(r), NULL, 10 * MS);
     lw_run *wide = NULL, *alone = NULL;
     OK(lw_run_new(z, 5, 1, 0, &wide, e));
     OK(lw_run_new(z, 1, 1, 0, &alone, e));
@@ -392,6 +385,39 @@ START_TEST(runs_side_by_side_are_runs_alone)
     lw_run_free(wide);
     lw_run_free(alone);
     lw_frozen_free(z);
+}
+
+START_TEST(runs_side_by_side_are_runs_alone)
+{
+    rig_of r = usual(0.4);
+    r.pwm.shape = LW_PWM_CENTRE;
+    r.pwm.bridge = LW_PWM_UNIPOLAR;
+    r.pwm.dead_time = 1e-6;
+    r.pwm.current = "coil.current";
+    r.written = 0.2;
+    r.write_at = 20 * US;
+    same_bytes_side_by_side(&r);
+    r = usual(0);
+    r.pwm.peak = (lw_pwm_peak){"coil.current", NULL, 12, 3e-7, 4e3, 0.9};
+    same_bytes_side_by_side(&r);
+}
+END_TEST
+
+// What is recorded and measured changes no other cell: the search for peaks comes after each
+// change of the group, told or not.
+START_TEST(watching_a_peak_changes_nothing)
+{
+    rig_of r = usual(0);
+    r.pwm.peak = (lw_pwm_peak){"coil.current", NULL, 12, 3e-7, 4e3, 0.9};
+    lw_tick from = 2 * MS, until = 5 * MS;
+    double bare[2], got[2];
+    sampled(&r, "coil.current", until, 2, bare);
+    ck_assert(metric_of(&r, LW_METRIC_MEAN, "bridge.duty", from, until) > 0);
+    sampled(&r, "coil.current", until, 2, got);
+    ck_assert(memcmp(bare, got, sizeof got) == 0);
+    double fine[501]; // read at many instants in between
+    sampled(&r, "coil.current", until / 500, 501, fine);
+    ck_assert(fine[500] == bare[1]);
 }
 END_TEST
 
@@ -447,6 +473,7 @@ int main(void)
     tcase_add_test(c, pulses_have_the_steps_of_the_timer);
     tcase_add_test(c, dead_time_takes_its_share);
     tcase_add_test(c, runs_side_by_side_are_runs_alone);
+    tcase_add_test(c, watching_a_peak_changes_nothing);
     tcase_add_test(c, bad_definitions_are_named);
     suite_add_tcase(suite, c);
     return run_suite(suite);

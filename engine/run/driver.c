@@ -137,6 +137,9 @@ LW__INLINE void perform(LW__CONTEXT, int op)
     case LW__OP_LATCH_TRIP:
         op_latch_trip(LW__HERE, o->thing);
         return;
+    case LW__OP_PWM_SEARCH:
+        lw__pwm_search(LW__HERE, o->thing);
+        return;
     case LW__OP_SEARCH:
         op_search(LW__HERE, o->thing);
         return;

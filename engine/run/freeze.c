@@ -79,6 +79,7 @@ static lw_status freeze_parts(lw__freezer *w)
     LW__TRY(place_plants(w));
     LW__TRY(lw__freeze_clocks(w));
     LW__TRY(lw__freeze_event_cells(w));
+    LW__TRY(lw__freeze_pwm_cells(w));
     LW__TRY(lw__freeze_converters(w));
     LW__TRY(lw__freeze_pwms(w));
     LW__TRY(lw__freeze_loops(w));

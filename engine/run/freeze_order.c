@@ -185,6 +185,8 @@ static void list_ops(const lw_frozen *z, order *o)
         add_op(o, LW__OP_PWM_STRETCH, 2, place, i, 0);
         add_op(o, LW__OP_PWM_EDGE, 1, place, i, 0);
         add_op(o, LW__OP_PWM_WRITTEN, 1, place, i, 0);
+        if (z->pwms[i].by_peak)
+            add_op(o, LW__OP_PWM_SEARCH, 8, place, i, 0);
     }
     for (int i = 0; i < z->n_loops; i++) {
         int place = z->loops[i].item->place;
@@ -217,6 +219,7 @@ static const void *thing_of(const lw_frozen *z, const lw__op *op)
     case LW__OP_PWM_STRETCH:
     case LW__OP_PWM_EDGE:
     case LW__OP_PWM_WRITTEN:
+    case LW__OP_PWM_SEARCH:
         return &z->pwms[op->index];
     case LW__OP_ARRIVE:
     case LW__OP_STEP:
@@ -302,6 +305,19 @@ static lw_status timers_of_plants(lw__freezer *w)
     return LW_OK;
 }
 
+// Peak-current control is told of changes of the current's group and of what is wanted.
+static lw_status order_of_peak(lw__freezer *w, int index)
+{
+    lw__pwm *m = &w->z->pwms[index];
+    const char *wanted = m->item->def.peak.wanted_of;
+    if (!m->by_peak)
+        return LW_OK;
+    m->search_op = op_number(w->z, LW__OP_PWM_SEARCH, index, 0);
+    LW__TRY(lw__set_put(w, &w->z->groups[m->measured.at.index].observers, m->search_op));
+    lw__set *set = wanted != NULL ? lw__signal_observers(w->z, wanted) : NULL;
+    return set != NULL ? lw__set_put(w, set, m->search_op) : LW_OK;
+}
+
 static lw_status timers_of_parts(lw__freezer *w)
 {
     lw_frozen *z = w->z;
@@ -323,6 +339,7 @@ static lw_status timers_of_parts(lw__freezer *w)
             LW__TRY(make_due(w, m->edge[k], LW__OP_PWM_EDGE, i, 0));
         dac->acts_at_once = m->item->def.reload == LW_PWM_AT_ONCE;
         LW__TRY(lw__set_put(w, &dac->written, op_number(z, LW__OP_PWM_WRITTEN, i, 0)));
+        LW__TRY(order_of_peak(w, i));
     }
     for (int i = 0; i < z->n_loops; i++)
         LW__TRY(make_due(w, z->loops[i].timer, LW__OP_ARRIVE, i, 0));

@@ -3,6 +3,7 @@
 #include "run/freezer.h"
 
 #include "run/comparator.h"
+#include "run/pwm.h"
 #include "run/record.h"
 #include "run/schedule.h"
 
@@ -95,6 +96,13 @@ static lw_status recorded_twice(lw__freezer *w, const lw_record_def *def)
                        "record of \"%s\": its events are recorded already", def->signal);
 }
 
+// "bridge.level": the edges of a pwm. Its own name is of what it takes over, as of a dac.
+static int is_edges(const lw__pwm *m, const char *name)
+{
+    size_t n = strlen(m->name);
+    return strncmp(m->name, name, n) == 0 && strcmp(name + n, ".level") == 0;
+}
+
 static lw_status event_record(lw__freezer *w, lw__record *r, int record, const lw_record_def *def)
 {
     lw_frozen *z = w->z;
@@ -130,6 +138,14 @@ static lw_status event_record(lw__freezer *w, lw__record *r, int record, const l
             if (z->comparators[i].log >= 0)
                 return recorded_twice(w, def);
             z->comparators[i].log = record;
+            return named_record(w, r, 3, columns);
+        }
+    for (int i = 0; i < z->n_pwms; i++)
+        if (is_edges(&z->pwms[i], def->signal)) {
+            static const char *const columns[] = {"time", "level", "duty"};
+            if (z->pwms[i].log >= 0)
+                return recorded_twice(w, def);
+            z->pwms[i].log = record;
             return named_record(w, r, 3, columns);
         }
     return lw__fail_at(

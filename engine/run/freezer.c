@@ -140,12 +140,12 @@ static int dac_signal(const lw__dac *d, const char *rest, lw_signal *out)
     return 0;
 }
 
-// "bridge.level": the output of the pwm that a dac came with.
+// "bridge.level", "bridge.duty": of the pwm that a dac came with.
 static int pwm_signal(const lw_frozen *z, const lw__dac *d, const char *rest, lw_signal *out)
 {
     for (int i = 0; i < z->n_pwms; i++)
-        if (z->pwms[i].dac == d && same(rest, "level")) {
-            *out = cell(z->pwms[i].level);
+        if (z->pwms[i].dac == d && (same(rest, "level") || same(rest, "duty"))) {
+            *out = cell(same(rest, "level") ? z->pwms[i].level : z->pwms[i].duty);
             return 1;
         }
     return 0;

@@ -290,6 +290,7 @@ typedef enum lw__op_kind {
     LW__OP_READ,         // phase 7: a task reads at its release
     LW__OP_POINTS,       // phase 7: points of a core's job with no work before them
     LW__OP_SEARCH,       // phase 8: where a comparator next comes to its level
+    LW__OP_PWM_SEARCH,   // phase 8: where a current next comes to its peak
     LW__OP_TRACK,        // phase 8: metrics
     LW__OP_RECORD        // phase 8
 } lw__op_kind;

@@ -137,6 +137,8 @@ static inline void force_dac(LW__CONTEXT, const lw__dac *d, double to)
 static inline void force_pwm(LW__CONTEXT, const lw__pwm *m, double to)
 {
     LW__F(m->level) = to;
+    if (m->log >= 0)
+        lw__table_add(s, m->log, (double[]){lw__seconds(s->now), to, LW__F(m->duty)});
     lw__tell(p, &m->dac->observers, N);
     drive(LW__HERE, &m->drives, to);
 }

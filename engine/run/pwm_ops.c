@@ -3,6 +3,7 @@
 //   stretch  phase 2, after the latch: legs of a new stretch, their edges planned
 //   edge     phase 1: a leg switches
 //   written  phase 1: a value that acts at once
+//   search   phase 8: where the current next comes to its peak
 
 #include "run/pwm.h"
 
@@ -46,8 +47,17 @@ static void pwm_level(LW__CONTEXT, const lw__pwm *m, double level)
     if (m->tripped >= 0 && LW__I(m->tripped) > 0) // a trip holds it
         return;
     LW__F(m->level) = level;
+    if (m->log >= 0)
+        lw__table_add(s, m->log, (double[]){lw__seconds(s->now), level, LW__F(m->duty)});
     lw__tell(p, &m->dac->observers, N);
     drive(LW__HERE, &m->drives, level);
+}
+
+//   search   phase 8: where the current next comes to its peak
+static void note_duty(LW__CONTEXT, const lw__pwm *m, double share)
+{
+    LW__F(m->duty) = share;
+    lw__tell(p, &m->dac->observers, N);
 }
 
 void lw__pwm_legs(LW__CONTEXT, const lw__pwm *m)
@@ -144,6 +154,44 @@ static void pwm_reload(LW__CONTEXT, const lw__pwm *m, int64_t k)
         op_latch(LW__HERE, m->dac);
 }
 
+//   search   phase 8: where the current next comes to its peak
+// Peak-current control: on at the valley, off where the current comes to what is wanted of it. The
+// search runs after any change of the current's group or of the wanted current, as that of a
+// comparator does, and looks as far as the group's grid or the greatest share.
+
+// A leg that is still high has been so for a whole period.
+static void peak_begins(LW__CONTEXT, const lw__pwm *m, int64_t k)
+{
+    if (LW__I(m->state) != 0)
+        note_duty(LW__HERE, m, 1);
+    int changed = k == 0 || m->supply.at.kind != LW__SIGNAL_CONSTANT;
+    changed |= leg_moves(LW__HERE, m, 0, 1);
+    if (changed)
+        lw__pwm_legs(LW__HERE, m);
+    lw__make_due(p, m->search_op, N);
+}
+
+void lw__pwm_search(LW__CONTEXT, const lw__pwm *m)
+{
+    (void)p;
+    (void)N;
+    if (LW__I(m->count) == 0 || LW__I(m->state) == 0)
+        return;
+    const lw_pwm_peak *peak = &m->item->def.peak;
+    int64_t k = LW__I(m->count) - 1;
+    lw_tick began = stretch_at(m, k), next = stretch_at(m, k + 1);
+    lw_tick last = began + (lw_tick)floor(peak->most * (double)(next - began) + 0.5);
+    lw_tick from = began + m->blanking, grid = lw__group_next(s, m->condition.group);
+    lw__question ask = {.side = 1,
+                        .offset = -peak->slope * lw__seconds(s->now - began),
+                        .slope = -peak->slope,
+                        .from = from > s->now ? from : s->now + 1,
+                        .until = grid < last ? grid : last};
+    lw__crossing found = lw__crossing_next(s, &m->condition, &ask);
+    lw_tick off = found.tick < last ? found.tick : last;
+    LW__I(s->z->due + m->edge[0]) = off < next ? off : LW_NEVER;
+}
+
 void lw__pwm_stretch(LW__CONTEXT, const lw__pwm *m)
 {
     int64_t k = LW__I(m->count);
@@ -151,6 +199,11 @@ void lw__pwm_stretch(LW__CONTEXT, const lw__pwm *m)
     lw_tick began = s->now, next = stretch_at(m, k + 1);
     LW__I(m->count) = k + 1;
     LW__I(s->z->due + m->timer) = next;
+    if (m->by_peak) {
+        peak_begins(LW__HERE, m, k);
+        return;
+    }
+    note_duty(LW__HERE, m, leg_share(s, m, 0, W, L));
     if (m->item->def.averaged) {
         lw__pwm_mean(LW__HERE, m);
         return;
@@ -166,17 +219,18 @@ void lw__pwm_edge(LW__CONTEXT, const lw__pwm *m)
 {
     int changed = 0;
     int64_t stretch = LW__I(m->count) - 1;
+    lw_tick began = stretch_at(m, stretch), length = stretch_at(m, stretch + 1) - began;
+    if (m->by_peak)
+        note_duty(LW__HERE, m, (double)(s->now - began) / (double)length);
     for (int k = 0; k < m->n_legs; k++) {
         if (LW__I(s->z->due + m->edge[k]) != s->now)
             continue;
         int waited = LW__I(m->wanted + k) != LW__I(m->state + k);
         int high = waited ? (int)LW__I(m->wanted + k) : !high_first(m, stretch);
         changed |= leg_moves(LW__HERE, m, k, high);
-        lw_tick began = stretch_at(m, stretch);
         if (waited && (high == high_first(m, stretch))) { // what the dead time kept waiting
             LW__I(m->moved + k) = 0;
-            changed |= plan_leg(LW__HERE, m, k, began, stretch_at(m, stretch + 1) - began,
-                                high_first(m, stretch));
+            changed |= plan_leg(LW__HERE, m, k, began, length, high_first(m, stretch));
         }
     }
     if (changed)
@@ -187,6 +241,7 @@ void lw__pwm_written(LW__CONTEXT, const lw__pwm *m)
 {
     if (LW__I(m->count) == 0)
         return; // the first stretch takes it up
+    note_duty(LW__HERE, m, leg_share(s, m, 0, W, L));
     if (m->item->def.averaged) {
         lw__pwm_mean(LW__HERE, m);
         return;

@@ -11,12 +11,35 @@
 
 lw_pwm_def lw_pwm_default(void)
 {
-    return (lw_pwm_def){.carrier = {0, 1}, .supply = 1};
+    return (lw_pwm_def){.carrier = {0, 1}, .supply = 1, .peak = {.most = 1}};
 }
 
 static lw_status wrong(const lw__subject *s, const char *text)
 {
     return lw__fail_at(s->origin, s->err, LW_ERR_ARGUMENT, "pwm \"%s\": %s", s->name, text);
+}
+
+static lw_status check_peak(const lw__subject *s, const lw_pwm_def *def)
+{
+    const lw_pwm_peak *peak = &def->peak;
+    if (peak->current == NULL)
+        return LW_OK;
+    if (def->averaged || def->shape != LW_PWM_TRAILING || def->bridge == LW_PWM_UNIPOLAR)
+        return wrong(s, "peak: a switched pwm of trailing shape, half or bipolar, is wanted");
+    if (def->counts > 0 || def->least_pulse > 0 || def->dead_time > 0 || def->on_missed ||
+        def->start != 0 || def->reload != LW_PWM_VALLEY)
+        return wrong(s, "peak: counts, least_pulse, dead_time, start, missed and reload have no "
+                        "place beside it");
+    if (peak->wanted_of == NULL)
+        LW__TRY(lw__check_finite(s, "peak.wanted", peak->wanted));
+    LW__TRY(lw__check_at_least_0(s, "peak.slope", peak->slope));
+    LW__TRY(lw__check_time(s, "peak.blanking", peak->blanking));
+    if (!(peak->most > 0 && peak->most <= 1))
+        return lw__bad_field(s, "peak.most_duty", peak->most, "above 0 and at most 1 is wanted");
+    if (peak->blanking >= peak->most * lw_period_seconds(def->carrier))
+        return lw__bad_field(s, "peak.blanking", peak->blanking,
+                             "less than most_duty of a period is wanted");
+    return LW_OK;
 }
 
 static lw_status check_pwm(const lw__subject *s, const lw_pwm_def *def)
@@ -46,6 +69,7 @@ static lw_status check_pwm(const lw__subject *s, const lw_pwm_def *def)
                                              : "dead_time: current is missing; its sign says which "
                                                "diode conducts");
     LW__TRY(lw__check_finite(s, "start", def->start));
+    LW__TRY(check_peak(s, def));
     return def->on_missed ? lw__check_finite(s, "missed", def->missed) : LW_OK;
 }
 
@@ -76,6 +100,8 @@ lw_status lw_rig_add_pwm(lw_rig *rig, const lw_pwm_def *def, lw_error *err)
     item.def.to = lw__copy_text(&c, def->to);
     item.def.supply_of = lw__copy_text(&c, def->supply_of);
     item.def.current = lw__copy_text(&c, def->current);
+    item.def.peak.current = lw__copy_text(&c, def->peak.current);
+    item.def.peak.wanted_of = lw__copy_text(&c, def->peak.wanted_of);
     lw__pwm_item *at = lw__room((void **)&rig->pwms, rig->n_pwms, sizeof item);
     if (at == NULL || c.failed)
         return lw__no_room(def->origin, err);

@@ -14,8 +14,14 @@
 // (a period; of a triangle, half of one) a leg switches once at most: a value written at once that
 // would have switched already acts now, one that would switch back acts in the next stretch.
 //
+// Peak-current control: the leg goes high at each valley, and low at the first tick at or after the
+// instant at which current >= wanted - slope t, t counted from the valley; not within the blanking
+// time (what is true at its end switches then), never within the first tick, and at the latest at
+// the greatest share. Nobody writes to it.
+//
 // Signals: those of a dac ("bridge", "bridge.asked", "bridge.saturated", ...: what was asked for
-// and taken over) and "bridge.level", the output itself.
+// and taken over), "bridge.level", the output itself, and "bridge.duty": the share for which the
+// (first) leg is high, before dead time; under peak-current control that of the last pulse.
 #ifndef LATEWOOD_PWM_H
 #define LATEWOOD_PWM_H
 
@@ -38,6 +44,15 @@ typedef enum lw_pwm_reload {
     LW_PWM_AT_ONCE
 } lw_pwm_reload;
 
+typedef struct lw_pwm_peak {
+    const char *current;   // signal of a plant; NULL: no peak-current control
+    const char *wanted_of; // signal, read all the time; NULL: the number
+    double wanted;
+    double blanking; // [s]
+    double slope;    // of the compensation, at least 0 [unit of current / s]
+    double most;     // greatest share, above 0, at most 1 (default 1)
+} lw_pwm_peak;
+
 typedef struct lw_pwm_def {
     const char *origin, *name;
     const char *to; // plant input
@@ -58,6 +73,7 @@ typedef struct lw_pwm_def {
     double start;          // as written
     int on_missed;         // as of a dac
     double missed;
+    lw_pwm_peak peak; // trailing; half or bipolar
 } lw_pwm_def;
 
 LW_API lw_pwm_def lw_pwm_default(void);
