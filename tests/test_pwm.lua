@@ -208,11 +208,13 @@ t.test("what_does_not_fit_is_refused_by_name", function()
   refused('pwm "bridge": peak: wanted is missing', { peak = { current = "coil.current" } })
   refused("a switched pwm of trailing shape", { peak = peak, shape = "centre" })
   refused("have no place beside it", { peak = peak, counts = 100 })
-  refused("peak.most_duty is 1.5", { peak = { current = "coil.current", wanted = 3, most_duty = 1.5 } })
+  refused("peak.most_duty is 1.5",
+    { peak = { current = "coil.current", wanted = 3, most_duty = 1.5 } })
   refused("peak.slope is -1", { peak = { current = "coil.current", wanted = 3, slope = -1 } })
   refused("less than most_duty of a period",
     { peak = { current = "coil.current", wanted = 3, blanking = "60 us" } })
-  refused("peak.current is to be a signal of a plant", { peak = { current = "bridge", wanted = 3 } })
+  refused("peak.current is to be a signal of a plant",
+    { peak = { current = "bridge", wanted = 3 } })
   refused('nearest "coil.current"', { peak = { current = "coil.curent", wanted = 3 } })
   refused('"loop" writes to it', { peak = peak }, function(rig)
     rig:adc { "sample", of = "coil.current", at = "bridge" }
