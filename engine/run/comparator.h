@@ -48,6 +48,13 @@ lw_status lw__freeze_event_cells(lw__freezer *w);
 lw_status lw__freeze_events(lw__freezer *w);
 // Cells at time zero.
 void lw__events_start(lw__lane *s);
+// Operations (event_ops.c).
+void lw__event_search(LW__CONTEXT, const lw__comparator *c);
+void lw__event_cross(LW__CONTEXT, const lw__comparator *c);
+void lw__event_edge(LW__CONTEXT, const lw__comparator *c);
+void lw__event_trip(LW__CONTEXT, const lw__trip *t);
+void lw__event_release(LW__CONTEXT, const lw__trip *t);
+void lw__event_latch(LW__CONTEXT, const lw__trip *t);
 void lw__events_describe(const lw_frozen *z, void (*say)(void *context, const char *text),
                          void *context);
 

@@ -21,12 +21,12 @@
 // 4. What an operation does depends on cells, the frozen rig and the present tick only.
 
 #include "run/driver.h"
+#include "run/comparator.h"
 #include "run/dash.h"
 
 #include "run/op_adc.h"
 #include "run/op_cpu.h"
 #include "run/op_dac.h"
-#include "run/op_event.h"
 #include "run/op_group.h"
 #include "run/op_loop.h"
 #include "run/op_signal.h"
@@ -123,25 +123,25 @@ LW__INLINE void perform(LW__CONTEXT, int op)
         op_sample(LW__HERE, o->thing);
         return;
     case LW__OP_CROSS:
-        op_cross(LW__HERE, o->thing);
+        lw__event_cross(LW__HERE, o->thing);
         return;
     case LW__OP_EDGE:
-        op_edge_arrives(LW__HERE, o->thing);
+        lw__event_edge(LW__HERE, o->thing);
         return;
     case LW__OP_TRIP:
-        op_trip(LW__HERE, o->thing);
+        lw__event_trip(LW__HERE, o->thing);
         return;
     case LW__OP_RELEASE_TRIP:
-        op_release_trip(LW__HERE, o->thing);
+        lw__event_release(LW__HERE, o->thing);
         return;
     case LW__OP_LATCH_TRIP:
-        op_latch_trip(LW__HERE, o->thing);
+        lw__event_latch(LW__HERE, o->thing);
         return;
     case LW__OP_PWM_SEARCH:
         lw__pwm_search(LW__HERE, o->thing);
         return;
     case LW__OP_SEARCH:
-        op_search(LW__HERE, o->thing);
+        lw__event_search(LW__HERE, o->thing);
         return;
     case LW__OP_LOGICAL:
         op_logical(LW__HERE, o->thing);

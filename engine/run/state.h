@@ -65,42 +65,42 @@ LW__INLINE lw_tick lw__grid_at(lw_period period, lw_tick offset, int64_t k)
     return lw_period_at(period, offset, k);
 }
 
+// Sets of more than one word, apart: these are not worth inlining everywhere.
+void lw__words_make_due(lw__pass *p, int op);
+void lw__words_make_all_due(lw__pass *p, const lw__set *set, int N);
+void lw__words_tell(lw__pass *p, const lw__set *observers, int N);
+
 // Make one operation due; at or before the one at work it waits for the next pass.
 LW__INLINE void lw__make_due(lw__pass *p, int op, int N)
 {
     uint64_t bit = UINT64_C(1) << (op & 63);
-    if (N == 1) {
-        p->due |= op > p->op ? bit : 0;
-        p->next |= op > p->op ? 0 : bit;
-    } else if (op > p->op) {
-        p->due_words[op >> 6] |= bit;
-    } else {
-        p->next_words[op >> 6] |= bit;
+    if (N != 1) {
+        lw__words_make_due(p, op);
+        return;
     }
+    p->due |= op > p->op ? bit : 0;
+    p->next |= op > p->op ? 0 : bit;
 }
 
 // Make a set due, likewise.
 LW__INLINE void lw__make_all_due(lw__pass *p, const lw__set *set, int N)
 {
-    if (N == 1) {
-        uint64_t later = ~UINT64_C(1) << p->op; // p->op is at least 0 here
-        p->due |= set->first & later;
-        p->next |= set->first & ~later;
+    if (N != 1) {
+        lw__words_make_all_due(p, set, N);
         return;
     }
-    for (int w = 0; w < N && set->words != NULL; w++)
-        for (uint64_t bits = set->words[w]; bits != 0; bits &= bits - 1)
-            lw__make_due(p, w * 64 + __builtin_ctzll(bits), N);
+    uint64_t later = ~UINT64_C(1) << p->op; // p->op is at least 0 here
+    p->due |= set->first & later;
+    p->next |= set->first & ~later;
 }
 
 // Observers come after everything else, so they are always later.
 LW__INLINE void lw__tell(lw__pass *p, const lw__set *observers, int N)
 {
-    if (N == 1)
-        p->due |= observers->first;
+    if (N != 1)
+        lw__words_tell(p, observers, N);
     else
-        for (int w = 0; w < N && observers->words != NULL; w++)
-            p->due_words[w] |= observers->words[w];
+        p->due |= observers->first;
 }
 
 LW__INLINE void lw__end_lane(lw__lane *s, lw_status status, const char *what, const char *text)

@@ -1,19 +1,15 @@
-// Operations of comparators and trips. Part of the driver.
+// Operations of comparators and trips, compiled once for any width.
 //
 //   search   phase 8, after any change of the group or of the level: where is the next crossing?
 //   cross    phase 0: it is here; the anchor moves, the output changes or is on its way
 //   arrive   phase 0: a delayed change reaches the output
 //   trip     phase 1: forces an output; release gives it back
-//
-// Rare next to the others, and not inlined for each context.
-#ifndef LATEWOOD_RUN_OP_EVENT_H
-#define LATEWOOD_RUN_OP_EVENT_H
 
 #include "run/comparator.h"
 #include "run/op_dac.h"
 #include "run/pwm.h"
 
-static inline void op_search(LW__CONTEXT, const lw__comparator *c)
+void lw__event_search(LW__CONTEXT, const lw__comparator *c)
 {
     (void)p;
     (void)N;
@@ -29,14 +25,13 @@ static inline void op_search(LW__CONTEXT, const lw__comparator *c)
     LW__F(c->found) = lw__seconds(s->now) + next.since;
 }
 
-static inline void log_edge(lw__lane *s, const lw__comparator *c, double value, double crossed)
+static void log_edge(lw__lane *s, const lw__comparator *c, double value, double crossed)
 {
     if (c->log >= 0)
         lw__table_add(s, c->log, (double[]){lw__seconds(s->now), value, crossed});
 }
 
-static inline void comparator_output(LW__CONTEXT, const lw__comparator *c, int value,
-                                     double crossed)
+static void comparator_output(LW__CONTEXT, const lw__comparator *c, int value, double crossed)
 {
     lw_edge edge = c->item->def.edge;
     LW__F(c->out) = value;
@@ -48,7 +43,7 @@ static inline void comparator_output(LW__CONTEXT, const lw__comparator *c, int v
 }
 
 // The first instant of a run: what stands beyond the level from the start is no crossing.
-static inline void comparator_begins(lw__lane *s, const lw__comparator *c, int W, int L)
+static void comparator_begins(lw__lane *s, const lw__comparator *c, int W, int L)
 {
     int beyond = c->item->def.start;
     if (beyond < 0)
@@ -59,7 +54,7 @@ static inline void comparator_begins(lw__lane *s, const lw__comparator *c, int W
 }
 
 // More edges than a circuit would make while hardly any time passes.
-static inline void count_edge(lw__lane *s, const lw__comparator *c, int W, int L)
+static void count_edge(lw__lane *s, const lw__comparator *c, int W, int L)
 {
     int quick = LW__I(c->n_events) > 0 && s->now - LW__I(c->crossed_at) <= LW__CHATTER_TIME;
     LW__I(c->in_a_row) = quick ? LW__I(c->in_a_row) + 1 : 0;
@@ -71,7 +66,7 @@ static inline void count_edge(lw__lane *s, const lw__comparator *c, int W, int L
                      "give it a hysteresis, a delay or a blanking time");
 }
 
-static inline void queue_edge(lw__lane *s, const lw__comparator *c, int W, int L)
+static void queue_edge(lw__lane *s, const lw__comparator *c, int W, int L)
 {
     int64_t n = LW__I(c->count), slot = (LW__I(c->head) + n) % LW__EDGES_IN_FLIGHT;
     if (n == LW__EDGES_IN_FLIGHT) {
@@ -85,7 +80,7 @@ static inline void queue_edge(lw__lane *s, const lw__comparator *c, int W, int L
         LW__I(s->z->due + c->delay_timer) = s->now + c->delay;
 }
 
-static inline void op_cross(LW__CONTEXT, const lw__comparator *c)
+void lw__event_cross(LW__CONTEXT, const lw__comparator *c)
 {
     LW__I(s->z->due + c->timer) = LW_NEVER;
     lw__make_due(p, c->search_op, N);
@@ -104,7 +99,7 @@ static inline void op_cross(LW__CONTEXT, const lw__comparator *c)
         comparator_output(LW__HERE, c, (int)LW__I(c->beyond), LW__F(c->found));
 }
 
-static inline void op_edge_arrives(LW__CONTEXT, const lw__comparator *c)
+void lw__event_edge(LW__CONTEXT, const lw__comparator *c)
 {
     int64_t head = LW__I(c->head);
     double crossed = LW__F(c->queue_at + head);
@@ -116,7 +111,7 @@ static inline void op_edge_arrives(LW__CONTEXT, const lw__comparator *c)
 
 // ---- trips
 
-static inline void log_forced(lw__lane *s, const lw__dac *d, double to, int W, int L)
+static void log_forced(lw__lane *s, const lw__dac *d, double to, int W, int L)
 {
     if (d->log >= 0)
         lw__table_add(s, d->log,
@@ -124,7 +119,7 @@ static inline void log_forced(lw__lane *s, const lw__dac *d, double to, int W, i
                                  (double)NAN, LW__F(d->saturated)});
 }
 
-static inline void force_dac(LW__CONTEXT, const lw__dac *d, double to)
+static void force_dac(LW__CONTEXT, const lw__dac *d, double to)
 {
     LW__F(d->held) = to;
     LW__F(d->code) = (double)NAN;
@@ -134,7 +129,7 @@ static inline void force_dac(LW__CONTEXT, const lw__dac *d, double to)
     drive(LW__HERE, &d->drives, to);
 }
 
-static inline void force_pwm(LW__CONTEXT, const lw__pwm *m, double to)
+static void force_pwm(LW__CONTEXT, const lw__pwm *m, double to)
 {
     LW__F(m->level) = to;
     if (m->log >= 0)
@@ -143,7 +138,7 @@ static inline void force_pwm(LW__CONTEXT, const lw__pwm *m, double to)
     drive(LW__HERE, &m->drives, to);
 }
 
-static inline void op_trip(LW__CONTEXT, const lw__trip *t)
+void lw__event_trip(LW__CONTEXT, const lw__trip *t)
 {
     int held = t->pwm != NULL ? t->pwm->tripped : t->dac->tripped;
     LW__I(t->n_trips) += 1;
@@ -159,7 +154,7 @@ static inline void op_trip(LW__CONTEXT, const lw__trip *t)
 
 // A trip ends; with the last one on its output that takes what was asked for last, or what the
 // legs of a pwm are at.
-static inline void end_trip(LW__CONTEXT, const lw__trip *t)
+static void end_trip(LW__CONTEXT, const lw__trip *t)
 {
     const lw__pwm *m = t->pwm;
     int held = m != NULL ? m->tripped : t->dac->tripped;
@@ -176,7 +171,7 @@ static inline void end_trip(LW__CONTEXT, const lw__trip *t)
 }
 
 // The comparator clears, or the time is over: the later of both ends the trip.
-static inline void op_release_trip(LW__CONTEXT, const lw__trip *t)
+void lw__event_release(LW__CONTEXT, const lw__trip *t)
 {
     lw_trip_until until = t->item->def.until;
     if (t->timer >= 0 && LW__I(s->z->due + t->timer) == s->now) {
@@ -189,12 +184,10 @@ static inline void op_release_trip(LW__CONTEXT, const lw__trip *t)
 }
 
 // Trips that hold until a latch edge of their output, or a period of the pwm, end with it.
-static inline void op_latch_trip(LW__CONTEXT, const lw__trip *t)
+void lw__event_latch(LW__CONTEXT, const lw__trip *t)
 {
     if (t->pwm != NULL && LW__I(t->pwm->count) % t->pwm->per_period != 0)
         return; // the middle of a triangle
     if (LW__I(t->active) != 0 && LW__F(t->by->out) == 0)
         end_trip(LW__HERE, t);
 }
-
-#endif
