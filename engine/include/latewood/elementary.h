@@ -1,6 +1,6 @@
 // Elementary functions that return the same bits on every processor and for every compiler.
 //
-// They are SLEEF's scalar `cinz_*_u10purec` family (at most 1 ulp; erfc 1.5), which uses no fused
+// They are SLEEF's `cinz_*_u10` family (at most 1 ulp; erfc 1.5), which uses no fused
 // multiply-add. Nothing on the path of a result calls the C library's versions.
 #ifndef LATEWOOD_ELEMENTARY_H
 #define LATEWOOD_ELEMENTARY_H
