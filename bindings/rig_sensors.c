@@ -74,6 +74,9 @@ static const lw__lua_field encoder_fields[] = {
     OPTIONAL(lw_encoder_def, turn, "turn", FIELD_NUMBER, NULL),
     OPTIONAL(lw_encoder_def, zero, "zero", FIELD_NUMBER, NULL),
     OPTIONAL(lw_encoder_def, speed_over, "speed_over", FIELD_COUNT, NULL),
+    OPTIONAL(lw_encoder_def, speed_edges, "speed_edges", FIELD_COUNT, NULL),
+    OPTIONAL(lw_encoder_def, edge_clock, "edge_clock", FIELD_PERIOD, NULL),
+    OPTIONAL(lw_encoder_def, zero_after, "zero_after", FIELD_NUMBER, "s"),
 };
 
 int lw__lua_rig_encoder(lua_State *L)

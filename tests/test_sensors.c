@@ -7,6 +7,32 @@
 
 #include <latewood/sensor.h>
 
+// A wheel pushed about by held noise; the speed of its encoder is taken by time.
+static lw_status add_wheel(lw_rig *rig, lw_error *err)
+{
+    lw_plant *wheel = NULL;
+    lw_status status = lw_plant_integrator(1, &wheel, err);
+    if (status == LW_OK)
+        status = lw_rig_add_plant(rig, NULL, "wheel", wheel, err);
+    lw_plant_free(wheel);
+    lw_source_def push = lw_source_default(LW_SOURCE_NOISE);
+    push.name = "push";
+    push.level = 40;
+    push.every = lw_period_of_ticks(50 * US);
+    if (status == LW_OK)
+        status = lw_rig_add_source(rig, &push, err);
+    if (status == LW_OK)
+        status = lw_rig_connect(rig, NULL, "push", "wheel.in", err);
+    lw_encoder_def turn = lw_encoder_default();
+    turn.name = "turn";
+    turn.of = "wheel.out";
+    turn.counts = 20000;
+    turn.every = lw_period_of_ticks(100 * US);
+    turn.speed_edges = 2;
+    turn.edge_clock = lw_period_of_ticks(100 * 1000);
+    return status == LW_OK ? lw_rig_add_encoder(rig, &turn, err) : status;
+}
+
 // A noisy mass with an encoder on its angle, a decimated and filtered adc on its speed.
 static lw_status build(lw_rig *rig, lw_error *err)
 {
@@ -33,6 +59,8 @@ static lw_status build(lw_rig *rig, lw_error *err)
     const lw_adc_front front = {LW_ANALOG_BUTTERWORTH, 3, 2e4, 2, 8, lw_period_of_ticks(10 * US)};
     if (status == LW_OK)
         status = lw_rig_add_adc_behind(rig, &adc, &front, err);
+    if (status == LW_OK)
+        status = add_wheel(rig, err);
     const lw_noise_def noise = {NULL, "gusts", "mass.force", 1e-2};
     if (status == LW_OK)
         status = lw_rig_add_noise(rig, &noise, err);
@@ -68,7 +96,8 @@ static double value_of(const lw_run *run, const lw_frozen *z, int lane, const ch
     return lw_run_read(run, lane, at);
 }
 
-static const char *const signals[] = {"mass.speed", "mass.angle", "place", "place speed", "speed"};
+static const char *const signals[] = {"mass.speed", "mass.angle", "place",    "place speed",
+                                      "speed",      "turn speed", "turn.last"};
 enum { N_SIGNALS = sizeof signals / sizeof *signals };
 
 START_TEST(noisy_runs_side_by_side_are_runs_alone)

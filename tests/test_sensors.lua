@@ -69,6 +69,104 @@ t.test("speed_by_count_is_off_by_at_most_one_count_over_its_window", function()
   end
 end)
 
+-- A mass on a spring: angle = 0.1 sin(50 t) from the middle on.
+local function swinging(encoder)
+  local rig = lw.rig "axis"
+  rig:plant { "axis", lw.plant.state_space { A = { { 0, 1 }, { -2500, 0 } }, B = { { 0 }, { 1 } },
+    C = { { 1, 0 } }, start = { 0, 5 }, outputs = { "angle" } } }
+  encoder[1], encoder.of = "turn", "axis.angle"
+  return rig:encoder(encoder)
+end
+
+-- Instants at which the angle passes an edge, and which edge, up to `last`, from the arc sine.
+local function edges_of_swing(counts, last)
+  local q, times = 2 * math.pi / counts, {}
+  for half = 0, math.floor(50 * last / math.pi) + 1 do
+    local k0 = math.floor(0.1 / q)
+    for k = -k0, k0 do
+      local phase = half * math.pi + (half % 2 == 0 and 1 or -1) * lw.math.asin(k * q / 0.1)
+      if phase > 0 and phase / 50 <= last then times[#times + 1] = { phase / 50, k } end
+    end
+  end
+  table.sort(times, function(a, b) return a[1] < b[1] end)
+  return times
+end
+
+t.test("edges_come_where_the_arc_sine_puts_them", function()
+  local last, edges = 0.2, edges_of_swing(1000, 0.2)
+  local run = swinging({ counts = 1000, every = "1 ms", speed_edges = 2 }):run { lasts = last,
+    record = { { "turn.last", every = "100 us" }, { "turn.steps", every = "100 us" } } }
+  local r, steps, k = run:record "turn.last", run:record "turn.steps", 0
+  local function check(shift)
+    k = 0
+    for i = 1, r.n do
+      while k < #edges and edges[k + 1][1] < r.time[i] do k = k + 1 end
+      -- the edge at the start itself is where it begins; a tick, and rounding of the arc sine near
+      -- the turn, where the angle stands for sqrt(2 * 1e-16 / 0.1) / 50 s
+      if k > 0 then near(r.value[i], edges[k][1] + shift, 1e-9) end
+      if k > 2 then t.equal(steps.value[i], edges[k][2] - edges[k - 2][2]) end
+    end
+  end
+  check(0)
+  if k < 90 then error(k .. " edges only") end
+  -- deliberate fault: stamps a period of 100 MHz late are noticed
+  t.equal(pcall(check, 1e-8), false)
+end)
+
+t.test("stamps_are_whole_periods_of_their_clock_before_the_edge", function()
+  local edges = edges_of_swing(1000, 0.1)
+  local run = swinging({ counts = 1000, every = "1 ms", speed_edges = 1, edge_clock = "30 kHz" })
+    :run { lasts = "100 ms", record = { { "turn.last", every = "100 us" } } }
+  local r, k = run:record "turn.last", 0
+  for i = 1, r.n do
+    while k < #edges and edges[k + 1][1] < r.time[i] do k = k + 1 end
+    -- rounded down to the clock, whose instants are whole ticks
+    if k > 0 then near(r.value[i], math.floor(edges[k][1] * 30e3) / 30e3, 1e-12) end
+  end
+end)
+
+t.test("speed_by_time_is_good_to_the_period_of_its_clock", function()
+  for _, case in ipairs { { 7.3, 1 }, { -7.3, 4 }, { 0.05, 1 } } do
+    local speed, n = case[1], case[2]
+    local rig = turning(speed, 0, { counts = 4096, every = "1 ms", speed_edges = n,
+      edge_clock = "1 MHz" })
+    local r = rig:run({ lasts = "300 ms",
+      record = { { "axis angle speed", every = "1 ms", from = "100 ms" } } })
+      :record "axis angle speed"
+    -- common practice, no source: relative resolution is the clock's period over the time measured
+    local span = n * 2 * math.pi / 4096 / math.abs(speed)
+    for k = 1, r.n do near(r.value[k], speed, math.abs(speed) * 1e-6 / (span - 1e-6)) end
+  end
+end)
+
+t.test("without_edges_the_speed_sinks_and_then_is_nothing", function()
+  local rig = lw.rig "stop"
+  rig:plant { "axis", lw.plant.integrator { gain = 1 } }
+  rig:source { "speed", lw.source.step { at = "20.5 ms", from = 1, to = 0 } }
+  rig:connect { "speed", to = "axis.in" }
+  rig:encoder { "turn", of = "axis.out", counts = 1000, turn = 1, every = "1 ms", speed_edges = 1,
+    zero_after = "10 ms" }
+  local r = rig:run({ lasts = "40 ms", record = { { "turn speed", every = "1 ms" } } })
+    :record "turn speed"
+  -- the last edge is at 20 ms: afterwards less than a count in the time since; 1e-9: ticks in 1 ms
+  near(r.value[21], 1, 1e-9)
+  for k = 22, 29 do near(r.value[k + 1], 1 / (k - 20), 1e-9) end
+  for k = 31, 40 do t.equal(r.value[k + 1], 0) end
+end)
+
+t.test("an_edge_passed_there_and_back_is_no_way_gone", function()
+  local rig = lw.rig "back"
+  rig:plant { "axis", lw.plant.integrator { gain = 1 } }
+  rig:source { "speed", lw.source.step { at = "10.5 ms", from = 1, to = -1 } }
+  rig:connect { "speed", to = "axis.in" }
+  rig:encoder { "turn", of = "axis.out", counts = 1000, turn = 1, every = "1 ms", speed_edges = 1 }
+  local r = rig:run({ lasts = "14 ms", record = { { "turn speed", every = "1 ms" } } })
+    :record "turn speed"
+  near(r.value[10], 1, 1e-9)
+  t.equal(r.value[12], 0)                 -- up over edge 10 at 10 ms, down over it at 11 ms
+  near(r.value[13], -1, 1e-9)
+end)
+
 t.test("a_loop_steps_on_an_encoder", function()
   local rig = lw.rig "axis"
   rig:plant { "axis", lw.plant.integrator { gain = 1 } }
@@ -320,6 +418,18 @@ t.test("what_cannot_be_is_refused_in_words", function()
   end
   refused(encoder(0), "counts is 0")
   refused(encoder(4, 65), "speed_over is 65")
+  local function by_time(of, edges, over, zero_after)
+    return with(function(r)
+      r:plant { "wheel", lw.plant.integrator { gain = 1 } }:value { "place" }
+      r:encoder { "e", of = of, counts = 4, every = "1 ms", speed_edges = edges, speed_over = over,
+        zero_after = zero_after }
+    end)
+  end
+  refused(by_time("wheel.out", 65), "speed_edges is 65")
+  refused(by_time("wheel.out", 1, 2), "state one of them")
+  refused(by_time("wheel.out", 1, nil, 0), "zero_after is 0")
+  refused(by_time("place", 1), '"place" is no signal of a plant')
+  refused(by_time("mass.speed", 1), "take held noise")
   local function adc(every, analog, filter)
     return with(function(r)
       r:adc { "a", of = "mass.speed", every = every, analog = analog, filter = filter }

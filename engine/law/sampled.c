@@ -1,4 +1,5 @@
-// Laws that belong to sensors: the decimation filter behind a modulator, speed from counts.
+// Laws that belong to sensors: the decimation filter behind a modulator, speed from counts and from
+// the time between edges.
 //
 // Workload: the filter steps once a clock of its modulator, one product for each open window.
 //
@@ -142,6 +143,55 @@ lw_status lw_law_count_speed(int window, double per_count, lw_law **out, lw_erro
                             .out_names = out_names,
                             .state_names = states,
                             .step = step_count_speed,
+                            .param = p,
+                            .free_param = lw__free};
+    lw_status status = lw_law_new(&def, out, err);
+    if (status != LW_OK)
+        lw__free(p);
+    return status;
+}
+
+// ---- speed from the time between edges
+
+typedef struct edge_speed {
+    double per_count, zero_after;
+} edge_speed;
+
+static int step_edge_speed(const void *param, const lw_law_time *time, const double *in,
+                           double *state, double *out)
+{
+    const edge_speed *p = param;
+    double span = in[0], steps = in[1], since = time->now - in[2];
+    (void)state;
+    out[0] = 0;
+    if (!(span > 0) || steps == 0 || since >= p->zero_after)
+        return 0;
+    double speed = steps * p->per_count / span, most = p->per_count / since;
+    if (since * fabs(steps) > span && fabs(speed) > most)
+        speed = copysign(most, speed);
+    out[0] = speed;
+    return 0;
+}
+
+lw_status lw_law_edge_speed(double per_count, double zero_after, lw_law **out, lw_error *err)
+{
+    static const char *const in_names[] = {"span", "steps", "last"}, *const out_names[] = {"out"};
+    if (!(per_count > 0) || isinf(per_count))
+        return lw_error_set(err, LW_ERR_NOT_FINITE,
+                            "the turn of a count is not above 0 and finite");
+    if (!(zero_after > 0))
+        return lw_error_set(err, LW_ERR_ARGUMENT, "zero_after is %.12g s; above 0 is wanted",
+                            zero_after);
+    edge_speed *p = lw__alloc(sizeof *p);
+    if (p == NULL)
+        return lw_error_set(err, LW_ERR_MEMORY, "no memory for a speed");
+    *p = (edge_speed){per_count, zero_after};
+    const lw_law_def def = {.kind = "speed from edges",
+                            .n_in = 3,
+                            .n_out = 1,
+                            .in_names = in_names,
+                            .out_names = out_names,
+                            .step = step_edge_speed,
                             .param = p,
                             .free_param = lw__free};
     lw_status status = lw_law_new(&def, out, err);

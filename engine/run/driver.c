@@ -23,6 +23,7 @@
 #include "run/driver.h"
 #include "run/comparator.h"
 #include "run/dash.h"
+#include "run/edges.h"
 
 #include "run/op_adc.h"
 #include "run/op_cpu.h"
@@ -127,6 +128,12 @@ LW__INLINE void perform(LW__CONTEXT, int op)
         return;
     case LW__OP_EDGE:
         lw__event_edge(LW__HERE, o->thing);
+        return;
+    case LW__OP_COUNT:
+        lw__edges_come(LW__HERE, o->thing);
+        return;
+    case LW__OP_COUNT_SEARCH:
+        lw__edges_search(LW__HERE, o->thing);
         return;
     case LW__OP_TRIP:
         lw__event_trip(LW__HERE, o->thing);

@@ -10,6 +10,7 @@
 #include "run/freeze.h"
 
 #include "run/comparator.h"
+#include "run/edges.h"
 #include "run/freezer.h"
 #include "run/pwm.h"
 #include "run/schedule.h"
@@ -80,11 +81,13 @@ static lw_status freeze_parts(lw__freezer *w)
     LW__TRY(lw__freeze_clocks(w));
     LW__TRY(lw__freeze_event_cells(w));
     LW__TRY(lw__freeze_pwm_cells(w));
+    LW__TRY(lw__freeze_edges_cells(w));
     LW__TRY(lw__freeze_converters(w));
     LW__TRY(lw__freeze_pwms(w));
     LW__TRY(lw__freeze_loops(w));
     LW__TRY(lw__freeze_cores(w));
     LW__TRY(lw__freeze_events(w));
+    LW__TRY(lw__freeze_edges(w));
     LW__TRY(lw__freeze_white(w));
     LW__TRY(lw__freeze_streams(w));
     lw__freeze_anchors(w);

@@ -4,6 +4,7 @@
 // of operations is a row of bits, so that the next operation due is the lowest bit.
 
 #include "run/dash.h"
+#include "run/edges.h"
 #include "run/event.h"
 #include "run/freezer.h"
 #include "run/pwm.h"
@@ -151,6 +152,10 @@ static void list_event_ops(const lw_frozen *z, order *o)
             add_op(o, LW__OP_EDGE, 0, place, i, 0);
         add_op(o, LW__OP_SEARCH, 8, place, i, 0);
     }
+    for (int i = 0; i < z->n_edges; i++) {
+        add_op(o, LW__OP_COUNT, 0, z->edges[i].item->place, i, 0);
+        add_op(o, LW__OP_COUNT_SEARCH, 8, z->edges[i].item->place, i, 0);
+    }
     for (int i = 0; i < z->n_trips; i++) {
         int place = z->trips[i].item->place;
         add_op(o, LW__OP_TRIP, 1, place, i, 0);
@@ -238,6 +243,9 @@ static const void *thing_of(const lw_frozen *z, const lw__op *op)
     case LW__OP_EDGE:
     case LW__OP_SEARCH:
         return &z->comparators[op->index];
+    case LW__OP_COUNT:
+    case LW__OP_COUNT_SEARCH:
+        return &z->edges[op->index];
     case LW__OP_TRIP:
     case LW__OP_RELEASE_TRIP:
     case LW__OP_LATCH_TRIP:
@@ -408,6 +416,15 @@ static lw_status order_of_comparator(lw__freezer *w, int index)
     return LW_OK;
 }
 
+static lw_status order_of_edges(lw__freezer *w, int index)
+{
+    lw__edges *e = &w->z->edges[index];
+    lw__group *g = &w->z->groups[e->condition.group - w->z->groups];
+    e->search_op = op_number(w->z, LW__OP_COUNT_SEARCH, index, 0);
+    LW__TRY(make_due(w, e->timer, LW__OP_COUNT, index, 0));
+    return lw__set_put(w, &g->observers, e->search_op);
+}
+
 static lw_status order_of_trip(lw__freezer *w, int index)
 {
     lw_frozen *z = w->z;
@@ -434,6 +451,8 @@ static lw_status order_of_events(lw__freezer *w)
     lw_frozen *z = w->z;
     for (int i = 0; i < z->n_comparators; i++)
         LW__TRY(order_of_comparator(w, i));
+    for (int i = 0; i < z->n_edges; i++)
+        LW__TRY(order_of_edges(w, i));
     for (int i = 0; i < z->n_trips; i++)
         LW__TRY(order_of_trip(w, i));
     for (int i = 0; i < z->n_dacs; i++)

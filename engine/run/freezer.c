@@ -5,6 +5,7 @@
 #include "run/pwm.h"
 
 #include "run/comparator.h"
+#include "run/edges.h"
 #include "run/schedule.h"
 
 #include "base/alloc.h"
@@ -151,6 +152,23 @@ static int pwm_signal(const lw_frozen *z, const lw__dac *d, const char *rest, lw
     return 0;
 }
 
+// "axis angle.span", "axis angle.steps", "axis angle.last": of an encoder whose edges are found.
+static int edges_signal(const lw_frozen *z, const lw__adc *a, const char *rest, lw_signal *out)
+{
+    for (int i = 0; i < z->n_edges; i++) {
+        const lw__edges *e = &z->edges[i];
+        int at = same(rest, "span")    ? e->span
+                 : same(rest, "steps") ? e->steps
+                 : same(rest, "last")  ? e->last
+                                       : -1;
+        if (e->adc == a && at >= 0) {
+            *out = cell(at);
+            return 1;
+        }
+    }
+    return 0;
+}
+
 static int loop_signal(const lw__loop *l, const char *rest, lw_signal *out)
 {
     for (int i = 0; i < l->law->n_out; i++)
@@ -185,7 +203,7 @@ static int find_signal(const lw_frozen *z, const char *name, lw_signal *out)
         }
     for (int i = 0; i < z->n_adcs; i++)
         if (owns(z->adcs[i].item->def.name, name, &rest))
-            return adc_signal(&z->adcs[i], rest, out);
+            return adc_signal(&z->adcs[i], rest, out) || edges_signal(z, &z->adcs[i], rest, out);
     for (int i = 0; i < z->n_dacs; i++)
         if (owns(z->dacs[i].item->def.name, name, &rest))
             return dac_signal(&z->dacs[i], rest, out) || pwm_signal(z, &z->dacs[i], rest, out);

@@ -269,6 +269,7 @@ typedef enum lw__op_kind {
     LW__OP_SOURCE,  // phase 0
     LW__OP_CROSS,   // phase 0: a comparator's input comes to its level
     LW__OP_EDGE,    // phase 0: a delayed edge of a comparator
+    LW__OP_COUNT,   // phase 0: an edge of an encoder
     LW__OP_CONVERT, // phase 1, conversions that took time; phase 4 the others
     LW__OP_LOGICAL, // phase 1: writes of a task with logical execution time
     LW__OP_WRITES,  // phase 1: a core's job reaches points that write, unlock or end it
@@ -291,6 +292,7 @@ typedef enum lw__op_kind {
     LW__OP_POINTS,       // phase 7: points of a core's job with no work before them
     LW__OP_SEARCH,       // phase 8: where a comparator next comes to its level
     LW__OP_PWM_SEARCH,   // phase 8: where a current next comes to its peak
+    LW__OP_COUNT_SEARCH, // phase 8: where an encoder's next edge is
     LW__OP_TRACK,        // phase 8: metrics
     LW__OP_RECORD        // phase 8
 } lw__op_kind;
@@ -333,6 +335,8 @@ struct lw_frozen {
     struct lw__task *tasks;
     struct lw__comparator *comparators;
     struct lw__trip *trips;
+    int n_edges;
+    struct lw__edges *edges;
     int n_records, n_tracks, n_metrics;
     lw__record *records;
     struct lw__track *tracks;

@@ -65,6 +65,7 @@ void lw_rig_free(lw_rig *rig)
     lw__rig_free_cpu(rig);
     lw__rig_free_events(rig);
     lw__free(rig->noises);
+    lw__free(rig->edges);
     lw__arena_free(rig->arena);
     lw__free(rig);
 }

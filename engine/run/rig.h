@@ -86,6 +86,12 @@ typedef struct lw__noise_item {
     int place;
 } lw__noise_item;
 
+typedef struct lw__edges_item {
+    lw_encoder_def def;
+    int adc;
+    int place;
+} lw__edges_item;
+
 struct lw_rig {
     int references;
     lw__arena *arena;
@@ -109,6 +115,8 @@ struct lw_rig {
     lw__trip_item *trips;
     int n_noises;
     lw__noise_item *noises;
+    int n_edges; // encoders whose edges are found
+    lw__edges_item *edges;
     int frozen; // a frozen rig refers to it: no more additions
 };
 

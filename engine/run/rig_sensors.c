@@ -14,15 +14,17 @@
 
 #define TWO_PI 6.283185307179586
 #define NAME 240
+#define MOST_EDGES 64 // between two stamps that are compared
 
 // How many parts a rig has, to go back to.
 typedef struct mark {
-    int n_places, n_plants, n_connections, n_values, n_adcs, n_loops;
+    int n_places, n_plants, n_connections, n_values, n_adcs, n_loops, n_edges;
 } mark;
 
 static mark mark_of(const lw_rig *r)
 {
-    return (mark){r->n_places, r->n_plants, r->n_connections, r->n_values, r->n_adcs, r->n_loops};
+    return (mark){r->n_places, r->n_plants, r->n_connections, r->n_values,
+                  r->n_adcs,   r->n_loops,  r->n_edges};
 }
 
 static lw_status or_back(lw_rig *r, mark m, lw_status status)
@@ -37,6 +39,7 @@ static lw_status or_back(lw_rig *r, mark m, lw_status status)
     r->n_connections = m.n_connections;
     r->n_values = m.n_values;
     r->n_adcs = m.n_adcs;
+    r->n_edges = m.n_edges;
     return status;
 }
 
@@ -53,19 +56,19 @@ static lw_status add_behind(lw_rig *rig, const char *origin, const char *name, c
     return status;
 }
 
-// A law of one input that writes a value at each sample of `on`; takes the law over.
+// A law that writes a value at each sample of `on`; takes the law over.
 static lw_status add_law(lw_rig *rig, const char *origin, const char *name, const char *on,
-                         const char *value, lw_law *law, lw_error *err)
+                         int n_in, const lw_wire *in, const char *value, lw_law *law, lw_error *err)
 {
-    const lw_law_def *look = lw_law_look(law);
-    const lw_wire in = {look->in_names[0], on, 0}, out = {look->out_names[0], value, 0};
+    const lw_wire out = {lw_law_look(law)->out_names[0], value, 0};
     lw_loop_def def = lw_loop_default();
     def.origin = origin;
     def.name = name;
     def.law = law;
     def.on = on;
-    def.n_inputs = def.n_outputs = 1;
-    def.inputs = &in;
+    def.n_inputs = n_in;
+    def.n_outputs = 1;
+    def.inputs = in;
     def.outputs = &out;
     lw_status status = lw_rig_add_loop(rig, &def, err);
     lw_law_free(law);
@@ -76,7 +79,24 @@ static lw_status add_law(lw_rig *rig, const char *origin, const char *name, cons
 
 lw_encoder_def lw_encoder_default(void)
 {
-    return (lw_encoder_def){.turn = TWO_PI, .every = {0, 1}};
+    return (lw_encoder_def){
+        .turn = TWO_PI, .every = {0, 1}, .edge_clock = {0, 1}, .zero_after = 0.1};
+}
+
+static lw_status check_edges(const lw__subject *s, const lw_encoder_def *def)
+{
+    if (def->speed_edges < 0 || def->speed_edges > MOST_EDGES)
+        return lw__bad_field(s, "speed_edges", def->speed_edges, "permitted 1 to 64");
+    if (def->speed_edges > 0 && def->speed_over > 0)
+        return lw__fail_at(s->origin, s->err, LW_ERR_ARGUMENT,
+                           "encoder \"%s\": speed_over and speed_edges are two ways to one value; "
+                           "state one of them",
+                           s->name);
+    if (def->edge_clock.num != 0)
+        LW__TRY(lw__check_period(s, "edge_clock", def->edge_clock));
+    if (!(def->zero_after > 0 && def->zero_after <= 1e6))
+        return lw__bad_field(s, "zero_after", def->zero_after, "above 0 s, up to 1e6 s is wanted");
+    return LW_OK;
 }
 
 static lw_status check_encoder(const lw__subject *s, const lw_encoder_def *def)
@@ -89,12 +109,58 @@ static lw_status check_encoder(const lw__subject *s, const lw_encoder_def *def)
         return lw__bad_field(s, "turn", def->turn, "above 0 is wanted");
     if (def->speed_over < 0 || def->speed_over > LW_LAW_MAX_STATES)
         return lw__bad_field(s, "speed_over", def->speed_over, "permitted 1 to 64 samples");
-    return LW_OK;
+    return check_edges(s, def);
+}
+
+static void note_encoder(const lw_encoder_def *def, char *note, size_t room)
+{
+    int at = snprintf(note, room,
+                      "an encoder of %d counts a turn: the value is in counts; an angle on an edge "
+                      "has reached the upper count, both ways",
+                      def->counts);
+    if (def->speed_edges == 0)
+        return;
+    at += snprintf(note + at, room - (size_t)at,
+                   "; its speed is the way over the time of the last %d edge%s", def->speed_edges,
+                   def->speed_edges > 1 ? "s" : "");
+    if (def->edge_clock.num > 0)
+        at += snprintf(note + at, room - (size_t)at, ", stamped every %.6g s",
+                       lw_period_seconds(def->edge_clock));
+    snprintf(note + at, room - (size_t)at, ", 0 after %.6g s without one", def->zero_after);
+}
+
+// The edges, and a law that reads what they keep at each sample.
+static lw_status add_edges(lw_rig *rig, const lw_encoder_def *def, double a_count, lw_error *err)
+{
+    static const char *const parts[] = {"span", "steps", "last"};
+    char speed[NAME], law_name[NAME], signals[3][NAME + 8];
+    lw__copier c = {rig->arena, 0};
+    lw__edges_item item = {*def, rig->n_adcs - 1, rig->n_places};
+    item.def.origin = lw__copy_text(&c, def->origin);
+    item.def.name = lw__copy_text(&c, def->name);
+    item.def.of = lw__copy_text(&c, def->of);
+    lw__edges_item *at = lw__room((void **)&rig->edges, rig->n_edges, sizeof item);
+    if (at == NULL || c.failed)
+        return lw__no_room(def->origin, err);
+    *at = item;
+    rig->n_edges++;
+    rig->n_places++;
+    snprintf(speed, sizeof speed, "%s speed", def->name);
+    snprintf(law_name, sizeof law_name, "%s speed from edges", def->name);
+    LW__TRY(lw_rig_add_value(rig, def->origin, speed, 0, err));
+    lw_law *law = NULL;
+    LW__TRY(lw__blame(def->origin, err, lw_law_edge_speed(a_count, def->zero_after, &law, err)));
+    lw_wire in[3];
+    for (int k = 0; k < 3; k++) {
+        snprintf(signals[k], sizeof signals[k], "%s.%s", def->name, parts[k]);
+        in[k] = (lw_wire){parts[k], signals[k], 0};
+    }
+    return add_law(rig, def->origin, law_name, def->name, 3, in, speed, law, err);
 }
 
 static lw_status add_encoder(lw_rig *rig, const lw_encoder_def *def, lw_error *err)
 {
-    char speed[NAME], law_name[NAME], note[200];
+    char speed[NAME], law_name[NAME], note[400];
     double a_count = def->turn / def->counts;
     lw_adc_def adc = lw_adc_default();
     adc.origin = def->origin;
@@ -106,11 +172,10 @@ static lw_status add_encoder(lw_rig *rig, const lw_encoder_def *def, lw_error *e
     adc.gain = def->counts / def->turn;
     adc.bias = -def->zero * adc.gain;
     adc.note = note;
-    snprintf(note, sizeof note,
-             "an encoder of %d counts a turn: the value is in counts; an angle on an edge has "
-             "reached the upper count, both ways",
-             def->counts);
+    note_encoder(def, note, sizeof note);
     LW__TRY(lw_rig_add_adc(rig, &adc, err));
+    if (def->speed_edges > 0)
+        return add_edges(rig, def, a_count, err);
     if (def->speed_over == 0)
         return LW_OK;
     snprintf(speed, sizeof speed, "%s speed", def->name);
@@ -118,7 +183,8 @@ static lw_status add_encoder(lw_rig *rig, const lw_encoder_def *def, lw_error *e
     LW__TRY(lw_rig_add_value(rig, def->origin, speed, 0, err));
     lw_law *law = NULL;
     LW__TRY(lw__blame(def->origin, err, lw_law_count_speed(def->speed_over, a_count, &law, err)));
-    return add_law(rig, def->origin, law_name, def->name, speed, law, err);
+    const lw_wire in = {"counts", def->name, 0};
+    return add_law(rig, def->origin, law_name, def->name, 1, &in, speed, law, err);
 }
 
 lw_status lw_rig_add_encoder(lw_rig *rig, const lw_encoder_def *def, lw_error *err)
@@ -273,7 +339,8 @@ static lw_status add_sinc(lw_rig *rig, const lw_adc_def *def, const lw_adc_front
     LW__TRY(lw_rig_add_adc(rig, &adc, err));
     LW__TRY(lw_rig_add_value(rig, def->origin, value, def->start, err));
     LW__TRY(lw__blame(def->origin, err, lw_law_sinc(f->sinc_order, f->ratio, &law, err)));
-    return add_law(rig, def->origin, law_name, clock, value, law, err);
+    const lw_wire in = {"integral", clock, 0};
+    return add_law(rig, def->origin, law_name, clock, 1, &in, value, law, err);
 }
 
 static void note_front(const lw_adc_front *f, const lw_adc_def *def, char *note, size_t room)

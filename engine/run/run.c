@@ -7,6 +7,7 @@
 
 #include "run/comparator.h"
 #include "run/driver.h"
+#include "run/edges.h"
 #include "run/job_metric.h"
 #include "run/motion.h"
 #include "run/pwm.h"
@@ -133,6 +134,7 @@ void lw__lane_start(lw__lane *s)
     start_loops(s, W, L);
     lw__cores_start(s);
     lw__events_start(s);
+    lw__edges_start(s);
 }
 
 // ---- runs

@@ -10,6 +10,7 @@
 #include "run/white.h"
 
 #include "run/comparator.h"
+#include "run/edges.h"
 #include "run/schedule.h"
 
 #include "base/alloc.h"
@@ -178,6 +179,9 @@ static lw_status check_readers(lw__freezer *w, const lw_noise_def *d, const lw__
     for (int i = 0; i < z->n_comparators; i++)
         if (z->comparators[i].condition.group == g)
             return off_grid(w, d, g, "comparator", z->comparators[i].name);
+    for (int i = 0; i < z->n_edges; i++)
+        if (z->edges[i].condition.group == g)
+            return off_grid(w, d, g, "encoder", z->edges[i].name);
     return LW_OK;
 }
 

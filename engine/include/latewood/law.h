@@ -144,14 +144,20 @@ typedef struct lw_observer {
 } lw_observer;
 LW_API lw_status lw_law_observer(const lw_observer *p, lw_law **out, lw_error *err);
 
-// Laws of sensors. The decimation filter sinc^order behind an ideal modulator: steps once a clock of
-// the modulator on the integral of what is measured; the mean over each clock is weighed by the
+// Laws of sensors. The decimation filter sinc^order behind an ideal modulator: steps once a clock
+// of the modulator on the integral of what is measured; the mean over each clock is weighed by the
 // convolution of `order` boxes of `ratio` clocks (E. B. Hogenauer, IEEE Trans. ASSP 29 (1981)
 // 155-162, from memory). Input integral, output out: new every `ratio` clocks, 0 before.
 LW_API lw_status lw_law_sinc(int order, int ratio, lw_law **out, lw_error *err);
-// Speed from counts: (counts - counts `window` samples ago) per_count / (window T), over the samples
-// there are at the start. Input counts, output out.
+// Speed from counts: (counts - counts `window` samples ago) per_count / (window T), over the
+// samples there are at the start. Input counts, output out.
 LW_API lw_status lw_law_count_speed(int window, double per_count, lw_law **out, lw_error *err);
+// Speed by the time between stamped edges: inputs span [s], steps (counts within it) and last [s,
+// the last stamp] give steps per_count / span; where more time than a count took has passed since
+// the last edge, at most per_count over that time (less than a count was gone in it); 0 where
+// zero_after [s] or more has passed, and before there is a span.
+LW_API lw_status lw_law_edge_speed(double per_count, double zero_after, lw_law **out,
+                                   lw_error *err);
 
 #ifdef __cplusplus
 }

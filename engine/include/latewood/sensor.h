@@ -17,16 +17,23 @@ extern "C" {
 // an edge has reached the upper count; no more than 32 bits of them, no index mark. Value in
 // counts. Speed by count, where speed_over > 0: the value "NAME speed", turns of the same unit as
 // `turn` a second, (counts - counts speed_over samples ago) turn / (counts speed_over T); one count
-// more or less is turn / (counts speed_over T).
+// more or less is turn / (counts speed_over T). Speed by time, where speed_edges > 0: the edges
+// themselves are found on the plant's exact solution and stamped by a clock (rounded down); the
+// value "NAME speed" is the way over the time between the last stamp and the one speed_edges
+// before (lw_law_edge_speed). Signals: "NAME.span" [s], "NAME.steps" [counts], "NAME.last" [s].
+// One of the two speeds only. By time the angle must be a signal of a plant.
 typedef struct lw_encoder_def {
     const char *origin, *name;
-    const char *of;  // angle
-    int counts;      // a turn, all four edges of both tracks counted: 1 to 2^24
-    double turn;     // 2 pi, or what the angle goes through in a turn; above 0
-    double zero;     // angle of count 0
-    lw_period every; // a sample
-    double offset;   // [s] first sample
-    int speed_over;  // samples; 0: no speed
+    const char *of;       // angle
+    int counts;           // a turn, all four edges of both tracks counted: 1 to 2^24
+    double turn;          // 2 pi, or what the angle goes through in a turn; above 0
+    double zero;          // angle of count 0
+    lw_period every;      // a sample
+    double offset;        // [s] first sample
+    int speed_over;       // samples; 0: no speed by count
+    int speed_edges;      // 1 to 64; 0: no speed by time
+    lw_period edge_clock; // of the stamps; {0, 1}: they are exact
+    double zero_after;    // [s] without an edge after which the speed is 0; default 0.1
 } lw_encoder_def;
 
 LW_API lw_encoder_def lw_encoder_default(void);
